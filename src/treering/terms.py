@@ -1,0 +1,164 @@
+"""The vocabulary that code, columns, report and commands share.
+
+One name for one thing. The strings are what stands in files and reports; the terms are those of the
+trade (methods by their authors' names, roles and judgements as the handbooks call them).
+"""
+
+from __future__ import annotations
+
+from enum import StrEnum
+
+
+class Measure(StrEnum):
+    """How one trial's effect is expressed; ratios are analysed on the log scale."""
+
+    RISK_RATIO = "risk-ratio"
+    ODDS_RATIO = "odds-ratio"
+    RISK_DIFFERENCE = "risk-difference"
+    PETO_ODDS_RATIO = "peto-odds-ratio"
+    ARCSINE_DIFFERENCE = "arcsine-difference"
+    MEAN_DIFFERENCE = "mean-difference"
+    STANDARDIZED_MEAN_DIFFERENCE = "standardized-mean-difference"
+    RATIO_OF_MEANS = "ratio-of-means"
+    RATE_RATIO = "rate-ratio"
+    HAZARD_RATIO = "hazard-ratio"
+    GENERIC = "generic"
+
+
+RATIO_MEASURES = frozenset(
+    {
+        Measure.RISK_RATIO,
+        Measure.ODDS_RATIO,
+        Measure.PETO_ODDS_RATIO,
+        Measure.RATIO_OF_MEANS,
+        Measure.RATE_RATIO,
+        Measure.HAZARD_RATIO,
+    }
+)
+
+
+class Correction(StrEnum):
+    """What is done with a trial that has a zero cell."""
+
+    NONE = "none"
+    CONSTANT = "constant"
+    TREATMENT_ARM = "treatment-arm"
+
+
+class PoolingModel(StrEnum):
+    """Model of the pooled effect."""
+
+    COMMON = "common"
+    RANDOM = "random"
+
+
+class Tau2(StrEnum):
+    """Estimator of the between-trial variance."""
+
+    DERSIMONIAN_LAIRD = "dersimonian-laird"
+    PAULE_MANDEL = "paule-mandel"
+    REML = "reml"
+    ML = "ml"
+    HEDGES = "hedges"
+    SIDIK_JONKMAN = "sidik-jonkman"
+    HUNTER_SCHMIDT = "hunter-schmidt"
+
+
+class IntervalMethod(StrEnum):
+    """Interval and test of the pooled effect."""
+
+    WALD = "wald"
+    KNAPP_HARTUNG = "knapp-hartung"
+    MODIFIED_KNAPP_HARTUNG = "modified-knapp-hartung"
+
+
+class Spending(StrEnum):
+    """Alpha-spending function."""
+
+    OBRIEN_FLEMING = "obrien-fleming"
+    POCOCK = "pocock"
+    POWER_FAMILY = "power-family"
+    HWANG_SHIH_DECANI = "hwang-shih-decani"
+
+
+class Verdict(StrEnum):
+    """The state of one monitored synthesis; no other words are used."""
+
+    ACCRUING = "accruing"
+    BENEFIT_CROSSED = "benefit boundary crossed"
+    HARM_CROSSED = "harm boundary crossed"
+    FUTILITY_CROSSED = "futility boundary crossed"
+    REACHED_WITHOUT_CROSSING = "required information reached without a crossing"
+    NO_LONGER_SUPPORTED = "crossing no longer supported"
+    CANNOT_BE_JUDGED = "cannot be judged at this look"
+
+
+CROSSED = frozenset({Verdict.BENEFIT_CROSSED, Verdict.HARM_CROSSED, Verdict.FUTILITY_CROSSED})
+
+
+class OutcomeRole(StrEnum):
+    """Whether an outcome is watched for benefit or for harm."""
+
+    BENEFIT = "benefit"
+    HARM = "harm"
+
+
+class Better(StrEnum):
+    """Which direction of the outcome is good for patients."""
+
+    LOWER = "lower"
+    HIGHER = "higher"
+
+
+class Judgement(StrEnum):
+    """Risk-of-bias judgement of one result (RoB 2 wording)."""
+
+    LOW = "Low"
+    SOME_CONCERNS = "Some concerns"
+    HIGH = "High"
+
+
+class Cause(StrEnum):
+    """Why a number differs between two versions."""
+
+    NEW_TRIAL = "new trial"
+    NEW_REPORT = "new report of an included trial"
+    CORRECTION = "correction"
+    RETRACTION = "retraction"
+    INTEGRITY_NOTICE = "integrity notice"
+    RISK_OF_BIAS = "risk-of-bias judgement"
+    CERTAINTY = "certainty judgement"
+    PROTOCOL = "protocol amendment"
+    SOFTWARE = "software change"
+
+
+class PersonRole(StrEnum):
+    """What a person may do in the review."""
+
+    EXTRACTOR = "extractor"
+    ADJUDICATOR = "adjudicator"
+    ROB_ASSESSOR = "risk-of-bias assessor"
+    CERTAINTY_RATER = "certainty rater"
+    STATISTICIAN = "statistician"
+    REVIEW_LEAD = "review lead"
+    INFORMATION_SPECIALIST = "information specialist"
+    INTEGRITY_CONTACT = "integrity contact"
+
+
+class NoticeKind(StrEnum):
+    """Published notice about a trial's report."""
+
+    ERRATUM = "erratum"
+    EXPRESSION_OF_CONCERN = "expression of concern"
+    RETRACTION = "retraction"
+    REINSTATEMENT = "reinstatement"
+
+
+class EventClass(StrEnum):
+    """Why panel members are told something."""
+
+    CROSSING = "boundary crossed"
+    CROSSING_LOST = "crossing no longer supported"
+    INTEGRITY = "integrity notice"
+    CERTAINTY_STALE = "certainty rating is stale"
+    DEFECT = "defect notice"
