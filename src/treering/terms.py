@@ -145,6 +145,40 @@ class PersonRole(StrEnum):
     INTEGRITY_CONTACT = "integrity contact"
 
 
+class EntryKind(StrEnum):
+    """What one entry of the evidence store records."""
+
+    RECEIPT = "receipt"
+    STUDY = "study"
+    REPORT = "report"
+    ARM = "arm"
+    OUTCOME = "outcome definition"
+    EXTRACTION = "extraction"
+    ADJUDICATION = "adjudication"
+    VERIFICATION = "verification"
+    RESULT = "result"
+    WAIVER = "waiver"
+    RISK_OF_BIAS = "risk-of-bias judgement"
+    CERTAINTY = "certainty judgement"
+    INTEGRITY = "integrity notice"
+    SEARCH = "search run"
+    SCREENING = "screening decision"
+    ONGOING = "ongoing trial"
+    PROTOCOL = "protocol"
+    AMENDMENT = "amendment"
+    LOOK = "look"
+    ANALYSIS = "analysis"
+    VERSION = "version"
+    RELEASE = "release"
+    RUN = "run"
+    NOTICE = "notice"
+    DELIVERY = "delivery"
+    ACKNOWLEDGEMENT = "acknowledgement"
+    PANEL_DECISION = "panel decision"
+    WITHDRAWAL = "withdrawal"
+    DEFECT = "defect"
+
+
 class NoticeKind(StrEnum):
     """Published notice about a trial's report."""
 
