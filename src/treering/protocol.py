@@ -55,7 +55,7 @@ class Person(Part):
 class Pooling(Part):
     """How the trials of one outcome are pooled."""
 
-    method: Literal["inverse-variance", "mantel-haenszel", "peto"] = "inverse-variance"
+    method: Literal["inverse-variance", "mantel-haenszel"] = "inverse-variance"
     model: PoolingModel = PoolingModel.RANDOM
     tau2: Tau2 = Tau2.REML
     interval: IntervalMethod = IntervalMethod.MODIFIED_KNAPP_HARTUNG
@@ -116,6 +116,11 @@ class Outcome(Part):
                 raise ValueError("monitoring.power must be above monitoring.alpha")
             if self.role is OutcomeRole.HARM and self.monitoring.futility:
                 raise ValueError("a harm has no futility stop: set monitoring.futility to false")
+            if self.pooling.method != "inverse-variance":
+                raise ValueError(
+                    "looks are defined for inverse-variance pooling; for rare events use measure "
+                    "'peto-odds-ratio' with model 'common', which is inverse-variance pooling of Peto's estimate"
+                )
         for name, value in pairs:
             if self.is_ratio and value <= 0:
                 raise ValueError(f"{name} is a ratio and must be above 0 (found {value:g})")

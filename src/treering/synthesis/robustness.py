@@ -1,0 +1,203 @@
+"""What stands beside the headline: other methods, subsets, subgroups, absolute effects, small studies."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+from treering.errors import AnalysisError
+from treering.pooling import (
+    PooledEffect,
+    egger,
+    leave_one_out,
+    pool,
+    pool_mantel_haenszel,
+    pool_peto,
+    subgroup_analysis,
+)
+from treering.pooling import absolute_effects as absolute_from_ratio
+from treering.protocol import Outcome
+from treering.synthesis.estimates import Estimated, pool_planned, values_table
+from treering.synthesis.trials import TrialRow
+from treering.terms import Judgement, Measure
+
+BINARY = frozenset({Measure.RISK_RATIO, Measure.ODDS_RATIO, Measure.RISK_DIFFERENCE, Measure.PETO_ODDS_RATIO})
+MANTEL_HAENSZEL = frozenset({Measure.RISK_RATIO, Measure.ODDS_RATIO, Measure.RISK_DIFFERENCE})
+#: Small-study tests need about ten trials (Sterne et al. 2011, BMJ 343:d4002).
+FEWEST_FOR_SMALL_STUDY = 10
+
+
+def _short(pooled: PooledEffect, name: str, note: str = "") -> dict[str, Any]:
+    return {
+        "name": name,
+        "k": pooled.k,
+        "estimate": pooled.estimate,
+        "ci_low": pooled.ci_low,
+        "ci_high": pooled.ci_high,
+        "tau2": pooled.tau2,
+        "note": note,
+    }
+
+
+def other_methods(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
+    """Pool the main trials by other methods: tau2 estimators, intervals, Mantel-Haenszel, Peto.
+
+    Parameters
+    ----------
+    estimated : Estimated
+        Effects of the outcome.
+    outcome : Outcome
+        Its plan, for level and measure.
+
+    Returns
+    -------
+    list of dict
+        Name, k, estimate and interval on the analysis scale.
+    """
+    rows = estimated.main
+    if len(rows) < 2:
+        return []
+    numbers = estimated.numbers(rows)
+    level = outcome.pooling.level
+    names = {
+        "DerSimonian-Laird, Wald interval": ("dersimonian-laird", "wald"),
+        "Paule-Mandel, modified Knapp-Hartung interval": ("paule-mandel", "modified-knapp-hartung"),
+        "REML, Wald interval": ("reml", "wald"),
+        "REML, modified Knapp-Hartung interval": ("reml", "modified-knapp-hartung"),
+    }
+    others = [
+        _short(pool(*numbers, tau2=tau2, interval=interval, level=level), name)
+        for name, (tau2, interval) in names.items()
+    ]
+    counted = [row for row in estimated.rows if row.left_out is None or "event" in row.left_out]
+    if outcome.measure in MANTEL_HAENSZEL:
+        others.append(_short(pool_mantel_haenszel(values_table(counted), outcome.measure), "Mantel-Haenszel"))
+    if outcome.measure in (Measure.ODDS_RATIO, Measure.PETO_ODDS_RATIO):
+        others.append(_short(pool_peto(values_table(counted)), "Peto"))
+    return others
+
+
+def leave_one_out_rows(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
+    """Pool the main trials without each one in turn; empty for fewer than three trials."""
+    rows, plan = estimated.main, outcome.pooling
+    if len(rows) < 3:
+        return []
+    left = leave_one_out(
+        *estimated.numbers(rows),
+        model=plan.model,
+        tau2=plan.tau2,
+        interval=plan.interval,
+        level=plan.level,
+    )
+    return [
+        {"trial": row.trial, **{name: left[name].iloc[i] for name in ("estimate", "ci_low", "ci_high", "tau2")}}
+        for i, row in enumerate(rows)
+    ]
+
+
+def sensitivity(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
+    """Pool by the plan on other sets of trials: low risk of bias, with those left out by a notice.
+
+    Parameters
+    ----------
+    estimated : Estimated
+        Effects of the outcome.
+    outcome : Outcome
+        Its plan.
+
+    Returns
+    -------
+    list of dict
+        One per variant whose set of trials differs from the main one.
+    """
+    main = estimated.main
+    with_effect = estimated.effects.dropna().index
+    known = [row for row in estimated.rows if row.trial in with_effect]
+    flagged = [row for row in main if not any("expression of concern" in flag for flag in row.flags)]
+    variants: list[tuple[str, Sequence[TrialRow], str]] = [
+        ("low risk of bias only", [r for r in main if r.risk_of_bias == Judgement.LOW], ""),
+        ("without high risk of bias", [r for r in main if r.risk_of_bias != Judgement.HIGH], ""),
+        ("with retracted and held trials", known, "shown so that the effect of leaving them out can be seen"),
+        ("without trials under an expression of concern", flagged, ""),
+        ("without imputed numbers", [r for r in main if not r.imputed], ""),
+    ]
+    result = []
+    for name, rows, note in variants:
+        if {r.trial for r in rows} == {r.trial for r in main}:
+            continue
+        pooled = pool_planned(estimated, rows, outcome)
+        if pooled is None:
+            result.append({"name": name, "k": 0, "estimate": None, "ci_low": None, "ci_high": None,
+                           "tau2": None, "note": "no trial left"})  # fmt: skip
+        else:
+            result.append(_short(pooled, name, note))
+    return result
+
+
+def subgroup_blocks(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
+    """Compare the planned subgroups by an interaction test; trials without a level are counted apart."""
+    return [_subgroup(estimated, outcome, name) for name in outcome.subgroups if estimated.main]
+
+
+def _subgroup(estimated: Estimated, outcome: Outcome, name: str) -> dict[str, Any]:
+    rows = [row for row in estimated.main if name in row.subgroup]
+    levels = sorted({row.subgroup[name] for row in rows})
+    missing = len(estimated.main) - len(rows)
+    if len(levels) < 2:
+        return {"name": name, "planned": True, "levels": [], "without_level": missing,
+                "q": None, "q_df": None, "p": None, "why": "fewer than two levels with trials"}  # fmt: skip
+    numbers = estimated.numbers(rows)
+    test = subgroup_analysis(
+        *numbers, [row.subgroup[name] for row in rows], model=outcome.pooling.model, tau2=outcome.pooling.tau2
+    )
+    return {
+        "name": name,
+        "planned": True,
+        "without_level": missing,
+        "levels": [_short(pooled, level) | {"level": level} for level, pooled in test.levels.items()],
+        "q": test.q_between,
+        "q_df": test.df,
+        "p": test.p,
+        "why": "",
+    }
+
+
+def small_study(estimated: Estimated) -> dict[str, Any]:
+    """Egger's regression when there are ten trials or more; otherwise the reason why it is not done."""
+    k = len(estimated.main)
+    if k < FEWEST_FOR_SMALL_STUDY:
+        return {"done": False, "why": f"{k} trials; the test is read with ten or more only"}
+    test = egger(*estimated.numbers(estimated.main))
+    return {
+        "done": True,
+        "why": "",
+        "name": "Egger regression",
+        "intercept": test.intercept,
+        "standard_error": test.standard_error,
+        "p": test.p,
+    }
+
+
+def absolute_effects(planned: PooledEffect | None, outcome: Outcome) -> dict[str, Any] | None:
+    """Effect per 1000 people at the protocol's comparator risk; None without one."""
+    if planned is None or outcome.comparator_risk is None or outcome.measure not in BINARY:
+        return None
+    try:
+        effect = absolute_from_ratio(
+            planned.estimate,
+            planned.ci_low,
+            planned.ci_high,
+            measure=outcome.measure,
+            comparator_risk=outcome.comparator_risk,
+        )
+    except AnalysisError as error:
+        return {"comparator_risk": outcome.comparator_risk, "per": 1000, "difference": None,
+                "low": None, "high": None, "why": str(error)}  # fmt: skip
+    return {
+        "comparator_risk": outcome.comparator_risk,
+        "per": 1000,
+        "difference": effect.difference,
+        "low": effect.low,
+        "high": effect.high,
+        "why": "",
+    }
