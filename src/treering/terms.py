@@ -72,6 +72,13 @@ class IntervalMethod(StrEnum):
     MODIFIED_KNAPP_HARTUNG = "modified-knapp-hartung"
 
 
+class PredictionDf(StrEnum):
+    """Degrees of freedom of the prediction interval, k being the number of trials."""
+
+    K_MINUS_2 = "k-2"
+    K_MINUS_1 = "k-1"
+
+
 class Spending(StrEnum):
     """Alpha-spending function."""
 
@@ -196,3 +203,21 @@ class EventClass(StrEnum):
     INTEGRITY = "integrity notice"
     CERTAINTY_STALE = "certainty rating is stale"
     DEFECT = "defect notice"
+
+
+class CoverageState(StrEnum):
+    """How far one version fills one reporting item; nothing is ever filled with invented text."""
+
+    FILLED = "filled"
+    PARTLY = "partly"
+    MISSING = "missing"
+    STALE = "stale"
+    NOT_APPLICABLE = "not applicable"
+
+
+#: Stands beside every monitoring result (Cochrane expert panel 2018; Cochrane Handbook chapter 22).
+CAUTION = (
+    "A Cochrane expert panel (2018) and chapter 22 of the Cochrane Handbook advise against sequential methods "
+    "for main conclusions in most circumstances. A crossing is an alarm that asks the panel to meet; it is not "
+    "a conclusion."
+)
