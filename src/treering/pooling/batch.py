@@ -1,0 +1,123 @@
+"""Many syntheses laid side by side as one rectangle of numbers.
+
+Trials run down (axis 0) and syntheses across (axis 1), so that every sum over trials is a handful of long
+vector additions. An absent trial has estimate 0 and variance infinity: its weight is exactly zero and no
+mask has to be carried through the sums.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from treering.pooling.result import FloatArray
+
+IntArray = npt.NDArray[np.intp]
+
+CHUNK_NUMBERS = 32_768
+"""Numbers in one rectangle: small enough to stay in a core's second-level cache, which bounds memory too."""
+
+
+@dataclass(frozen=True)
+class Batch:
+    """Padded estimates and variances of several syntheses.
+
+    Attributes
+    ----------
+    y, v : ndarray, shape (n, g)
+        Estimates and variances; 0 and infinity where a synthesis has fewer than n trials.
+    k : ndarray, shape (g,)
+        Trials in each synthesis.
+    """
+
+    y: FloatArray
+    v: FloatArray
+    k: FloatArray
+
+    def columns(self, which: IntArray) -> Batch:
+        """Take the syntheses at these positions."""
+        return Batch(self.y[:, which], self.v[:, which], self.k[which])
+
+
+def single(y: FloatArray, v: FloatArray) -> Batch:
+    """One synthesis as a rectangle of one column."""
+    return Batch(y[:, None], v[:, None], np.array([float(y.size)]))
+
+
+def from_mask(y: FloatArray, v: FloatArray, present: npt.NDArray[np.bool_]) -> Batch:
+    """Several selections of the same trials, for example all but one.
+
+    Parameters
+    ----------
+    y, v : ndarray, shape (n,)
+        All trials.
+    present : ndarray of bool, shape (n, g)
+        Column j marks the trials of selection j.
+
+    Returns
+    -------
+    Batch
+        One synthesis for each column.
+    """
+    return Batch(
+        np.where(present, y[:, None], 0.0),
+        np.where(present, v[:, None], np.inf),
+        present.sum(axis=0, dtype=np.float64),
+    )
+
+
+def chunks(counts: IntArray) -> Iterator[slice]:
+    """Cut a run of syntheses into slices that each fill about one rectangle.
+
+    Parameters
+    ----------
+    counts : ndarray of int, shape (g,)
+        Trials in each synthesis.
+
+    Yields
+    ------
+    slice
+        Consecutive syntheses; at least one, however long it is.
+    """
+    start = 0
+    while start < counts.size:
+        # The rectangle is as tall as its longest synthesis, so the running maximum decides the width.
+        window = counts[start : start + CHUNK_NUMBERS]
+        height = np.maximum.accumulate(window)
+        fits = height * np.arange(1, window.size + 1) <= CHUNK_NUMBERS
+        width = max(1, int(np.argmin(fits)) if not fits.all() else window.size)
+        yield slice(start, start + width)
+        start += width
+
+
+def pack(y: FloatArray, v: FloatArray, counts: IntArray) -> Batch:
+    """Lay consecutive runs of trials side by side.
+
+    Parameters
+    ----------
+    y, v : ndarray, shape (sum of counts,)
+        Trials, those of one synthesis next to each other.
+    counts : ndarray of int, shape (g,)
+        Trials in each synthesis.
+
+    Returns
+    -------
+    Batch
+        The padded rectangle.
+    """
+    tall, wide = int(counts.max()), counts.size
+    if (counts == tall).all():
+        return Batch(
+            np.ascontiguousarray(y.reshape(wide, tall).T),
+            np.ascontiguousarray(v.reshape(wide, tall).T),
+            counts.astype(np.float64),
+        )
+    present = np.arange(tall) < counts[:, None]
+    padded_y, padded_v = np.zeros((wide, tall)), np.full((wide, tall), np.inf)
+    padded_y[present], padded_v[present] = y, v
+    return Batch(
+        np.ascontiguousarray(padded_y.T), np.ascontiguousarray(padded_v.T), counts.astype(np.float64)
+    )

@@ -1,0 +1,201 @@
+"""The one implementation behind `pool`, `pool_many`, leave-one-out and cumulative pooling.
+
+A batch of syntheses goes in, one column for each field of `PooledEffect` comes out.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from treering.pooling.batch import Batch
+from treering.pooling.checks import check_level, choose
+from treering.pooling.inference import (
+    Inference,
+    chi2_quantile,
+    heterogeneity_p,
+    i2_interval,
+    normal_test,
+    prediction,
+    t_test,
+)
+from treering.pooling.moments import Fit, fit
+from treering.pooling.qroot import solve_q
+from treering.pooling.result import (
+    COMMON_EFFECT,
+    NO_I2_INTERVAL,
+    NO_PREDICTION,
+    NO_SPREAD,
+    ONE_TRIAL,
+    FloatArray,
+)
+from treering.pooling.tau2 import estimate_tau2
+from treering.terms import IntervalMethod, PoolingModel, PredictionDf, Tau2
+
+Columns = dict[str, Any]
+BoolArray = npt.NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class Options:
+    """Checked options of a pooling; see `pool`."""
+
+    model: PoolingModel
+    tau2: Tau2
+    interval: IntervalMethod
+    level: float
+    prediction_df: PredictionDf
+
+    @classmethod
+    def read(cls, *, model: str, tau2: str, interval: str, level: float, prediction_df: str) -> Options:
+        """Read options written out in words.
+
+        Raises
+        ------
+        AnalysisError
+            A word is not known or the level is not between 0 and 1.
+        """
+        return cls(
+            choose(PoolingModel, model, "model"),
+            choose(Tau2, tau2, "tau2"),
+            choose(IntervalMethod, interval, "interval"),
+            check_level(level),
+            choose(PredictionDf, prediction_df, "prediction_df"),
+        )
+
+    @property
+    def interval_used(self) -> IntervalMethod:
+        """Knapp-Hartung allows for an estimated tau2; a common effect has none and stays with Wald."""
+        return self.interval if self.model is PoolingModel.RANDOM else IntervalMethod.WALD
+
+
+def pool_batch(batch: Batch, options: Options) -> Columns:
+    """Pool every synthesis of a batch.
+
+    Parameters
+    ----------
+    batch : Batch
+        Checked syntheses of at least one trial each.
+    options : Options
+        Checked options.
+
+    Returns
+    -------
+    dict
+        One array for each field of `PooledEffect`; "weights" has shape (n, g).
+    """
+    centred, centre = _centre(batch)
+    common = fit(centred, np.zeros(batch.k.size))
+    lone = batch.k < 2.0
+    tau2, tau2_low, tau2_high = _between_trials(centred, common, lone, options)
+    chosen = fit(centred, tau2) if tau2.any() else common
+    estimate = centre + chosen.mean
+    error, test = _test(estimate, chosen, batch.k, options)
+    columns: Columns = {"estimate": estimate, "standard_error": error}
+    columns |= {"ci_low": test.low, "ci_high": test.high, "z": test.z, "p": test.p}
+    columns |= {"tau2": np.where(lone, np.nan, tau2), "tau2_low": tau2_low, "tau2_high": tau2_high}
+    columns |= _heterogeneity(common, chosen, batch.k, options.level)
+    columns |= _prediction(estimate, chosen, tau2, batch.k, options)
+    columns |= {"weights": chosen.w / chosen.total, "k": batch.k.astype(np.intp)}
+    return columns | _words(columns, lone, options)
+
+
+def _centre(batch: Batch) -> tuple[Batch, FloatArray]:
+    """Move each synthesis near zero, so that squares keep their digits whatever the estimates."""
+    w = np.reciprocal(batch.v)
+    centre = np.einsum("ij,ij->j", w, batch.y) / w.sum(axis=0)
+    return Batch(np.where(w > 0.0, batch.y - centre, 0.0), batch.v, batch.k), centre
+
+
+def _between_trials(
+    batch: Batch, common: Fit, lone: BoolArray, options: Options
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Tau2 (zero where it has no meaning) and its Q-profile interval (Viechtbauer 2007, Stat Med 26:37)."""
+    if lone.any():
+        tau2, low, high = np.zeros(lone.size), np.full(lone.size, np.nan), np.full(lone.size, np.nan)
+        several = np.flatnonzero(~lone)
+        if several.size:
+            part = Fit(*(field[..., several] for field in common))
+            found = _between_trials(batch.columns(several), part, lone[several], options)
+            tau2[several], low[several], high[several] = found
+        return tau2, low, high
+    estimated = options.model is PoolingModel.RANDOM
+    tau2 = estimate_tau2(batch, common, options.tau2) if estimated else np.zeros(lone.size)
+    outside, df = (1.0 - options.level) / 2.0, batch.k - 1.0
+    low = solve_q(batch, chi2_quantile(df, outside), common, tau2)
+    high = solve_q(batch, chi2_quantile(df, 1.0 - outside), common, tau2)
+    return tau2, low, high
+
+
+def _test(estimate: FloatArray, chosen: Fit, k: FloatArray, options: Options) -> tuple[FloatArray, Inference]:
+    """Return standard error and test (Knapp and Hartung 2003, Stat Med 22:2693; modified: Roever 2015)."""
+    ordinary = 1.0 / np.sqrt(chosen.total)
+    if options.interval_used is IntervalMethod.WALD:
+        return ordinary, normal_test(estimate, ordinary, options.level)
+    df = np.maximum(k - 1.0, 1.0)
+    factor = chosen.q / df
+    if options.interval_used is IntervalMethod.MODIFIED_KNAPP_HARTUNG:
+        factor = np.maximum(factor, 1.0)
+    lone = k < 2.0
+    error = np.where(lone, ordinary, ordinary * np.sqrt(factor))
+    test = t_test(estimate, error, df, options.level)
+    if lone.any():
+        plain = normal_test(estimate, ordinary, options.level)
+        test = Inference(*(np.where(lone, a, b) for a, b in zip(plain, test, strict=True)))
+    return error, test
+
+
+def _heterogeneity(common: Fit, chosen: Fit, k: FloatArray, level: float) -> Columns:
+    df, q = k - 1.0, np.where(k > 1.0, common.q, 0.0)
+    estimable = df > 0.0
+    low, high = i2_interval(q, df, level)
+    excess = np.divide(q - df, q, out=np.zeros_like(q), where=q > df)
+    return {
+        "q": q,
+        "q_df": df,
+        "q_p": heterogeneity_p(q, df),
+        "i2": np.where(estimable, excess, np.nan),
+        "i2_low": low,
+        "i2_high": high,
+        "h2": np.divide(q, df, out=np.full_like(q, np.nan), where=estimable),
+        # V_common / V_random is the ratio of the sums of weights, the other way round.
+        "d2": np.where(estimable, 1.0 - chosen.total / common.total, np.nan),
+    }
+
+
+def _prediction(
+    estimate: FloatArray, chosen: Fit, tau2: FloatArray, k: FloatArray, options: Options
+) -> Columns:
+    lost = 2.0 if options.prediction_df is PredictionDf.K_MINUS_2 else 1.0
+    df = k - lost if options.model is PoolingModel.RANDOM else np.zeros_like(k)
+    low, high = prediction(estimate, 1.0 / chosen.total, tau2, df, options.level)
+    return {"prediction_low": low, "prediction_high": high}
+
+
+def _words(columns: Columns, lone: BoolArray, options: Options) -> Columns:
+    """Fields that are not numbers, with a remark wherever a number had to stay open."""
+    count = lone.size
+    remarks = np.empty(count, dtype=object)
+    remarks.fill(())
+    common = options.model is PoolingModel.COMMON
+    short = np.isnan(columns["prediction_low"]) & ~lone
+    for flagged, remark in (
+        (lone, ONE_TRIAL),
+        (short, COMMON_EFFECT if common else NO_PREDICTION),
+        (np.isnan(columns["i2_high"]) & ~lone, NO_I2_INTERVAL),
+        (np.isnan(columns["p"]), NO_SPREAD),
+    ):
+        for at in np.flatnonzero(flagged):
+            remarks[at] += (remark,)
+    interval = np.full(count, str(options.interval_used), dtype=object)
+    interval[lone] = str(IntervalMethod.WALD)
+    return {
+        "model": str(options.model),
+        "interval": interval,
+        "tau2_method": str(options.tau2),
+        "level": options.level,
+        "remarks": remarks,
+    }
