@@ -10,6 +10,15 @@
     │   └── NotConvergedError  an iteration ended without an answer
     ├── StoreError             the evidence store refused or is damaged
     │   ├── StoreBusyError     another update holds the writer's lock
+    │   ├── CanonicalError     a value has no canonical bytes
+    │   ├── LedgerError        an entry breaks a rule of the ledger; one class for each rule
+    │   │   ├── EntryGapError     a sequence number is missing or out of order
+    │   │   ├── BrokenLinkError   an entry does not name the hash of the one before
+    │   │   ├── EntryHashError    bytes and hash of an entry differ
+    │   │   ├── ReplacementError  a live key is taken, or what is replaced is not live
+    │   │   ├── KnownDateError    an entry is known earlier than the one before
+    │   │   ├── VersionGapError   a version's number does not follow the last one's
+    │   │   └── TreeHeadError     size or root of the Merkle tree differ from what is stated
     │   └── AuditError         a numbered check of the audit failed
     ├── ReportError            a version cannot be rendered
     └── NoticeError            a notice could not be delivered
@@ -98,6 +107,42 @@ class StoreError(TreeringError):
 
 class StoreBusyError(StoreError):
     """Another update holds the writer's lock."""
+
+
+class CanonicalError(StoreError):
+    """A value has no canonical bytes."""
+
+
+class LedgerError(StoreError):
+    """An entry breaks a rule of the ledger."""
+
+
+class EntryGapError(LedgerError):
+    """A sequence number is missing or out of order."""
+
+
+class BrokenLinkError(LedgerError):
+    """An entry does not name the hash of the one before."""
+
+
+class EntryHashError(LedgerError):
+    """Bytes and hash of an entry differ."""
+
+
+class ReplacementError(LedgerError):
+    """A live key is taken, or what is replaced is not live."""
+
+
+class KnownDateError(LedgerError):
+    """An entry is known earlier than the one before."""
+
+
+class VersionGapError(LedgerError):
+    """A version's number does not follow the last one's."""
+
+
+class TreeHeadError(LedgerError):
+    """Size or root of the Merkle tree differ from what is stated."""
 
 
 class AuditError(StoreError):
