@@ -8,11 +8,15 @@ from treering.monitoring.boundaries import (
     next_boundary,
     nominal_p,
 )
+from treering.monitoring.look import Look
+from treering.monitoring.plan import MonitoringPlan
 from treering.monitoring.spending import PER_TAIL_CONVENTION, alpha_spent
 
 __all__ = [
     "PER_TAIL_CONVENTION",
     "Boundaries",
+    "Look",
+    "MonitoringPlan",
     "NextBoundary",
     "alpha_spent",
     "boundaries",
