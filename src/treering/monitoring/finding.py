@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.special import ndtri
 
 from treering.monitoring.futility import futility_boundaries
 from treering.monitoring.plan import MonitoringPlan
@@ -97,16 +96,19 @@ def _redrawn(plan: MonitoringPlan, state: LedgerState, information: float) -> fl
 def _futility(plan: MonitoringPlan, state: LedgerState, fraction: float) -> tuple[float | None, float | None]:
     """Return the futility Z at a fraction and the inflation of the required information.
 
-    The looks so far, this one and one at the required information are taken as the planned ones. The
-    inflation is (drift with the futility bound / drift without)^2.
+    The looks so far, this one and one at the required information are taken as the planned ones.
     """
     if not 0.0 < fraction < 1.0 - SAME:
         return None, None
     required = plan.required_information
     before = [info / required for info, _ in state.used if info / required < fraction * (1.0 - SAME)]
     drawn = futility_boundaries(
-        [*before, fraction, 1.0], alpha=state.available, beta=1.0 - plan.power, sides=plan.sides
+        [*before, fraction],
+        alpha=state.available,
+        beta=1.0 - plan.power,
+        sides=plan.sides,
+        spending=plan.spending,
+        parameter=plan.spending_parameter,
     )
-    value = float(drawn.z[len(before)])
-    plain = float(-ndtri(state.available / plan.sides) + ndtri(plan.power))
-    return (value if np.isfinite(value) else None), (float(drawn.drift) / plain) ** 2
+    value = float(drawn.z[-1])
+    return (value if np.isfinite(value) else None), float(drawn.inflation)
