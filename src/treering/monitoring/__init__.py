@@ -1,5 +1,11 @@
 """Sequential monitoring of a pooled effect that is honest about its looks."""
 
+from treering.monitoring.anytime import (
+    iterated_logarithm_z,
+    log_e_product,
+    log_e_value,
+    mixture_interval,
+)
 from treering.monitoring.boundaries import (
     Boundaries,
     NextBoundary,
@@ -8,19 +14,71 @@ from treering.monitoring.boundaries import (
     next_boundary,
     nominal_p,
 )
+from treering.monitoring.crossing import Crossing, crossing_probabilities
+from treering.monitoring.futility import FutilityBoundaries, futility_boundaries, next_futility_bound
+from treering.monitoring.inference import (
+    StagewiseEstimate,
+    conditional_power,
+    median_unbiased,
+    predictive_power,
+    repeated_interval,
+    stagewise_p,
+    trend_drift,
+)
+from treering.monitoring.information import (
+    detection_constant,
+    minimum_trials,
+    required_events,
+    required_information,
+)
 from treering.monitoring.look import Look
+from treering.monitoring.participants import (
+    events_for_information,
+    information_per_participant,
+    intervention_risk,
+    required_participants,
+)
 from treering.monitoring.plan import MonitoringPlan
-from treering.monitoring.spending import PER_TAIL_CONVENTION, alpha_spent
+from treering.monitoring.spending import PER_TAIL_CONVENTION, alpha_spent, beta_spent
+from treering.monitoring.table import BoundaryTable, DetectableEffect, boundary_table
 
 __all__ = [
     "PER_TAIL_CONVENTION",
     "Boundaries",
+    "BoundaryTable",
+    "Crossing",
+    "DetectableEffect",
+    "FutilityBoundaries",
     "Look",
     "MonitoringPlan",
     "NextBoundary",
+    "StagewiseEstimate",
     "alpha_spent",
+    "beta_spent",
     "boundaries",
     "boundaries_for_alpha",
+    "boundary_table",
+    "conditional_power",
+    "crossing_probabilities",
+    "detection_constant",
+    "events_for_information",
+    "futility_boundaries",
+    "information_per_participant",
+    "intervention_risk",
+    "iterated_logarithm_z",
+    "log_e_product",
+    "log_e_value",
+    "median_unbiased",
+    "minimum_trials",
+    "mixture_interval",
     "next_boundary",
+    "next_futility_bound",
     "nominal_p",
+    "predictive_power",
+    "repeated_interval",
+    "required_events",
+    "required_information",
+    "required_participants",
+    "stagewise_p",
+    "trend_drift",
 ]

@@ -176,3 +176,27 @@ def check_positive(value: float, name: str) -> None:
             expected=f"a finite {name} above 0",
             next_step="Check the figure in the protocol or in the pooled result it comes from.",
         )
+
+
+def check_share(value: float, name: str) -> None:
+    """Refuse a risk or share that is not strictly between 0 and 1.
+
+    Parameters
+    ----------
+    value : float
+        The figure.
+    name : str
+        What it is called in the message.
+
+    Raises
+    ------
+    AnalysisError
+        If it is not in (0, 1).
+    """
+    if not 0.0 < value < 1.0:
+        raise AnalysisError(
+            f"The {name} is not between 0 and 1.",
+            found=value,
+            expected=f"0 < {name} < 1",
+            next_step="State risks and shares as proportions (0.2), not as percentages (20).",
+        )

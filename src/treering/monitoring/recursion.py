@@ -157,7 +157,7 @@ def _clipped(low: float, high: float, information: float, drift: float) -> tuple
     return max(low, floor), min(high, ceiling)
 
 
-def tail_bound(paths: Paths, information: float, target: float) -> float:
+def tail_bound(paths: Paths, information: float, target: float, *, drift: float = 0.0) -> float:
     """Return the score above which exactly `target` of the paths leave at the next look.
 
     Parameters
@@ -167,7 +167,9 @@ def tail_bound(paths: Paths, information: float, target: float) -> float:
     information : float
         Information at the next look.
     target : float
-        Chance to be still inside now and above the score then, without drift.
+        Chance to be still inside now and above the score then.
+    drift : float
+        Mean of the score per unit of information.
 
     Returns
     -------
@@ -185,13 +187,17 @@ def tail_bound(paths: Paths, information: float, target: float) -> float:
     started above the root, comes down to it without overshooting.
     """
     sigma = math.sqrt(information - paths.information)
-    ceiling = float(paths.nodes.max()) + _FAR * sigma
-    score = min(-float(special.ndtri(min(target, 1.0))) * math.sqrt(information), ceiling)
-    if not math.isfinite(score) or tail(paths, information, ceiling) >= target:
+    shift = drift * sigma**2
+    ceiling = float(paths.nodes.max()) + shift + _FAR * sigma
+    if target <= tail(paths, information, ceiling, drift=drift):
         return math.inf
+    single = drift * information - float(special.ndtri(min(target, 1.0))) * math.sqrt(information)
+    score = min(single, ceiling)
     for _ in range(100):
-        left = tail(paths, information, score)
-        reach = (score - paths.nodes) / sigma
+        left = tail(paths, information, score, drift=drift)
+        if not left > 0.0:
+            break
+        reach = (score - shift - paths.nodes) / sigma
         slope = float(paths.mass @ np.exp(-0.5 * reach * reach)) / (sigma * _ROOT_2PI)
         change = left * math.log(left / target) / slope
         score += change

@@ -160,6 +160,57 @@ def alpha_spent(
     """
     check_alpha(alpha)
     check_sides(sides)
+    return _spent(fractions, alpha, sides, spending, parameter)
+
+
+def beta_spent(
+    fractions: ArrayLike,
+    *,
+    beta: float = 0.1,
+    spending: str = Spending.OBRIEN_FLEMING,
+    parameter: float | None = None,
+) -> FloatArray:
+    """Return the cumulative beta (chance of a wrong futility stop) allowed at each fraction.
+
+    Parameters
+    ----------
+    fractions : array_like, shape (k,)
+        Information fractions, 0 or more; from 1 on all of beta is spent.
+    beta : float
+        One minus the power, in (0, 1).
+    spending : str or Spending
+        The function, applied once to the whole beta.
+    parameter : float, optional
+        rho (power family, default 3) or gamma (Hwang, Shih and DeCani, default -4).
+
+    Returns
+    -------
+    ndarray of float, shape (k,)
+        Probabilities, capped at beta.
+
+    Raises
+    ------
+    AnalysisError
+        If beta, the name, the parameter or a fraction cannot be used.
+
+    References
+    ----------
+    Pampallona, Tsiatis and Kim 2001, Drug Information Journal 35:1113.
+    """
+    if not 0.0 < beta < 1.0:
+        raise AnalysisError(
+            "The chance beta to miss the effect is outside the open interval from 0 to 1.",
+            found=beta,
+            expected="0 < beta < 1, for example 0.1 for a power of 90%",
+            next_step="State beta as one minus the power.",
+        )
+    return _spent(fractions, beta, 1, spending, parameter)
+
+
+def _spent(
+    fractions: ArrayLike, rate: float, sides: int, spending: str, parameter: float | None
+) -> FloatArray:
+    """Apply the function to rate/sides in each tail and cap the total at the rate."""
     function = spending_function(spending)
     shape = spending_parameter(function, parameter)
     t = np.atleast_1d(np.asarray(fractions, dtype=np.float64))
@@ -171,6 +222,6 @@ def alpha_spent(
             next_step="Divide the information of each look by the required information.",
         )
     with np.errstate(divide="ignore"):
-        per_tail = _FUNCTIONS[function](np.minimum(t, 1.0), alpha / sides, shape)
-    spent: FloatArray = np.where(t >= 1.0, alpha, np.minimum(sides * per_tail, alpha))
+        per_tail = _FUNCTIONS[function](np.minimum(t, 1.0), rate / sides, shape)
+    spent: FloatArray = np.where(t >= 1.0, rate, np.minimum(sides * per_tail, rate))
     return spent
