@@ -1,0 +1,118 @@
+"""The ledger of arm use: proves that nobody is counted twice in one synthesis.
+
+Within one synthesis the contrasts of a trial may together use no more participants, and no more events, of an
+arm than the arm has (Cochrane Handbook, version 5.1, sections 9.3.1 and 16.5.3).
+"""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+
+from treering.effects import checks
+from treering.effects.rows import BoolArray, refuse
+from treering.errors import AnalysisError
+
+USES = ("synthesis", "trial", "arm", "participants")
+ARMS = ("trial", "arm", "randomised")
+# Shares such as a third add up to the whole only within floating-point error.
+_NOISE = 1e-9
+
+
+def arm_ledger(uses: pd.DataFrame, arms: pd.DataFrame) -> pd.DataFrame:
+    """Add up the use of every arm in every synthesis, and refuse an arm used beyond what it has.
+
+    Parameters
+    ----------
+    uses : DataFrame
+        One row for each side of each contrast: ``synthesis``, ``trial``, ``arm``, ``participants`` and, for
+        binary outcomes, ``events`` (empty elsewhere).
+    arms : DataFrame
+        One row for each arm: ``trial``, ``arm``, ``randomised`` and, if ``uses`` has ``events``, the arm's
+        ``events`` (empty where not known).
+
+    Returns
+    -------
+    DataFrame
+        Sorted by synthesis, trial and arm: these three, ``contrasts``, ``used``, ``randomised``, ``unused``
+        and, with events, ``events_used`` and ``events``. That it is returned at all is the proof.
+
+    Raises
+    ------
+    AnalysisError
+        If a column is missing, an arm is unknown or listed twice, a figure is no count, or an arm is used
+        beyond its participants or events; names the trial, the arm and the synthesis.
+    """
+    with_events = "events" in uses.columns
+    fields = (*ARMS, "events") if with_events else ARMS
+    _need(uses, USES)
+    _need(arms, fields)
+    known = _read(arms, "randomised", with_events)
+    twice = known.duplicated(["trial", "arm"]).to_numpy()
+    _refuse(twice, known, "arm", "arm", "is listed twice", "one row for each arm")
+    ledger = _added_up(_read(uses, "participants", with_events), with_events)
+    ledger = ledger.merge(known[list(fields)], on=["trial", "arm"], how="left", validate="many_to_one")
+    _refuse(
+        ledger["randomised"].isna().to_numpy(),
+        ledger,
+        "arm",
+        "arm",
+        "is not an arm of the trial",
+        "a listed arm",
+    )
+    ledger["unused"] = ledger["randomised"] - ledger["used"]
+    _within(ledger, "used", "randomised", "participants")
+    if with_events:
+        _within(ledger, "events_used", "events", "events")
+    return ledger.sort_values(["synthesis", "trial", "arm"], ignore_index=True)
+
+
+def _read(table: pd.DataFrame, count: str, with_events: bool) -> pd.DataFrame:
+    """Read counts as numbers from zero; participants must be there, events may be empty."""
+    labels = np.asarray(table["trial"].to_numpy(), dtype=object)
+    out = table.copy()
+    out[count] = checks.read_numbers(table, count, labels)
+    _refuse(out[count].isna().to_numpy(), out, count, count, "is missing", "a count")
+    for field in (count, "events") if with_events else (count,):
+        out[field] = checks.read_numbers(table, field, labels)
+        _refuse((out[field] < 0).to_numpy(), out, field, field, "is below zero", "0 or more")
+    return out
+
+
+def _added_up(uses: pd.DataFrame, with_events: bool) -> pd.DataFrame:
+    groups = uses.groupby(["synthesis", "trial", "arm"], sort=False, dropna=False)
+    ledger = groups.agg(contrasts=("participants", "size"), used=("participants", "sum"))
+    if with_events:
+        ledger["events_used"] = groups["events"].sum(min_count=1)
+    return ledger.reset_index()
+
+
+def _within(ledger: pd.DataFrame, used: str, limit: str, what: str) -> None:
+    """No arm gives more than it has; an arm whose events are not known can only be checked for people."""
+    excess = ledger[used] > ledger[limit] * (1 + _NOISE)
+    _refuse(
+        excess.to_numpy(),
+        ledger,
+        f"arm, {what}",
+        used,
+        f"the arm is used beyond its {what}",
+        f"at most the arm's {what}; combine the arms or split the shared one",
+    )
+
+
+def _refuse(bad: BoolArray, table: pd.DataFrame, field: str, shown: str, problem: str, expected: str) -> None:
+    """Refuse the first bad row, naming the arm and, where there is one, the synthesis."""
+
+    def found(at: int) -> str:
+        place = table.iloc[at]
+        where = f" in synthesis {place['synthesis']}" if "synthesis" in table.columns else ""
+        return f"{place[shown]} (arm {place['arm']}{where})"
+
+    labels = np.asarray(table["trial"].to_numpy(), dtype=object)
+    refuse(np.asarray(bad, dtype=bool), labels, field, found, problem, expected)
+
+
+def _need(table: pd.DataFrame, fields: tuple[str, ...]) -> None:
+    for field in fields:
+        if field not in table.columns:
+            raise AnalysisError(f"{field}: the column is missing.", expected=" ".join(fields))
