@@ -121,10 +121,10 @@ def _people(rows: Sequence[TrialRow]) -> dict[str, Any]:
     }
 
 
-def _trials(
-    estimated: Estimated, planned: PooledEffect | None, outcome: Outcome
-) -> list[dict[str, Any]]:
-    weights = {} if planned is None else dict(zip((r.trial for r in estimated.main), planned.weights, strict=True))
+def _trials(estimated: Estimated, planned: PooledEffect | None, outcome: Outcome) -> list[dict[str, Any]]:
+    weights = (
+        {} if planned is None else dict(zip((r.trial for r in estimated.main), planned.weights, strict=True))
+    )
     reach = float(ndtri((1 + outcome.pooling.level) / 2))
     return [_trial(row, estimated, weights.get(row.trial), reach) for row in estimated.rows]
 

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -146,3 +147,29 @@ def method_words(outcome: Outcome) -> str:
         "modified-knapp-hartung": "modified Knapp-Hartung interval (variance never below the ordinary one)",
     }
     return f"random effects, tau2 by {names[plan.tau2.value]}, {intervals[plan.interval.value]}"
+
+
+def repool_rows(outcome: Outcome, rows: Sequence[Mapping[str, Any]]) -> float | None:
+    """Pool trial rows of an analysis body by the plan and return the estimate on the analysis scale.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The outcome with its plan.
+    rows : sequence of mapping
+        Rows of ``trials`` of an analysis body.
+
+    Returns
+    -------
+    float or None
+        None when there is no row to pool.
+    """
+    usable = [row for row in rows if row["estimate"] is not None]
+    if not usable:
+        return None
+    if outcome.pooling.method == "mantel-haenszel":
+        table = pd.DataFrame([row["values"] for row in usable], index=[row["trial"] for row in usable])
+        return pool_mantel_haenszel(table, outcome.measure, correction=outcome.pooling.correction).estimate
+    estimates = np.array([row["estimate"] for row in usable], dtype=float)
+    errors = np.array([row["standard_error"] for row in usable], dtype=float)
+    return pool_by(outcome.pooling, estimates, errors**2).estimate

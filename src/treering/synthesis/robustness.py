@@ -90,7 +90,10 @@ def leave_one_out_rows(estimated: Estimated, outcome: Outcome) -> list[dict[str,
         level=plan.level,
     )
     return [
-        {"trial": row.trial, **{name: left[name].iloc[i] for name in ("estimate", "ci_low", "ci_high", "tau2")}}
+        {
+            "trial": row.trial,
+            **{name: left[name].iloc[i] for name in ("estimate", "ci_low", "ci_high", "tau2")},
+        }
         for i, row in enumerate(rows)
     ]
 

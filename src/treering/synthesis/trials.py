@@ -15,11 +15,19 @@ class Entry(Protocol):
     """What synthesis reads of a stored entry."""
 
     @property
-    def key(self) -> str: ...
+    def key(self) -> str:
+        """Key of the entry."""
+        ...
+
     @property
-    def body(self) -> Mapping[str, Any]: ...
+    def body(self) -> Mapping[str, Any]:
+        """Content of the entry."""
+        ...
+
     @property
-    def true_at(self) -> str: ...
+    def true_at(self) -> str:
+        """ISO date at which it was true."""
+        ...
 
 
 class StateView(Protocol):

@@ -1,0 +1,8 @@
+"""One synthesis: the verified results of one outcome, pooled and monitored by the protocol's plan."""
+
+from treering.synthesis.analyse import analyse
+from treering.synthesis.estimates import repool_rows
+from treering.synthesis.numbers import plain, rounded
+from treering.synthesis.trials import StateView, TrialRow, trial_rows
+
+__all__ = ["StateView", "TrialRow", "analyse", "plain", "repool_rows", "rounded", "trial_rows"]

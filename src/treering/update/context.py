@@ -1,0 +1,128 @@
+"""A review on disk, and the fixed facts of one run."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from pathlib import Path
+
+from treering.errors import ProtocolError, StoreError
+from treering.protocol import Panel, Protocol, read_panel, read_protocol
+from treering.store import EvidenceStore, create, open_store
+
+
+@dataclass(frozen=True)
+class Review:
+    """A review folder with its config read and checked.
+
+    Parameters
+    ----------
+    folder : Path
+        The review folder.
+    protocol : Protocol
+        config/review.toml.
+    protocol_text : str
+        Its text as it stands, kept in the store with every version.
+    panel : Panel
+        config/panel.toml.
+    """
+
+    folder: Path
+    protocol: Protocol
+    protocol_text: str
+    panel: Panel
+
+    @property
+    def intake(self) -> Path:
+        """Where reviewers drop files."""
+        return self.folder / "intake"
+
+    @property
+    def reports(self) -> Path:
+        """Where versions are published."""
+        return self.folder / "reports"
+
+    @property
+    def outbox(self) -> Path:
+        """Where notices of the channel "file" are laid."""
+        return self.reports / "outbox"
+
+    @property
+    def store_place(self) -> str:
+        """Path or URL of the evidence store."""
+        return self.protocol.store.url or str(self.folder / "store" / "evidence.sqlite")
+
+
+@dataclass(frozen=True)
+class RunContext:
+    """What one run fixes once and hands down: the review, the time and the code version."""
+
+    review: Review
+    as_of: datetime
+    code_version: str
+
+    @property
+    def known_at(self) -> str:
+        """The run's time as the store writes it: ISO, UTC, whole seconds."""
+        return self.as_of.astimezone(UTC).replace(microsecond=0).isoformat().replace("+00:00", "Z")
+
+    @property
+    def day(self) -> str:
+        """ISO date of the run."""
+        return self.known_at[:10]
+
+
+def read_review(folder: Path) -> Review:
+    """Read the config of the review in `folder`.
+
+    Parameters
+    ----------
+    folder : Path
+        The review folder.
+
+    Returns
+    -------
+    Review
+
+    Raises
+    ------
+    ProtocolError
+        When a config file is missing or has faults.
+    """
+    config = folder / "config" / "review.toml"
+    protocol = read_protocol(config)
+    panel_path = folder / "config" / "panel.toml"
+    panel = read_panel(panel_path) if panel_path.exists() else Panel(format=1)
+    return Review(folder, protocol, config.read_text(encoding="utf-8"), panel)
+
+
+def open_evidence(review: Review, *, make: bool = False) -> EvidenceStore:
+    """Open the evidence store of `review`; with `make`, lay down an empty one where there is none.
+
+    Raises
+    ------
+    StoreError
+        When there is no store, or it cannot be opened.
+    ProtocolError
+        When the store belongs to another review.
+    """
+    place = review.store_place
+    is_file = "://" not in place
+    if is_file and not Path(place).exists():
+        if not make:
+            raise StoreError(
+                "there is no evidence store yet.", file=place, next_step="Run `treering update` once."
+            )
+        Path(place).parent.mkdir(parents=True, exist_ok=True)
+        return create(place, review=review.protocol.review.id)
+    store = open_store(place)
+    if store.review != review.protocol.review.id:
+        store.close()
+        raise ProtocolError(
+            "the evidence store belongs to another review.",
+            file=place,
+            found=store.review,
+            expected=review.protocol.review.id,
+            next_step="Set [store] url, or the id of the review, in config/review.toml.",
+        )
+    return store

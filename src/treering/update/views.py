@@ -1,0 +1,153 @@
+"""The view of one version, built from the store alone, so that any version can be rendered again."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+from treering.errors import StoreError
+from treering.intake import settle
+from treering.report import ReportView, build_view
+from treering.store import EvidenceStore, State, StoredEntry
+from treering.terms import EntryKind
+from treering.update.versions import Basis, analyses_of, changes_of, stored_protocol
+
+#: Lists of the report and the kind of entry that each prints.
+LISTS = {
+    "waivers": EntryKind.WAIVER,
+    "integrity": EntryKind.INTEGRITY,
+    "searches": EntryKind.SEARCH,
+    "ongoing": EntryKind.ONGOING,
+    "studies": EntryKind.STUDY,
+    "reports": EntryKind.REPORT,
+    "screening": EntryKind.SCREENING,
+    "bias": EntryKind.RISK_OF_BIAS,
+    "verifications": EntryKind.VERIFICATION,
+    "amendments": EntryKind.AMENDMENT,
+    "defects": EntryKind.DEFECT,
+}
+
+
+def version_body(store: EvidenceStore, version: int) -> dict[str, Any]:
+    """Return the body of one version.
+
+    Raises
+    ------
+    StoreError
+        When there is no such version.
+    """
+    versions = store.versions()
+    if not 1 <= version <= len(versions):
+        raise StoreError(
+            "there is no such version.",
+            version=version,
+            expected=f"1 to {len(versions)}" if versions else "none yet",
+            next_step="`treering history` lists the versions.",
+        )
+    return versions[version - 1]
+
+
+def basis_of(store: EvidenceStore, version: int) -> Basis:
+    """Return what a stored version was made from: the evidence, without its own looks and analyses."""
+    body = version_body(store, version)
+    previous = store.versions()[version - 2] if version > 1 else None
+    since = -1 if previous is None else int(previous["entries"])
+    whole = store.state(version=version)
+    evidence = whole.before(version)
+    return Basis(
+        version=version,
+        date=str(body["date"]),
+        protocol=stored_protocol(whole),
+        state=evidence,
+        previous={} if previous is None else analyses_of(evidence, int(previous["version"])),
+        fresh=tuple(entry for entry in evidence.everything() if entry.seq > since),
+        code_versions=(
+            None if previous is None else str(previous["code_version"]),
+            str(body["code_version"]),
+        ),
+    )
+
+
+def version_view(store: EvidenceStore, version: int) -> ReportView:
+    """Build the report of a stored version from the store.
+
+    Parameters
+    ----------
+    store : EvidenceStore
+        The evidence store.
+    version : int
+        Number of the version, from 1.
+
+    Returns
+    -------
+    ReportView
+    """
+    analyses = analyses_of(store.state(version=version), version)
+    return view_from(store, basis_of(store, version), analyses)
+
+
+def view_from(store: EvidenceStore, basis: Basis, analyses: Mapping[str, dict[str, Any]]) -> ReportView:
+    """Build the report of a stored version from given analyses (stored ones, or ones computed again)."""
+    body = version_body(store, basis.version)
+    ordered = {o.id: analyses[o.id] for o in basis.protocol.outcomes if o.id in analyses}
+    return build_view(
+        protocol=basis.protocol,
+        version=body,
+        store_head={"size": body["entries"], "root": body["root"]},
+        analyses=ordered,
+        previous_analyses=basis.previous or None,
+        changes=changes_of(basis, ordered),
+        status=_status(basis),
+        waiting=settle(basis.state, basis.protocol).waiting,
+        notices=_notices(store, basis.version),
+        certainty=_certainty(basis.state),
+        **{name: _bodies(basis.state.live(kind)) for name, kind in LISTS.items()},
+    )
+
+
+def _bodies(entries: Sequence[StoredEntry]) -> list[dict[str, Any]]:
+    return [{**entry.body, "true_at": entry.true_at, "known_at": entry.known_at} for entry in entries]
+
+
+def _certainty(state: State) -> list[dict[str, Any]]:
+    return [
+        {**entry.body, "date": entry.body.get("date") or entry.true_at}
+        for entry in state.live(EntryKind.CERTAINTY)
+    ]
+
+
+def _notices(store: EvidenceStore, version: int) -> list[dict[str, Any]]:
+    """Return the notices laid down with a version, without addresses."""
+    return [
+        {name: entry.body[name] for name in ("person", "event", "synthesis", "channel", "subject")}
+        for entry in store.state().all(EntryKind.NOTICE)
+        if entry.body["version"] == version
+    ]
+
+
+def _status(basis: Basis) -> dict[str, Any]:
+    searches = [entry.body for entry in basis.state.live(EntryKind.SEARCH) if not entry.body.get("error")]
+    last = max((str(body["date"]) for body in searches), default=None)
+    searched = f"searched to {last}" if last else "no search run is recorded"
+    return {
+        "text": f"Living review, {searched}; version {basis.version} of {basis.date}.",
+        "mode": "living",
+        "as_of": basis.date,
+    }
+
+
+def index_rows(store: EvidenceStore) -> list[dict[str, Any]]:
+    """Return one row per version for reports/index.html, oldest first."""
+    whole = store.state()
+    told: dict[int, int] = {}
+    for entry in whole.all(EntryKind.NOTICE):
+        told[int(entry.body["version"])] = told.get(int(entry.body["version"]), 0) + 1
+    return [
+        {
+            **body,
+            "folder": f"{body['date']}-v{int(body['version']):03d}",
+            "notices": told.get(int(body["version"]), 0),
+            "analyses": analyses_of(whole, int(body["version"])),
+        }
+        for body in store.versions()
+    ]
