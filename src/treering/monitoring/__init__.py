@@ -15,7 +15,9 @@ from treering.monitoring.boundaries import (
     nominal_p,
 )
 from treering.monitoring.crossing import Crossing, crossing_probabilities
+from treering.monitoring.finding import LedgerState
 from treering.monitoring.futility import FutilityBoundaries, futility_boundaries, next_futility_bound
+from treering.monitoring.hindsight import HindsightCurve, hindsight
 from treering.monitoring.inference import (
     StagewiseEstimate,
     conditional_power,
@@ -31,6 +33,7 @@ from treering.monitoring.information import (
     required_events,
     required_information,
 )
+from treering.monitoring.ledger import ledger_state, next_look
 from treering.monitoring.look import Look
 from treering.monitoring.participants import (
     events_for_information,
@@ -49,6 +52,8 @@ __all__ = [
     "Crossing",
     "DetectableEffect",
     "FutilityBoundaries",
+    "HindsightCurve",
+    "LedgerState",
     "Look",
     "MonitoringPlan",
     "NextBoundary",
@@ -63,9 +68,11 @@ __all__ = [
     "detection_constant",
     "events_for_information",
     "futility_boundaries",
+    "hindsight",
     "information_per_participant",
     "intervention_risk",
     "iterated_logarithm_z",
+    "ledger_state",
     "log_e_product",
     "log_e_value",
     "median_unbiased",
@@ -73,6 +80,7 @@ __all__ = [
     "mixture_interval",
     "next_boundary",
     "next_futility_bound",
+    "next_look",
     "nominal_p",
     "predictive_power",
     "repeated_interval",

@@ -13,8 +13,6 @@ from dataclasses import asdict, dataclass, fields
 from enum import StrEnum
 from typing import TypeVar
 
-from scipy.special import ndtri
-
 from treering.errors import AnalysisError
 from treering.monitoring.checks import (
     check_alpha,
@@ -24,6 +22,7 @@ from treering.monitoring.checks import (
     check_power,
     check_sides,
 )
+from treering.monitoring.information import required_information
 from treering.monitoring.spending import spending_parameter
 from treering.terms import (
     Better,
@@ -120,8 +119,9 @@ class MonitoringPlan:
         ((z(1-alpha/sides) + z(power)) / effect)^2 / (1 - D2); Wetterslev, Thorlund, Brok and Gluud 2009,
         BMC Med Res Methodol 9:86, on the information scale.
         """
-        quantiles = float(-ndtri(self.alpha / self.sides) + ndtri(self.power))
-        return (quantiles / self.effect) ** 2 / (1.0 - self.diversity)
+        return required_information(
+            self.effect, alpha=self.alpha, power=self.power, sides=self.sides, diversity=self.diversity
+        )
 
     @property
     def mixture_prior_sd(self) -> float:

@@ -11,15 +11,14 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import ArrayLike
 from scipy.special import ndtr, stdtrit
 
 from treering.errors import AnalysisError
+from treering.monitoring.checks import FloatArray
 from treering.monitoring.plan import MonitoringPlan
 from treering.pooling import PooledEffect, pool
 from treering.terms import IntervalMethod, PoolingModel
-
-Floats = NDArray[np.float64]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -63,7 +62,7 @@ def _student_quantile(critical: float, df: int) -> float:
 
 def check_trials(
     trials: Sequence[str], estimates: ArrayLike, variances: ArrayLike
-) -> tuple[tuple[str, ...], Floats, Floats]:
+) -> tuple[tuple[str, ...], FloatArray, FloatArray]:
     """Refuse trials that cannot be analysed and return them as a tuple and two arrays.
 
     Parameters
@@ -110,7 +109,7 @@ def check_trials(
     return names, y, v
 
 
-def planned_test(plan: MonitoringPlan, estimates: Floats, variances: Floats) -> PlannedTest | None:
+def planned_test(plan: MonitoringPlan, estimates: FloatArray, variances: FloatArray) -> PlannedTest | None:
     """Make the planned test.
 
     With one trial a Knapp-Hartung test has no degrees of freedom, and between-trial variance cannot be
@@ -165,7 +164,7 @@ def as_planned_test(
     )
 
 
-def pool_as_planned(plan: MonitoringPlan, estimates: Floats, variances: Floats) -> PooledEffect:
+def pool_as_planned(plan: MonitoringPlan, estimates: FloatArray, variances: FloatArray) -> PooledEffect:
     """Pool with the model, estimator and interval of the plan.
 
     Parameters
