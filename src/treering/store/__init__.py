@@ -1,0 +1,12 @@
+"""The evidence store: an append-only ledger with two clocks, chained hashes and a Merkle tree.
+
+Rules of the ledger: :mod:`treering.store.chain`. Bytes that are hashed: :mod:`treering.store.canonical`.
+Proofs: :mod:`treering.store.merkle`.
+"""
+
+from treering.records.entry import NewEntry
+from treering.store.entries import Head, StoredEntry
+from treering.store.repo import EvidenceStore, create, open_store
+from treering.store.state import State
+
+__all__ = ["EvidenceStore", "Head", "NewEntry", "State", "StoredEntry", "create", "open_store"]
