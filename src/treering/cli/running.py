@@ -109,7 +109,7 @@ def check(folder: Path = Path(), /, *, json: bool = False) -> int:
     """
     from treering.update.previewing import preview
 
-    found = preview(folder)
+    found = preview(folder, datetime.now(UTC).date().isoformat())
     if json:
         say_json(found)
     else:

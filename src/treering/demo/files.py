@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import csv
+import io
 import json
 from dataclasses import dataclass
 from typing import Any
@@ -117,6 +119,25 @@ def as_toml(name: str, record: Record) -> DemoFile:
     return DemoFile(name, "\n".join(lines) + "\n")
 
 
+def as_csv(name: str, record: Record) -> DemoFile:
+    """Write an extraction as a CSV file: a row for each result."""
+    study = ("trial", "title", "published", "randomised", "design", "funding", "extractor")
+    rows = [
+        {field: record[field] for field in study}
+        | {"report": record["report"]["id"], "form": "article", "citation": record["report"]["citation"]}
+        | {f"subgroup:{name}": level for name, level in record["subgroups"].items()}
+        | result
+        for result in record["results"]
+    ]
+    text = io.StringIO()
+    writer = csv.DictWriter(
+        text, list(dict.fromkeys(column for row in rows for column in row)), lineterminator="\n"
+    )
+    writer.writeheader()
+    writer.writerows(rows)
+    return DemoFile(name, text.getvalue())
+
+
 def _is_plain(value: object) -> bool:
     return not isinstance(value, dict) and not (
         isinstance(value, list) and bool(value) and isinstance(value[0], dict)
@@ -128,6 +149,6 @@ def both(trial: InventedTrial, day: str, **differently: Any) -> list[DemoFile]:
     name = trial.id.lower()
     return [
         as_toml(f"{name}-MV.toml", extraction(trial, "MV")),
-        as_json(f"{name}-OK.json", extraction(trial, "OK", **differently)),
+        as_csv(f"{name}-OK.csv", extraction(trial, "OK", **differently)),
         as_toml(f"{name}-bias.toml", risk_of_bias(trial, day)),
     ]

@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from treering.effects import effect_sizes
+from treering.effects import effect_sizes, effective_table
 from treering.pooling import PooledEffect, pool, pool_mantel_haenszel
 from treering.protocol import Outcome, Pooling
 from treering.synthesis.trials import TrialRow
@@ -82,8 +82,15 @@ def estimate_trials(rows: Sequence[TrialRow], outcome: Outcome) -> Estimated:
 
 
 def values_table(rows: Sequence[TrialRow]) -> pd.DataFrame:
-    """Return the verified numbers of `rows`, one row per trial, under the effect columns' names."""
-    return pd.DataFrame([dict(row.values) for row in rows], index=[row.trial for row in rows])
+    """Return the verified numbers of `rows`, one row per trial, ready for effects.
+
+    The numbers of cluster trials are divided by their design effects, so that effective and not raw
+    numbers reach the estimate and the information.
+    """
+    table = pd.DataFrame([dict(row.values) for row in rows], index=[row.trial for row in rows])
+    if "icc" not in table:
+        return table
+    return effective_table(table.rename(columns={"icc": "intracluster_correlation"}))
 
 
 def pool_planned(estimated: Estimated, rows: Sequence[TrialRow], outcome: Outcome) -> PooledEffect | None:

@@ -53,7 +53,7 @@ def basis_of(store: EvidenceStore, version: int) -> Basis:
     previous = store.versions()[version - 2] if version > 1 else None
     since = -1 if previous is None else int(previous["entries"])
     whole = store.state(version=version)
-    evidence = whole.before(version)
+    evidence = whole.without(lambda entry: _is_of(entry, version))
     return Basis(
         version=version,
         date=str(body["date"]),
@@ -66,6 +66,11 @@ def basis_of(store: EvidenceStore, version: int) -> Basis:
             str(body["code_version"]),
         ),
     )
+
+
+def _is_of(entry: StoredEntry, version: int) -> bool:
+    """Say whether an entry is a look or an analysis of `version` itself, and no evidence for it."""
+    return entry.kind in (EntryKind.LOOK, EntryKind.ANALYSIS) and entry.body["version"] == version
 
 
 def version_view(store: EvidenceStore, version: int) -> ReportView:

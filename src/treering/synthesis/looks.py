@@ -1,0 +1,228 @@
+"""The monitoring of one synthesis: the ledger's next look and what is shown beside it."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from typing import Any
+
+from treering.errors import AnalysisError
+from treering.monitoring import (
+    PER_TAIL_CONVENTION,
+    Look,
+    MonitoringPlan,
+    hindsight,
+    information_per_participant,
+    minimum_trials,
+    next_look,
+    rests_on,
+    second_opinions,
+)
+from treering.protocol import Outcome, Protocol
+from treering.synthesis.estimates import Estimated
+from treering.terms import CROSSED, Measure
+
+#: Looks are stored with 10 significant digits; data that differ by less have not changed.
+SAME_DATA = 1e-8
+
+
+def plan_of(outcome: Outcome) -> MonitoringPlan | None:
+    """Return the monitoring plan of an outcome on its analysis scale; None when it is not monitored."""
+    planned = outcome.monitoring
+    if planned is None:
+        return None
+    return MonitoringPlan(
+        effect=outcome.on_analysis_scale(planned.effect),
+        better=outcome.better,
+        role=outcome.role,
+        alpha=planned.alpha,
+        sides=planned.sides,
+        power=planned.power,
+        spending=planned.spending,
+        spending_parameter=planned.spending_parameter,
+        diversity=planned.diversity,
+        model=outcome.pooling.model,
+        tau2=outcome.pooling.tau2,
+        interval=outcome.pooling.interval,
+        futility=planned.futility,
+        prior_sd=planned.prior_sd,
+        level=outcome.pooling.level,
+        prediction_df=outcome.pooling.prediction_df,
+    )
+
+
+def monitoring_block(
+    estimated: Estimated,
+    outcome: Outcome,
+    protocol: Protocol,
+    *,
+    earlier: Sequence[Look],
+    version: int,
+    date: str,
+) -> dict[str, Any] | None:
+    """Make the look that the evidence calls for and what is printed beside it.
+
+    Parameters
+    ----------
+    estimated : Estimated
+        Effects of the outcome.
+    outcome : Outcome
+        With its monitoring plan.
+    protocol : Protocol
+        For the amendments and the sum of alpha.
+    earlier : sequence of Look
+        The ledger so far.
+    version, date
+        Of the version that is being made.
+
+    Returns
+    -------
+    dict or None
+        None when the outcome is not monitored.
+    """
+    plan = plan_of(outcome)
+    if plan is None:
+        return None
+    estimates, variances = estimated.numbers(estimated.main)
+    trials = [row.trial for row in estimated.main]
+    ledger = list(earlier)
+    fresh = not _unchanged(plan, ledger, trials, estimates, variances)
+    if fresh:
+        amendment = protocol.amendments[-1].date.isoformat() if protocol.amendments else None
+        ledger.append(
+            next_look(
+                plan,
+                ledger,
+                date=date,
+                version=version,
+                trials=trials,
+                estimates=estimates,
+                variances=variances,
+                amendment=amendment if _plan_changed(plan, ledger) else None,
+            )
+        )
+    return {
+        "plan": plan.to_dict(),
+        "inputs": _inputs(outcome, protocol, estimated),
+        "total_alpha": sum(o.monitoring.alpha for o in protocol.outcomes if o.monitoring),
+        "new_look": fresh,
+        "look": ledger[-1].to_dict() if ledger else None,
+        "looks": [look.to_dict() for look in ledger],
+        "hindsight": _hindsight(plan, estimated),
+        **_beside(plan, ledger, trials, estimates, variances),
+    }
+
+
+def _plan_changed(plan: MonitoringPlan, ledger: Sequence[Look]) -> bool:
+    return bool(ledger) and ledger[-1].plan_digest != plan.digest()
+
+
+def _unchanged(
+    plan: MonitoringPlan, ledger: Sequence[Look], trials: Sequence[str], estimates: Any, variances: Any
+) -> bool:
+    """Say whether there is nothing to look at: no trial ever, or the data of the last look under its plan."""
+    if not ledger:
+        return not trials
+    last = ledger[-1]
+    if _plan_changed(plan, ledger) or list(last.trials) != list(trials):
+        return False
+    if last.estimate is None:
+        return not trials
+    probe = next_test(plan, estimates, variances)
+    pairs = zip(probe, (last.estimate, last.information), strict=True)
+    return all(math.isclose(now, then, rel_tol=SAME_DATA, abs_tol=0.0) for now, then in pairs)
+
+
+def next_test(plan: MonitoringPlan, estimates: Any, variances: Any) -> tuple[float, float]:
+    """Return planned estimate and information of the data, to compare with a stored look."""
+    from treering.monitoring.planned import planned_test
+
+    test = planned_test(plan, estimates, variances)
+    if test is None:
+        raise AnalysisError("no trial to test")
+    return test.pooled.estimate, test.information
+
+
+def _inputs(outcome: Outcome, protocol: Protocol, estimated: Estimated) -> dict[str, Any]:
+    """Return what must be printed beside every monitoring figure."""
+    planned = outcome.monitoring
+    if planned is None:
+        return {}
+    return {
+        "effect_natural": planned.effect,
+        "effect_reason": planned.effect_reason,
+        "diversity_reason": planned.diversity_reason,
+        "convention": PER_TAIL_CONVENTION,
+        "comparator_risk": outcome.comparator_risk,
+        "observed_comparator_risk": _observed_risk(estimated),
+        "information_per_participant": _per_participant(outcome, estimated),
+        "amendments": [amendment.date.isoformat() for amendment in protocol.amendments],
+    }
+
+
+def _observed_risk(estimated: Estimated) -> float | None:
+    events = [row.values.get("comparator_events") for row in estimated.main]
+    totals = [row.values.get("comparator_total") for row in estimated.main]
+    if not events or None in events or None in totals:
+        return None
+    return sum(e or 0 for e in events) / sum(t or 0 for t in totals)
+
+
+def _per_participant(outcome: Outcome, estimated: Estimated) -> float | None:
+    """Information that one participant brings; from the protocol's risks, or as observed so far."""
+    risk = outcome.comparator_risk
+    if outcome.measure is Measure.RISK_RATIO and risk and outcome.monitoring:
+        return information_per_participant(
+            outcome.measure, comparator_risk=risk, intervention_risk=risk * outcome.monitoring.effect
+        )
+    people = sum(
+        row.values.get("intervention_total", 0) + row.values.get("comparator_total", 0)
+        for row in estimated.main
+    )
+    _, variances = estimated.numbers(estimated.main)
+    return float((1 / variances).sum() / people) if people else None
+
+
+def _hindsight(plan: MonitoringPlan, estimated: Estimated) -> list[dict[str, Any]]:
+    rows = estimated.main
+    if not rows:
+        return []
+    estimates, variances = estimated.numbers(rows)
+    curve = hindsight(
+        plan,
+        dates=[row.published for row in rows],
+        trials=[row.trial for row in rows],
+        estimates=estimates,
+        variances=variances,
+    )
+    points: list[dict[str, Any]] = curve.to_dict()["points"]
+    return [point | {"trial": ", ".join(point["trials"])} for point in points]
+
+
+def _beside(
+    plan: MonitoringPlan, ledger: Sequence[Look], trials: Sequence[str], estimates: Any, variances: Any
+) -> dict[str, Any]:
+    """Return the second opinions, what the crossing rests on, and how many trials are needed at least."""
+    if not trials or not ledger:
+        return {"opinions": [], "agree": None, "rests_on": None, "minimum_trials": None}
+    strip = second_opinions(plan, ledger, estimates, variances)
+    crossed = ledger[-1].verdict in CROSSED
+    rests = rests_on(plan, ledger, trials, estimates, variances) if crossed else None
+    tau2 = next_tau2(plan, estimates, variances)
+    return {
+        "opinions": [opinion.to_dict() for opinion in strip.opinions],
+        "agree": strip.agree,
+        "rests_on": None if rests is None else rests.to_dict(),
+        "minimum_trials": minimum_trials(
+            plan.effect, tau2, alpha=plan.alpha, power=plan.power, sides=plan.sides
+        ),
+    }
+
+
+def next_tau2(plan: MonitoringPlan, estimates: Any, variances: Any) -> float:
+    """Return the planned tau2 of the data; 0 for one trial or a common-effect plan."""
+    from treering.pooling import pool
+
+    if len(estimates) < 2 or plan.model == "common":
+        return 0.0
+    return pool(estimates, variances, tau2=plan.tau2).tau2

@@ -1,0 +1,57 @@
+"""What an update would do, writing nothing."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+from treering.store import State
+from treering.terms import EntryKind
+from treering.update.context import open_evidence, read_review
+from treering.update.taking_in import read_intake, verify
+from treering.update.versions import TRIGGERS
+
+
+def preview(folder: Path, day: str) -> dict[str, Any]:
+    """Read config and intake of the review in `folder` and say what an update on `day` would do.
+
+    Parameters
+    ----------
+    folder : Path
+        The review folder.
+    day : str
+        ISO date that the update would have.
+
+    Returns
+    -------
+    dict
+        files, returned (file, faults), remarks, verified (trial, outcome), waiting, new_version.
+
+    Raises
+    ------
+    TreeringError
+        When config or store cannot be used, or the plan changed without an amendment.
+    """
+    review = read_review(folder)
+    place = review.store_place
+    if "://" not in place and not Path(place).exists():
+        state = State(())
+    else:
+        store = open_evidence(review)
+        state = store.state()
+        store.close()
+    files, entries = read_intake(review, state, day)
+    taken = verify(review, state, files, entries)
+    fresh = [entry for entry in taken.entries if state.after([entry]) is not state]
+    return {
+        "files": [file.dropped.name for file in taken.files],
+        "returned": [{"file": f.dropped.name, "faults": list(f.faults)} for f in taken.returned],
+        "remarks": [{"file": f.dropped.name, "remarks": list(f.remarks)} for f in taken.files if f.remarks],
+        "verified": [
+            {"trial": entry.body["trial"], "outcome": entry.body["outcome"]}
+            for entry in fresh
+            if entry.kind is EntryKind.RESULT
+        ],
+        "waiting": list(taken.waiting),
+        "new_version": any(entry.kind in TRIGGERS for entry in fresh),
+    }
