@@ -15,6 +15,7 @@ from treering.monitoring.boundaries import (
     nominal_p,
 )
 from treering.monitoring.crossing import Crossing, crossing_probabilities
+from treering.monitoring.dependence import RestsOn, rests_on
 from treering.monitoring.finding import LedgerState
 from treering.monitoring.futility import FutilityBoundaries, futility_boundaries, next_futility_bound
 from treering.monitoring.hindsight import HindsightCurve, hindsight
@@ -35,6 +36,7 @@ from treering.monitoring.information import (
 )
 from treering.monitoring.ledger import ledger_state, next_look
 from treering.monitoring.look import Look
+from treering.monitoring.opinions import Opinion, OpinionStrip, second_opinions
 from treering.monitoring.participants import (
     events_for_information,
     information_per_participant,
@@ -57,6 +59,9 @@ __all__ = [
     "Look",
     "MonitoringPlan",
     "NextBoundary",
+    "Opinion",
+    "OpinionStrip",
+    "RestsOn",
     "StagewiseEstimate",
     "alpha_spent",
     "beta_spent",
@@ -87,6 +92,8 @@ __all__ = [
     "required_events",
     "required_information",
     "required_participants",
+    "rests_on",
+    "second_opinions",
     "stagewise_p",
     "trend_drift",
 ]

@@ -11,10 +11,10 @@ whose pooled result anyone saw before the release is a look of its own: call `ne
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from datetime import date as calendar_date
 
-import numpy as np
 from numpy.typing import ArrayLike
 
 from treering.errors import AmendmentError, AnalysisError
@@ -26,6 +26,9 @@ from treering.monitoring.redrawn import spent_at
 from treering.monitoring.row import adjusted_fields, effect_fields
 from treering.monitoring.verdict import judge, standing
 from treering.pooling import PooledEffect
+
+#: Looks may be stored with ten significant digits; data that differ by less have not changed.
+SAME_DATA = 1e-8
 
 
 def ledger_state(plan: MonitoringPlan, earlier: Sequence[Look]) -> LedgerState:
@@ -185,8 +188,12 @@ def _same_data(last: Look, trials: Sequence[str], test: PlannedTest | None) -> b
         return False
     if test is None or last.estimate is None or last.standard_error is None:
         return test is None and last.estimate is None
-    now = (test.pooled.estimate, test.pooled.standard_error, test.information)
-    return bool(np.allclose(now, (last.estimate, last.standard_error, last.information), rtol=1e-10, atol=0))
+    error, information = test.pooled.standard_error, test.information
+    return (
+        abs(test.pooled.estimate - last.estimate) <= SAME_DATA * error
+        and math.isclose(error, last.standard_error, rel_tol=SAME_DATA)
+        and math.isclose(information, last.information, rel_tol=SAME_DATA)
+    )
 
 
 def _ledger_remarks(state: LedgerState, amendment: str | None, *, new_data: bool) -> tuple[str, ...]:
