@@ -22,8 +22,8 @@ _MOST_DECIMALS = 12
 
 
 def trial_labels(table: pd.DataFrame) -> TextArray:
-    """Labels for messages: the column ``trial`` if the index is only a count, else the index."""
-    if "trial" in table.columns and isinstance(table.index, pd.RangeIndex):
+    """Labels for messages: the column ``trial`` if the index holds only numbers, else the index."""
+    if "trial" in table.columns and pd.api.types.is_integer_dtype(table.index.dtype):
         return np.asarray(table["trial"].to_numpy(), dtype=object)
     labels = np.empty(len(table), dtype=object)
     labels[:] = list(table.index)
@@ -140,9 +140,11 @@ def _symmetric(estimate: FloatArray, low: FloatArray, high: FloatArray, *, log_s
     def scale(x: FloatArray) -> FloatArray:
         return np.log(x) if log_scale else x
 
-    # Ratios are printed with a decimal at least: without this 2 (1 to 10) could pass as rounded to integers.
     decimals = np.maximum(printed_decimals(low), printed_decimals(high))
-    decimals = np.maximum(decimals, 1 if log_scale else 0)
+    if (
+        log_scale
+    ):  # ratios below 10 are printed with a decimal at least; 2 (1 to 5) is no rounding to integers
+        decimals = np.maximum(decimals, np.where(high < 10, 1, 0))
     half = _half_unit(decimals)
     half_estimate = _half_unit(np.maximum(decimals, printed_decimals(estimate)))
     middle_low = (scale(low - half) + scale(high - half)) / 2
@@ -161,7 +163,7 @@ def printed_decimals(values: FloatArray) -> IntArray:
     for decimals in range(_MOST_DECIMALS - 1, -1, -1):
         with np.errstate(over="ignore", invalid="ignore"):
             scaled = values * 10.0**decimals
-            near = np.abs(scaled - np.round(scaled)) <= 1e-12 * np.maximum(1.0, np.abs(scaled))
+            near = np.abs(scaled - np.round(scaled)) <= 1e-12 * np.abs(scaled)
         found = np.where(near, decimals, found)
     return found
 

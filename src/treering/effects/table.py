@@ -116,7 +116,7 @@ def effect_sizes(
     DataFrame, k rows
         ``estimate`` and ``variance``. Both are NaN only where a relative measure is undefined for want of
         events and no correction was asked for. ``attrs["left_out"]`` lists these trials, and those whose
-        estimated variance is zero, each with the reason (tuple of
+        estimated variance is zero, each by its label with the reason (tuple of
         :class:`~treering.effects.rows.LeftOut`). ``attrs["corrected"]`` lists the corrected trials,
         ``attrs["reported"]`` those that came by another route than the first, with its name.
 
@@ -136,7 +136,7 @@ def effect_sizes(
     values = _read(table, routes, labels)
     effects, taken = _by_route(values, labels, routes, rule, size)
     _finite(effects, labels)
-    return _frame(table.index, effects, taken, routes, known, rule)
+    return _frame(table.index, labels, effects, taken, routes, known, rule)
 
 
 def usable(
@@ -264,13 +264,13 @@ def _finite(effects: Effects, labels: TextArray) -> None:
 
 def _frame(
     index: pd.Index,
+    labels: TextArray,
     effects: Effects,
     taken: TextArray,
     routes: tuple[Route, ...],
     measure: Measure,
     rule: Correction,
 ) -> pd.DataFrame:
-    names = list(index)
     out = pd.DataFrame({"estimate": effects.estimate, "variance": effects.variance}, index=index)
     left = np.flatnonzero(effects.reason != "")
     other = np.flatnonzero(taken != ROUTES[measure][0].name)
@@ -278,8 +278,8 @@ def _frame(
         "measure": str(measure),
         "scale": "log" if measure in RATIO_MEASURES else "natural",
         "correction": str(rule),
-        "left_out": tuple(LeftOut(names[at], str(effects.reason[at])) for at in left),
-        "corrected": tuple(names[at] for at in np.flatnonzero(effects.corrected)),
-        "reported": tuple((names[at], str(taken[at])) for at in other),
+        "left_out": tuple(LeftOut(labels[at], str(effects.reason[at])) for at in left),
+        "corrected": tuple(labels[at] for at in np.flatnonzero(effects.corrected)),
+        "reported": tuple((labels[at], str(taken[at])) for at in other),
     }
     return out
