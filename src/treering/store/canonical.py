@@ -25,6 +25,7 @@ _ENCODE = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=F
 # integers near or beyond 2**53, keys sorted differently by code point and by UTF-16 unit (astral
 # characters), lone surrogates. A match inside a string only costs the slower road.
 _GUARD = re.compile(r"\d\.0(?!\d)|\de[+-]\d|\d{16}|[\ud800-\udfff\U00010000-\U0010ffff]")
+_LONG = re.compile(rb"\d{16}")
 _LARGEST = 2**53 - 1
 
 
@@ -111,6 +112,33 @@ def canonical_string(text: str, *, key: str | None = None) -> bytes:
         raise _explained(text, key, error) from error
 
 
+def parse(data: bytes) -> Any:
+    """Return the JSON value of canonical bytes.
+
+    Parameters
+    ----------
+    data : bytes
+        As :func:`canonical_bytes` returns them.
+
+    Returns
+    -------
+    JSON value
+        Equal to the one written. Whole numbers beyond 2**53 - 1 can only have been floats (RFC 8785 writes
+        them without point up to 1e21) and come back as such.
+
+    Raises
+    ------
+    ValueError
+        When the bytes are no JSON.
+    """
+    return json.loads(data, parse_int=_number if _LONG.search(data) else None)
+
+
+def _number(text: str) -> int | float:
+    number = int(text)
+    return number if abs(number) <= _LARGEST else float(text)
+
+
 def is_canonical(data: bytes) -> bool:
     """Tell whether bytes are the canonical form of the value they hold.
 
@@ -125,7 +153,7 @@ def is_canonical(data: bytes) -> bool:
         False also when they are no JSON at all.
     """
     try:
-        return canonical_bytes(json.loads(data)) == data
+        return canonical_bytes(parse(data)) == data
     except (ValueError, CanonicalError, RecursionError):
         return False
 

@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-import json
 from dataclasses import dataclass, field
 from typing import Any
 
 from treering.records.entry import NewEntry
-from treering.store.canonical import canonical_bytes, canonical_string
+from treering.store.canonical import canonical_bytes, canonical_string, parse
 from treering.terms import Cause, EntryKind
 
 ENTRY_FORMAT = 1
@@ -65,7 +64,7 @@ class StoredEntry:
     def body(self) -> dict[str, Any]:
         """The content as plain JSON values, read from the canonical bytes; not to be changed."""
         if not self._body:
-            self._body.append(json.loads(self.canonical)["body"])
+            self._body.append(parse(self.canonical)["body"])
         return self._body[0]
 
 
@@ -225,7 +224,7 @@ def read_row(canonical: bytes, digest: bytes) -> LedgerRow:
     LedgerRow
         All columns read from the bytes.
     """
-    value = json.loads(canonical)
+    value = parse(canonical)
     return (
         value["seq"],
         value["kind"],

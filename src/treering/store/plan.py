@@ -5,7 +5,6 @@ Pure: it sees the tail of the ledger and the last entry on each key, and either 
 
 from __future__ import annotations
 
-import json
 from collections.abc import Iterable, Mapping, MutableMapping
 from dataclasses import dataclass, field, replace
 from hashlib import sha256
@@ -14,6 +13,7 @@ from typing import Any
 from treering.errors import StoreError
 from treering.records.entry import NewEntry
 from treering.store import chain
+from treering.store.canonical import parse
 from treering.store.chain import Tip
 from treering.store.entries import LedgerRow, body_bytes, body_head, entry_bytes
 from treering.store.merkle import Frontier, leaf_hash
@@ -172,10 +172,10 @@ def provisional(entries: Iterable[NewEntry], *, size: int, tips: MutableMapping[
 def _check(entry: NewEntry, tip: Tip | None, known_at: str, tail: Tail) -> None:
     chain.true_date(entry.true_at, key=entry.key)
     chain.check_known(known_at, tail.known_at)
-    if entry.kind == EntryKind.VERSION:
-        chain.check_version(entry, last=tail.last_version, size=tail.size, root=tail.frontier.root().hex())
     if tip is not None and tip.kind == EntryKind.VERSION:
         chain.check_unversioned(entry)
+    if entry.kind == EntryKind.VERSION:
+        chain.check_version(entry, last=tail.last_version, size=tail.size, root=tail.frontier.root().hex())
     chain.check_replacement(entry, tip)
     for name, text in (("by", entry.by), ("reason", entry.reason)):
         if text is not None and (not isinstance(text, str) or "\x00" in text):
@@ -235,7 +235,7 @@ def _is_repeated_version(entry: NewEntry, tip: Tip) -> bool:
 
 
 def _tip_body(tip: Tip) -> Mapping[str, Any]:
-    body: Mapping[str, Any] = json.loads(tip.canonical)["body"]
+    body: Mapping[str, Any] = parse(tip.canonical)["body"]
     return body
 
 

@@ -27,8 +27,13 @@ def _text(value: Any) -> str:
 
 
 def _whole(value: Any) -> int:
-    if isinstance(value, bool) or not isinstance(value, int | float) or value != int(value):
-        raise _Unfit("a whole number")
+    if (
+        isinstance(value, bool)
+        or not isinstance(value, int | float)
+        or abs(value) > _LARGEST
+        or value != int(value)
+    ):
+        raise _Unfit("a whole number up to 2**53 - 1")
     return int(value)
 
 
