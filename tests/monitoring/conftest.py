@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import json
 import math
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
 
 import pytest
 
@@ -71,3 +74,23 @@ def review() -> Callable[..., Review]:
 def verdicts() -> Callable[[Sequence[Look]], list[str]]:
     """Return a reader of the verdicts of some looks."""
     return lambda looks: [str(look.verdict) for look in looks]
+
+
+@pytest.fixture(scope="session")
+def published() -> dict[str, Any]:
+    """Published and formula values with source and tolerance, by case (tests/published/monitoring.json)."""
+    path = Path(__file__).parents[1] / "published" / "monitoring.json"
+    cases: dict[str, Any] = json.loads(path.read_text(encoding="utf-8"))["cases"]
+    return cases
+
+
+@pytest.fixture(scope="session")
+def agrees() -> Callable[[Mapping[str, Any], Mapping[str, float]], None]:
+    """Return a check that every expected figure of a case is met within its own tolerance."""
+
+    def check(case: Mapping[str, Any], found: Mapping[str, float]) -> None:
+        assert set(found) == set(case["expected"])
+        for name, value in case["expected"].items():
+            assert found[name] == pytest.approx(value, abs=case["tolerance"][name] or 1e-15), name
+
+    return check

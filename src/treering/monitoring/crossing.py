@@ -7,7 +7,6 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import ArrayLike
-from scipy import special
 
 from treering.errors import AnalysisError
 from treering.monitoring.checks import FloatArray, checked_increasing
@@ -109,10 +108,8 @@ def between(paths: Paths, information: float, half_width: float, *, drift: float
     """
     if half_width <= 0.0:
         return 0.0
-    step = information - paths.information
-    sigma, centre = math.sqrt(step), paths.nodes + drift * step
-    above, below = special.ndtr((half_width - centre) / sigma), special.ndtr((-half_width - centre) / sigma)
-    return float(paths.mass @ (above - below))
+    above = tail(paths, information, -half_width, drift=drift)
+    return above - tail(paths, information, half_width, drift=drift)
 
 
 def inside(low: float, high: float, half_width: float) -> list[tuple[float, float]]:

@@ -10,19 +10,20 @@ its digits.
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass
-from functools import cache
 
 import numpy as np
 from scipy import special
 
 from treering.errors import NotConvergedError
 from treering.monitoring.checks import FloatArray
+from treering.monitoring.panels import NODES, PANEL_WIDTH, fill, panel_edges, window
 
-_NODES_PER_PANEL = 16
-_PANEL_WIDTH = 6.0  # in standard deviations of the narrower of the two steps around the look
 _REACH = 8.5  # standard deviations beyond which paths are dropped when no bound is nearer (chance 1e-17)
 _FAR = 37.0  # standard deviations at which a double still holds a normal tail
+_LEAST = 1e-300  # the least probability that can be spent
+_WINDOW = 9.0  # standard deviations of a step that a window into a wide panel takes in
 _ROOT_2PI = math.sqrt(2.0 * math.pi)
 
 
@@ -34,15 +35,22 @@ class Paths:
     ----------
     information : float
         Information at the last look.
-    nodes : ndarray, shape (n,)
-        Score values.
-    mass : ndarray, shape (n,)
+    nodes : ndarray, shape (16 p,)
+        Score values, panel by panel (a single one before the first look).
+    mass : ndarray, shape (16 p,)
         Probability carried by each node; sums to the chance of being still inside.
+    left, width : ndarray, shape (p,)
+        The panels.
+    cuts : tuple of (position, information)
+        Where and when paths were cut off; positions are score less drift times information.
     """
 
     information: float
     nodes: FloatArray
     mass: FloatArray
+    left: FloatArray
+    width: FloatArray
+    cuts: tuple[tuple[float, float], ...]
 
 
 def start() -> Paths:
@@ -52,23 +60,24 @@ def start() -> Paths:
     -------
     Paths
     """
-    return Paths(0.0, np.zeros(1), np.ones(1))
+    return Paths(0.0, np.zeros(1), np.ones(1), np.zeros(0), np.zeros(0), ())
 
 
-@cache
-def _rule() -> tuple[FloatArray, FloatArray]:
-    """Gauss-Legendre nodes and weights on [0, 1]."""
-    nodes, weights = np.polynomial.legendre.leggauss(_NODES_PER_PANEL)
-    return (nodes + 1.0) / 2.0, weights / 2.0
+def mirrored(paths: Paths) -> Paths:
+    """Return the paths with the sign of the score turned, so that lower tails are upper tails.
 
+    Parameters
+    ----------
+    paths : Paths
+        Paths inside so far.
 
-def _grid(low: float, high: float, scale: float) -> tuple[FloatArray, FloatArray]:
-    """Gauss-Legendre panels over [low, high], each narrow against `scale`."""
-    panels = max(1, math.ceil((high - low) / (_PANEL_WIDTH * scale)))
-    edges = np.linspace(low, high, panels + 1)
-    width = np.diff(edges)
-    nodes, weights = _rule()
-    return (edges[:-1, None] + width[:, None] * nodes).ravel(), (width[:, None] * weights).ravel()
+    Returns
+    -------
+    Paths
+    """
+    left = -(paths.left + paths.width)[::-1]
+    cuts = tuple((-place, when) for place, when in paths.cuts)
+    return Paths(paths.information, -paths.nodes[::-1], paths.mass[::-1], left, paths.width[::-1], cuts)
 
 
 def tail(paths: Paths, information: float, score: float, *, drift: float = 0.0) -> float:
@@ -90,23 +99,51 @@ def tail(paths: Paths, information: float, score: float, *, drift: float = 0.0) 
     float
     """
     step = information - paths.information
-    reach = (paths.nodes + (drift * step - score)) / math.sqrt(step)
-    return float(paths.mass @ special.ndtr(reach))
+    sigma, goal = math.sqrt(step), score - drift * step
+    narrow = _narrow(paths, sigma)
+    nodes, mass = (paths.nodes, paths.mass) if narrow.all() else (paths.nodes[narrow], paths.mass[narrow])
+    total = float(mass @ special.ndtr((nodes - goal) / sigma))
+    for left, width, held in _wide(paths, sigma):
+        ends = np.clip([goal - _WINDOW * sigma, goal + _WINDOW * sigma, math.inf], left, left + width)
+        for part in (0, 1):
+            if ends[part] < ends[part + 1]:
+                nodes, mass = window(left, width, held, ends[part : part + 1], ends[part + 1 : part + 2])
+                total += float(np.sum(mass * special.ndtr((nodes - goal) / sigma)))
+    return total
 
 
-def mirrored(paths: Paths) -> Paths:
-    """Return the paths with the sign of the score turned, so that lower tails are upper tails.
+def density(paths: Paths, information: float, scores: FloatArray, *, drift: float = 0.0) -> FloatArray:
+    """Return the density of the score at the next look over paths that are still inside now.
 
     Parameters
     ----------
     paths : Paths
         Paths inside so far.
+    information : float
+        Information at the next look.
+    scores : ndarray, shape (m,)
+        Scores at the next look.
+    drift : float
+        Mean of the score per unit of information.
 
     Returns
     -------
-    Paths
+    ndarray, shape (m,)
     """
-    return Paths(paths.information, -paths.nodes, paths.mass)
+    step = information - paths.information
+    sigma, goals = math.sqrt(step), scores - drift * step
+    narrow = _narrow(paths, sigma)
+    nodes, mass = (paths.nodes, paths.mass) if narrow.all() else (paths.nodes[narrow], paths.mass[narrow])
+    away = (goals[:, None] - nodes) / sigma
+    total: FloatArray = np.exp(-0.5 * away * away) @ mass
+    for left, width, held in _wide(paths, sigma):
+        near = (goals > left - _WINDOW * sigma) & (goals < left + width + _WINDOW * sigma)
+        low = np.maximum(goals[near] - _WINDOW * sigma, left)
+        high = np.minimum(goals[near] + _WINDOW * sigma, left + width)
+        nodes, mass = window(left, width, held, low, high)
+        away = (goals[near, None] - nodes) / sigma
+        total[near] += np.sum(mass * np.exp(-0.5 * away * away), axis=1)
+    return total / (sigma * _ROOT_2PI)
 
 
 def advance(
@@ -136,25 +173,23 @@ def advance(
     -------
     Paths
     """
-    sigma = math.sqrt(information - paths.information)
-    scale = min(sigma, math.sqrt(next_information - information))
+    after = math.sqrt(next_information - information)
+    scale = min(math.sqrt(information - paths.information), after)
     ends = [_clipped(low, high, information, drift) for low, high in regions]
-    grids = [_grid(low, high, scale) for low, high in ends if low < high]
-    if not grids:
-        return Paths(information, np.zeros(1), np.zeros(1))
-    nodes = np.concatenate([grid[0] for grid in grids])
-    weights = np.concatenate([grid[1] for grid in grids])
-    steps = (nodes[:, None] - (paths.nodes + drift * sigma**2)) / sigma
-    density = np.exp(-0.5 * steps * steps) @ paths.mass / (sigma * _ROOT_2PI)
-    return Paths(information, nodes, weights * density)
-
-
-def _clipped(low: float, high: float, information: float, drift: float) -> tuple[float, float]:
-    """Cut an open end where the chance to be beyond it is 1e-17; a bound that is set is kept."""
-    mean, spread = drift * information, math.sqrt(information)
-    floor = mean - (_REACH if math.isinf(low) else _FAR) * spread
-    ceiling = mean + (_REACH if math.isinf(high) else _FAR) * spread
-    return max(low, floor), min(high, ceiling)
+    ends = [(low, high) for low, high in ends if low < high]
+    blurred = [(place + drift * information, math.sqrt(information - when)) for place, when in paths.cuts]
+    steep = blurred + [(end, after) for pair in ends for end in pair]
+    panels = [panel_edges(low, high, scale, steep, math.sqrt(information)) for low, high in ends]
+    if not panels:
+        return Paths(information, np.zeros(0), np.zeros(0), np.zeros(0), np.zeros(0), paths.cuts)
+    filled = [fill(edges) for edges in panels]
+    nodes = np.concatenate([part[0] for part in filled])
+    weights = np.concatenate([part[1] for part in filled])
+    mass = weights * density(paths, information, nodes, drift=drift)
+    left = np.concatenate([edges[:-1] for edges in panels])
+    width = np.concatenate([np.diff(edges) for edges in panels])
+    cuts = (*paths.cuts, *((end - drift * information, information) for pair in ends for end in pair))
+    return Paths(information, nodes, mass, left, width, cuts)
 
 
 def tail_bound(paths: Paths, information: float, target: float, *, drift: float = 0.0) -> float:
@@ -174,7 +209,7 @@ def tail_bound(paths: Paths, information: float, target: float, *, drift: float 
     Returns
     -------
     float
-        Infinity when `target` is 0 or too small for a double.
+        Infinity when `target` is 0 or too small for a double (below 1e-300).
 
     Raises
     ------
@@ -187,21 +222,21 @@ def tail_bound(paths: Paths, information: float, target: float, *, drift: float 
     started above the root, comes down to it without overshooting.
     """
     sigma = math.sqrt(information - paths.information)
-    shift = drift * sigma**2
-    ceiling = float(paths.nodes.max()) + shift + _FAR * sigma
-    if target <= tail(paths, information, ceiling, drift=drift):
+    edge = float(paths.nodes.max(initial=-math.inf)) + drift * sigma**2
+    if not target >= _LEAST:
         return math.inf
-    single = drift * information - float(special.ndtri(min(target, 1.0))) * math.sqrt(information)
-    score = min(single, ceiling)
+    reach = -float(special.ndtri(min(target, 1.0)))
+    score = min(drift * information + reach * math.sqrt(information), edge + reach * sigma)
+    close = min(1e-11 * math.sqrt(information), 1e-4 * sigma)  # the step after it is the square of it
     for _ in range(100):
         left = tail(paths, information, score, drift=drift)
-        if not left > 0.0:
-            break
-        reach = (score - shift - paths.nodes) / sigma
-        slope = float(paths.mass @ np.exp(-0.5 * reach * reach)) / (sigma * _ROOT_2PI)
+        slope = float(density(paths, information, np.array([score]), drift=drift)[0])
+        if not (left > 0.0 and slope > 0.0):  # too far out for a double
+            score = (score + edge) / 2.0
+            continue
         change = left * math.log(left / target) / slope
         score += change
-        if abs(change) <= 1e-13 * (1.0 + abs(score)):
+        if abs(change) <= close:
             return score
     raise NotConvergedError(
         "No bound was found for this look.",
@@ -209,3 +244,25 @@ def tail_bound(paths: Paths, information: float, target: float, *, drift: float 
         expected="less to spend than is left",
         next_step="Check the informations and bounds of the earlier looks.",
     )
+
+
+def _clipped(low: float, high: float, information: float, drift: float) -> tuple[float, float]:
+    """Cut an open end where the chance to be beyond it is 1e-17; a bound that is set is kept."""
+    mean, spread = drift * information, math.sqrt(information)
+    floor = mean - (_REACH if math.isinf(low) else _FAR) * spread
+    ceiling = mean + (_REACH if math.isinf(high) else _FAR) * spread
+    return max(low, floor), min(high, ceiling)
+
+
+def _narrow(paths: Paths, sigma: float) -> np.ndarray:
+    """Mark the nodes of panels that resolve a step of this standard deviation as they are."""
+    if not paths.width.size:
+        return np.ones(paths.nodes.size, dtype=np.bool_)
+    return np.repeat(paths.width <= PANEL_WIDTH * sigma * (1.0 + 1e-9), NODES)
+
+
+def _wide(paths: Paths, sigma: float) -> Iterator[tuple[float, float, FloatArray]]:
+    """Yield the other panels, which are sampled anew within windows, with the mass of their nodes."""
+    for place in np.flatnonzero(paths.width > PANEL_WIDTH * sigma * (1.0 + 1e-9)):
+        held = paths.mass[place * NODES : (place + 1) * NODES]
+        yield float(paths.left[place]), float(paths.width[place]), held
