@@ -27,13 +27,13 @@ def test_removal_of_the_named_trial_and_of_no_other_loses_the_crossing(review):
     r.add("B", 0.3, 3.0)
     r.add("C", 0.1, 2.95)
     rests = rests_on(r.plan, r.looks, *numbers(r))
-    assert rests.sets == (("B",),)
+    assert rests.sets == (("A",), ("B",))
     trials, ledger = dict(r.trials), list(r.looks)
     for name in "ABC":
         r.trials, r.looks = dict(trials), list(ledger)
         lost = r.remove(name).verdict == "crossing no longer supported"
         assert lost == ((name,) in rests.sets)
-    assert "without it" in rests.sentence
+    assert "without any one of these" in rests.sentence
 
 
 def test_pairs_are_searched_when_no_single_trial_undoes_it(review):
@@ -73,9 +73,8 @@ def test_z_at_the_estimated_tau2_is_the_planned_z():
     y, v = rng.normal(0.4, 0.4, 8), rng.uniform(0.02, 0.2, 8)
     for interval in ("wald", "knapp-hartung", "modified-knapp-hartung"):
         pooled = pool(y, v, interval=interval)
-        assert z_at(MonitoringPlan(effect=0.3, interval=interval), y, v, pooled.tau2) == pytest.approx(
-            pooled.z
-        )
+        plan = MonitoringPlan(effect=0.3, interval=interval)
+        assert z_at(plan, y, v, pooled.tau2) == pytest.approx(pooled.z)
 
 
 def test_tau2_lost_by_modified_knapp_hartung_solves_the_t_equation():
@@ -91,10 +90,11 @@ def test_tau2_lost_by_modified_knapp_hartung_solves_the_t_equation():
 
 def test_a_futility_crossing_rests_on_trials_too(review):
     r = review(futility=True)
-    r.add("A", 0.4, 1.0)
-    assert r.add("B", 0.3, 0.1).verdict == "futility boundary crossed"
+    r.add("A", 0.1, 0.9)
+    assert r.add("B", 0.6, 0.1).verdict == "futility boundary crossed"
     rests = rests_on(r.plan, r.looks, *numbers(r))
     assert rests.sets == (("B",),)
+    assert rests.sentence == "Rests on B: without it the boundary is not crossed."
     assert rests.tau2_lost is None
 
 

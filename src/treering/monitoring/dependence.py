@@ -51,7 +51,7 @@ class RestsOn:
         value does it.
     null_information : float or None
         Information of the smallest further trial with no effect at all that would undo the crossing;
-        None when none up to 100 times the required information does. For readers, divide it by the
+        None for futility, and when none up to 100 times the required information does. For readers, divide it by the
         information of one participant.
     """
 
@@ -127,6 +127,7 @@ def rests_on(
             expected="a last look with a crossed boundary",
             next_step="Ask after a look that crossed.",
         )
+    futile = last.verdict is Verdict.FUTILITY_CROSSED
     stands = _rule(plan, looks, last.verdict)
     sets, searched = _smallest_sets(names, largest, lambda keep: stands(planned_test(plan, y[keep], v[keep])))
     test = planned_test(plan, y, v)
@@ -137,7 +138,7 @@ def rests_on(
         searched=searched,
         tau2=tau2,
         tau2_lost=_tau2_lost(plan, last, y, v, tau2),
-        null_information=_null_information(plan, stands, y, v),
+        null_information=None if futile else _null_information(plan, stands, y, v),
     )
 
 
@@ -219,7 +220,7 @@ def z_at(plan: MonitoringPlan, y: FloatArray, v: FloatArray, tau2: float) -> flo
     """
     w = 1.0 / (v + tau2)
     mean = float(np.sum(w * y) / np.sum(w))
-    error = float(w.sum()) ** -0.5
+    error = 1.0 / math.sqrt(float(w.sum()))
     if plan.interval == IntervalMethod.WALD:
         return mean / error
     df = len(y) - 1
@@ -227,7 +228,8 @@ def z_at(plan: MonitoringPlan, y: FloatArray, v: FloatArray, tau2: float) -> flo
     if plan.interval == IntervalMethod.MODIFIED_KNAPP_HARTUNG:
         factor = max(factor, 1.0)
     statistic = mean / (error * math.sqrt(factor))
-    return float(math.copysign(-float(ndtri_exp(float(student.logsf(abs(statistic), df)))), statistic))
+    tail: float = student.logsf(abs(statistic), df)
+    return math.copysign(float(ndtri_exp(tail)), statistic)
 
 
 def _null_information(

@@ -220,9 +220,7 @@ def _mixture(plan: MonitoringPlan, last: Look) -> Opinion:
 
 def _product(plan: MonitoringPlan, y: FloatArray, v: FloatArray) -> Opinion:
     name = "product of e-values over trials"
-    note = (
-        "Log product of one e-value per trial (ter Schure, Gruenwald 2022): against no effect in any trial."
-    )
+    note = "Log product of one e-value per trial (ter Schure 2022), against no effect in any trial."
     value = log_e_product(y, np.sqrt(v), prior_sd=plan.mixture_prior_sd)[-1]
     return _evidence(plan, name, float(value), note)
 
