@@ -10,7 +10,7 @@ from typing import Any
 
 from pydantic import ValidationError
 
-from treering.intake.sentences import closest, record_faults
+from treering.intake.sentences import closest, record_faults, shown_value
 from treering.intake.table import read_table
 from treering.intake.values import Dropped, Fault, Located, Parsed, Place
 from treering.records import RECORDS
@@ -132,14 +132,11 @@ def _record_of(item: Any, place: Place) -> Located | list[Fault]:
     word = item.get("record")
     shape = RECORDS.get(word) if isinstance(word, str) else None
     if shape is None:
-        known = ", ".join(RECORDS)
-        sentence = (
-            f"record must say what this is: {known}" if word is None else f"there is no record {word!r}"
-        )
-        guess = (
-            closest(str(word), RECORDS) if word is not None else f"; for example record = {'extraction'!r}"
-        )
-        return [Fault(place.file, place.where("record"), f"{sentence}{guess}.")]
+        if word is None:
+            sentence = f"say what this is, for example record = 'extraction'; known: {', '.join(RECORDS)}."
+        else:
+            sentence = f"there is no kind of record{shown_value(word)}{closest(str(word), RECORDS) or '.'}"
+        return [Fault(place.file, place.where("record"), sentence)]
     try:
         return Located(shape.model_validate(item), place)
     except ValidationError as error:

@@ -118,7 +118,7 @@ class Report(Record):
     """The document that was read."""
 
     id: Identifier
-    form: ReportForm = "article"
+    form: ReportForm | None = None
     citation: OptionalText = None
     identifier: OptionalText = None
 

@@ -16,7 +16,7 @@ from treering.records.base import (
     WrittenDate,
     written_text,
 )
-from treering.records.extraction import VALUE_FIELDS, Design, FieldTexts, Values
+from treering.records.extraction import VALUE_FIELDS, Arm, Design, FieldTexts, Values
 
 ReasonClass = Literal["slip", "ambiguity", "rule gap", "report conflict"]
 
@@ -46,6 +46,7 @@ class Adjudication(Record):
     not_usable: OptionalText = None
     study: SettledFacts = SettledFacts()
     subgroups: dict[Identifier, Text] = Field(default_factory=dict)
+    arms: tuple[Arm, ...] = ()
     locator: OptionalText = None
     locators: FieldTexts = Field(default_factory=dict)
     reason_class: ReasonClass

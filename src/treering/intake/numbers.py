@@ -1,0 +1,234 @@
+"""Checks of the numbers of one result: what cannot be, and what is worth a second look."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from statistics import median
+from typing import NamedTuple
+
+import pandas as pd
+
+from treering.effects import effect_sizes
+from treering.effects.table import ROUTES
+from treering.errors import AnalysisError
+from treering.protocol import Outcome
+from treering.terms import RATIO_MEASURES
+
+ARMS = ("intervention", "comparator")
+Numbers = Mapping[str, float | int]
+
+# An interval whose middle lies further from the estimate than this share of its half-width, beyond what
+# rounding explains, is not symmetric on the scale of the analysis (our choice, no source).
+_LOPSIDED = 0.15
+# How far a report's own ratio may lie from ours, as a log ratio, and a difference in standard errors, before
+# someone should look (our choice; MECIR C51 asks for the comparison and names no size).
+_OWN_RATIO, _OWN_DIFFERENCE = 0.05, 0.25
+
+
+class Finding(NamedTuple):
+    """A field and a sentence about it."""
+
+    field: str
+    sentence: str
+
+
+def number_faults(values: Numbers, outcome: Outcome, *, randomised: int | None = None) -> list[Finding]:
+    """Find what can't be in the numbers of one usable result.
+
+    Parameters
+    ----------
+    values : mapping of str to number
+        The reported numbers by field.
+    outcome : Outcome
+        The outcome of the protocol, whose measure says what is needed.
+    randomised : int, optional
+        How many the trial randomised.
+
+    Returns
+    -------
+    list of Finding
+        Empty if the numbers give an effect.
+    """
+    faults = [
+        *impossible_numbers(values, is_ratio=outcome.measure in RATIO_MEASURES),
+        *_more_than_randomised(values, randomised),
+        *_not_enough(values, outcome),
+    ]
+    return faults or _gives_no_effect(values, outcome)
+
+
+def impossible_numbers(values: Numbers, *, is_ratio: bool) -> list[Finding]:
+    """Find numbers that can't be, whether or not the result is complete."""
+    return [*_arm_faults(values), *_sign_faults(values), *_interval_faults(values, is_ratio)]
+
+
+def _arm_faults(values: Numbers) -> list[Finding]:
+    faults = []
+    for arm in ARMS:
+        events, total = values.get(f"{arm}_events"), values.get(f"{arm}_total")
+        if total == 0:
+            faults.append(Finding(f"{arm}_total", "an analysed arm has at least one person (found 0)."))
+        elif events is not None and total is not None and events > total:
+            sentence = f"{events} events are more than the {total} people of the arm."
+            faults.append(Finding(f"{arm}_events", sentence))
+    return faults
+
+
+def _sign_faults(values: Numbers) -> list[Finding]:
+    above_zero = [f"{arm}_{name}" for arm in ARMS for name in ("sd", "time")]
+    above_zero += ["standard_error", "variance_oe"]
+    limits: dict[str, tuple[float, float]] = {
+        "p_value": (0.0, 1.0),
+        "ci_level": (0.5, 0.9999),
+        "icc": (-1.0, 1.0),
+        "mean_cluster_size": (1.0, math.inf),
+    }
+    faults = [
+        Finding(name, f"this must be above 0 (found {values[name]}).")
+        for name in above_zero
+        if name in values and values[name] <= 0
+    ]
+    for name, (low, high) in limits.items():
+        if name in values and not low <= values[name] <= high:
+            bounds = f"from {low:g} to {high:g}" if math.isfinite(high) else f"at least {low:g}"
+            faults.append(Finding(name, f"this must be {bounds} (found {values[name]})."))
+    return faults
+
+
+def _interval_faults(values: Numbers, is_ratio: bool) -> list[Finding]:
+    low, high, middle = (values.get(name) for name in ("ci_low", "ci_high", "estimate"))
+    faults = []
+    if is_ratio:
+        faults += [
+            Finding(name, f"a ratio and its bounds are above 0 (found {values[name]}); no logs here.")
+            for name in ("estimate", "ci_low", "ci_high")
+            if name in values and values[name] <= 0
+        ]
+    if (low is None) != (high is None):
+        missing = "ci_low" if low is None else "ci_high"
+        return [*faults, Finding(missing, "an interval needs both of its bounds.")]
+    if low is None or high is None:
+        return faults
+    if low >= high:
+        return [*faults, Finding("ci_low", f"the lower bound {low} is not below the upper bound {high}.")]
+    if middle is not None and not low < middle < high:
+        faults.append(Finding("estimate", f"{middle} lies outside its own interval, {low} to {high}."))
+    return faults
+
+
+def _more_than_randomised(values: Numbers, randomised: int | None) -> list[Finding]:
+    totals = [values.get(f"{arm}_total") for arm in ARMS]
+    analysed = sum(total for total in totals if total is not None)
+    if randomised is None or analysed <= randomised:
+        return []
+    return [Finding("intervention_total", f"{analysed} people analysed, but only {randomised} randomised.")]
+
+
+def _not_enough(values: Numbers, outcome: Outcome) -> list[Finding]:
+    """Find no route from the numbers to an effect."""
+    routes = ROUTES[outcome.measure]
+    if any(set(route.columns) <= values.keys() for route in routes):
+        return []
+    nearest = max(routes, key=lambda route: len(set(route.columns) & values.keys()) / len(route.columns))
+    missing = [name for name in nearest.columns if name not in values]
+    ways = "; or ".join(" ".join(route.columns) for route in routes)
+    sentence = (
+        f"a {outcome.measure.value} needs {ways}. Missing: {', '.join(missing)}. "
+        "If the report does not give them, say so in not_usable: the trial stays listed."
+    )
+    return [Finding(missing[0], sentence)]
+
+
+def _gives_no_effect(values: Numbers, outcome: Outcome) -> list[Finding]:
+    """Let the analysis itself try the numbers: what it would refuse later is refused now."""
+    try:
+        effect_sizes(pd.DataFrame([dict(values)], index=["this trial"]), outcome.measure)
+    except AnalysisError as error:
+        return [Finding(next(iter(values)), f"no effect can be computed: {error}")]
+    return []
+
+
+def number_remarks(values: Numbers, outcome: Outcome, *, usual_sds: Sequence[float] = ()) -> list[Finding]:
+    """Find what is possible in the numbers of one result but worth a second look.
+
+    Parameters
+    ----------
+    values : mapping of str to number
+        Numbers that :func:`number_faults` found nothing wrong with.
+    outcome : Outcome
+        The outcome of the protocol.
+    usual_sds : sequence of float
+        Standard deviations of the outcome in the trials known so far.
+
+    Returns
+    -------
+    list of Finding
+    """
+    return [
+        *_looks_like_standard_error(values, usual_sds),
+        *_lopsided(values, outcome.measure in RATIO_MEASURES),
+        *_differs_from_own(values, outcome),
+    ]
+
+
+def _looks_like_standard_error(values: Numbers, usual_sds: Sequence[float]) -> list[Finding]:
+    """Find an SD that is about the usual SD, or the other arm's, divided by the root of its arm's size.
+
+    Mistaking a standard error for a standard deviation is one of the errors Gøtzsche et al. found
+    (JAMA 2007;298:430); the window of a factor 1.5 around the ratio root n is our choice.
+    """
+    remarks = []
+    for arm, other in (ARMS, ARMS[::-1]):
+        sd, total = values.get(f"{arm}_sd"), values.get(f"{arm}_total")
+        references = [*([median(usual_sds)] if usual_sds else [])]
+        references += [values[f"{other}_sd"]] if f"{other}_sd" in values else []
+        if sd is None or total is None or total < 10:
+            continue
+        if any(1 / 1.5 < sd * math.sqrt(total) / usual < 1.5 for usual in references):
+            sentence = f"{sd} may be a standard error: times the root of {total} it is the usual deviation."
+            remarks.append(Finding(f"{arm}_sd", sentence))
+    return remarks
+
+
+def _half_unit(value: float) -> float:
+    """Return half a unit of the last decimal that the number is written with."""
+    text = repr(value)
+    decimals = len(text.partition(".")[2]) if "." in text and "e" not in text else 0
+    return 0.5 * 10.0**-decimals
+
+
+def _lopsided(values: Numbers, is_ratio: bool) -> list[Finding]:
+    if not {"estimate", "ci_low", "ci_high"} <= values.keys():
+        return []
+    turn = math.log if is_ratio else float
+    low, middle, high = (turn(values[name]) for name in ("ci_low", "estimate", "ci_high"))
+    slack = sum(
+        _half_unit(values[name]) / (values[name] if is_ratio else 1)
+        for name in ("ci_low", "estimate", "ci_high")
+    )
+    off = abs((low + high) / 2 - middle)
+    if off - slack <= _LOPSIDED * (high - low) / 2:
+        return []
+    scale = "log " if is_ratio else ""
+    return [Finding("estimate", f"the interval is not symmetric around it on the {scale}scale.")]
+
+
+def _differs_from_own(values: Numbers, outcome: Outcome) -> list[Finding]:
+    """Compare the report's own effect with the one its raw numbers give (MECIR C51)."""
+    first = ROUTES[outcome.measure][0].columns
+    own = values.get("estimate")
+    if own is None or "estimate" in first or not set(first) <= values.keys():
+        return []
+    raw = {name: values[name] for name in first}
+    effect = effect_sizes(pd.DataFrame([raw], index=["this trial"]), outcome.measure).iloc[0]
+    estimate, error = float(effect["estimate"]), math.sqrt(float(effect["variance"]))
+    if not math.isfinite(estimate):
+        return []
+    is_ratio = outcome.measure in RATIO_MEASURES
+    apart = abs(math.log(own) - estimate) if is_ratio else abs(own - estimate)
+    allowed = _OWN_RATIO if is_ratio else _OWN_DIFFERENCE * error
+    if apart - _half_unit(own) / (own if is_ratio else 1) <= allowed:
+        return []
+    ours = math.exp(estimate) if is_ratio else estimate
+    return [Finding("estimate", f"the report's own effect is {own}; its raw numbers give {ours:.3g}.")]
