@@ -199,3 +199,19 @@ def test_the_order_of_trials_does_not_matter(table, data):
     order = data.draw(st.permutations(range(len(table))))
     whole = effects.effect_sizes(table, "odds-ratio")
     pd.testing.assert_frame_equal(effects.effect_sizes(table.iloc[order], "odds-ratio"), whole.iloc[order])
+
+
+def test_an_index_of_two_levels_is_kept_and_names_the_trial(counts):
+    index = pd.MultiIndex.from_tuples([("pain", "Alder"), ("pain", "Birch")], names=["synthesis", "trial"])
+    table = counts((3, 40, 5, 41), (0, 80, 0, 77), index=index)
+    found = effects.effect_sizes(table, "odds-ratio")
+    pd.testing.assert_index_equal(found.index, index)
+    assert [left.trial for left in found.attrs["left_out"]] == [("pain", "Birch")]
+
+
+def test_petos_odds_ratio_takes_observed_minus_expected_where_the_report_gives_it(counts):
+    table = counts((7, 60, 15, 55), (np.nan, np.nan, np.nan, np.nan), index=["Alder", "Birch"])
+    table["observed_minus_expected"], table["variance_oe"] = [np.nan, -6.0], [np.nan, 12.0]
+    assert effects.effect_sizes(table, "peto-odds-ratio").loc["Birch"].tolist() == pytest.approx(
+        [-0.5, 1 / 12]
+    )

@@ -46,6 +46,21 @@ def log_risk_ratio(rows: Rows) -> Effects:
 
     :math:`\log\{(a/n_1)/(c/n_2)\}`, variance :math:`1/a - 1/n_1 + 1/c - 1/n_2` (Katz, Baptista, Azen and Pike
     1978, Biometrics 34:469).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total``.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), log scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.counts(rows)
     double, corrected_by_rule = _double_zero(rows), rows.correction is not Correction.NONE
@@ -66,6 +81,21 @@ def log_odds_ratio(rows: Rows) -> Effects:
     r"""Log odds ratio.
 
     :math:`\log\{ad/(bc)\}`, variance :math:`1/a + 1/b + 1/c + 1/d` (Woolf 1955, Ann Hum Genet 19:251).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total``.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), log scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.counts(rows)
     double = _double_zero(rows)
@@ -96,6 +126,21 @@ def risk_difference(rows: Rows) -> Effects:
     instance Agresti, Categorical Data Analysis, section 3.1). Zero cells leave it defined, so no correction
     is ever applied. Where both arms have no or only events the estimated variance is zero, although the
     true one is not: the trial is listed as left out of inverse-variance pooling.
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total``.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), natural scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.counts(rows)
     a, n1, c, n2 = _arms(rows)
@@ -110,6 +155,21 @@ def arcsine_difference(rows: Rows) -> Effects:
 
     :math:`\arcsin\sqrt{p_1} - \arcsin\sqrt{p_2}`, variance :math:`1/(4 n_1) + 1/(4 n_2)` (Rücker, Schwarzer,
     Carpenter and Olkin 2009, Stat Med 28:721).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total``.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), radians.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.counts(rows)
     a, n1, c, n2 = _arms(rows)
@@ -122,6 +182,21 @@ def observed_minus_expected(rows: Rows) -> tuple[FloatArray, FloatArray]:
 
     :math:`O-E = a - n_1 m/N` and :math:`V = n_1 n_2 m (N-m)/\{N^2 (N-1)\}` with m the events of both arms
     (Yusuf, Peto, Lewis, Collins and Sleight 1985, Prog Cardiovasc Dis 27:335).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total``.
+
+    Returns
+    -------
+    tuple of ndarray
+        O - E and V, shape (k,), in events.
+
+    Raises
+    ------
+    AnalysisError
+        If a trial has one participant in all.
     """
     a, n1, c, n2 = _arms(rows)
     events, total = a + c, n1 + n2
@@ -131,7 +206,23 @@ def observed_minus_expected(rows: Rows) -> tuple[FloatArray, FloatArray]:
 
 
 def log_peto_odds_ratio(rows: Rows) -> Effects:
-    """Peto's one-step log odds ratio (O - E)/V with variance 1/V; defined with one zero cell, uncorrected."""
+    """Peto's one-step log odds ratio (O - E)/V with variance 1/V; defined with one zero cell, uncorrected.
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total``.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), log scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
+    """
     checks.counts(rows)
     difference, information = observed_minus_expected(rows)
     undefined = information == 0
@@ -148,6 +239,21 @@ def log_rate_ratio(rows: Rows) -> Effects:
     :math:`\log\{(a/T_1)/(c/T_2)\}`, variance :math:`1/a + 1/c` (Poisson counts; Rothman and Greenland, Modern
     Epidemiology). A correction adds events, not person-time; the treatment-arm correction goes by
     person-time.
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_time comparator_events comparator_time``.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), log scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.person_time(rows)
     a, t1 = rows["intervention_events"], rows["intervention_time"]

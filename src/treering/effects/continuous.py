@@ -20,6 +20,21 @@ def mean_difference(rows: Rows) -> Effects:
     r"""Mean difference with separate variances.
 
     :math:`\bar x_1 - \bar x_2`, variance :math:`s_1^2/n_1 + s_2^2/n_2` (Cochrane Handbook, section 10.5.2).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With mean, SD and total of both arms.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), unit of the measurement.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.means(rows)
     m1, s1, n1, m2, s2, n2 = _arms(rows)
@@ -58,6 +73,21 @@ def standardized_mean_difference(rows: Rows) -> Effects:
     With d the mean difference over the pooled SD, :math:`g = J d` and variance
     :math:`J^2 \{(n_1+n_2)/(n_1 n_2) + d^2/(2(n_1+n_2))\}` (Hedges 1981; variance as in Borenstein, Hedges,
     Higgins and Rothstein 2009, equations 4.20 and 4.24).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With mean, SD and total of both arms.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), in SDs.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.means(rows)
     m1, s1, n1, m2, s2, n2 = _arms(rows)
@@ -75,6 +105,21 @@ def log_ratio_of_means(rows: Rows) -> Effects:
 
     :math:`\log(\bar x_1/\bar x_2)`, variance :math:`s_1^2/(n_1 \bar x_1^2) + s_2^2/(n_2 \bar x_2^2)` (Hedges,
     Gurevitch and Curtis 1999, Ecology 80:1150, equation 1).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With mean, SD and total of both arms, means above zero.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), log scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     checks.means(rows)
     checks.positive(rows, "intervention_mean", "comparator_mean")

@@ -11,7 +11,7 @@ import math
 import numpy as np
 from scipy.stats import norm
 
-from treering.effects import checks
+from treering.effects import intervals
 from treering.effects.record import (
     NOT_STATED,
     Conversion,
@@ -241,7 +241,7 @@ def _check_interval(
     values = {"estimate": estimate, "ci_low": low, "ci_high": high, "ci_level": level}
     columns = {field: np.array([value], dtype=float) for field, value in values.items()}
     label = np.array([trial if trial is not None else "not named"], dtype=object)
-    checks.interval(Rows(columns, label), log_scale=scale == "log")
+    intervals.check_interval(Rows(columns, label), log_scale=scale == "log")
 
 
 def _known_method(method: str, trial: str | None) -> None:

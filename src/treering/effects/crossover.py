@@ -164,7 +164,27 @@ def paired_log_odds_ratio(
 def sd_of_differences(
     intervention_sd: float, comparator_sd: float, correlation: float, trial: str | None = None
 ) -> float:
-    """SD of the differences within participants, from both SDs and their correlation."""
+    """SD of the differences within participants, from both SDs and their correlation.
+
+    Parameters
+    ----------
+    intervention_sd, comparator_sd : float
+        Under each treatment.
+    correlation : float
+        Of both measurements of a participant, between -1 and 1.
+    trial : str, optional
+        For messages.
+
+    Returns
+    -------
+    float
+        SD, unit of the measurement.
+
+    Raises
+    ------
+    AnalysisError
+        If an input cannot be right.
+    """
     need_positive(trial, intervention_sd=intervention_sd, comparator_sd=comparator_sd)
     inside = -1 < correlation < 1
     need(inside, "correlation", correlation, "is not between -1 and 1", "a correlation", trial)

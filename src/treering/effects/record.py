@@ -63,6 +63,22 @@ def record(
 ) -> Conversion:
     """Make a record, refusing a result that is not finite.
 
+    Parameters
+    ----------
+    formula, citation : str
+        Identifier and source of the formula.
+    inputs, result : dict
+        Names and values that went in and came out.
+    origin : str
+        Where the inputs stand in the report.
+    remarks : tuple of str
+        What a reader must know.
+
+    Returns
+    -------
+    Conversion
+        The record.
+
     Raises
     ------
     AnalysisError
@@ -79,6 +95,19 @@ def need(
 ) -> None:
     """Raise unless a condition on one input holds.
 
+    Parameters
+    ----------
+    holds : bool
+        The condition.
+    field : str
+        Field at fault if it does not hold.
+    found : object
+        Value met.
+    problem, expected : str
+        What is wrong, and what would be right.
+    trial : str, optional
+        Trial concerned.
+
     Raises
     ------
     AnalysisError
@@ -89,25 +118,79 @@ def need(
 
 
 def need_positive(trial: str | None = None, **fields: float) -> None:
-    """Refuse inputs that are not finite and above zero."""
+    """Refuse inputs that are not finite and above zero.
+
+    Parameters
+    ----------
+    trial : str, optional
+        Trial concerned.
+    **fields : float
+        Values by field.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial, if given, and the field.
+    """
     for field, value in fields.items():
         ok = math.isfinite(value) and value > 0
         need(ok, field, value, "is not finite and above zero", "a value above zero", trial)
 
 
 def need_finite(trial: str | None = None, **fields: float) -> None:
-    """Refuse inputs that are not finite."""
+    """Refuse inputs that are not finite.
+
+    Parameters
+    ----------
+    trial : str, optional
+        Trial concerned.
+    **fields : float
+        Values by field.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial, if given, and the field.
+    """
     for field, value in fields.items():
         need(math.isfinite(value), field, value, "is not finite", "a finite number", trial)
 
 
 def need_people(trial: str | None = None, **fields: float) -> None:
-    """Refuse totals that admit no SD."""
+    """Refuse totals that admit no SD.
+
+    Parameters
+    ----------
+    trial : str, optional
+        Trial concerned.
+    **fields : float
+        Values by field.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial, if given, and the field.
+    """
     for field, value in fields.items():
         ok = math.isfinite(value) and value > 1
         need(ok, field, value, "admits no SD", "two participants or more", trial)
 
 
 def need_probability(field: str, value: float, trial: str | None = None) -> None:
-    """Refuse a level or P value outside the open interval from 0 to 1."""
+    """Refuse a level or P value outside the open interval from 0 to 1.
+
+    Parameters
+    ----------
+    field : str
+        Name of the field.
+    value : float
+        Its value.
+    trial : str, optional
+        Trial concerned.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial, if given, and the field.
+    """
     need(0 < value < 1, field, value, "is not between 0 and 1", "a value between 0 and 1", trial)

@@ -51,8 +51,14 @@ class Rows:
 class Effects:
     """Estimates and variances on the analysis scale, shape (k,).
 
-    ``reason`` tells why a trial is left out ("" if it is in), ``corrected`` which trials had a zero-cell
-    correction.
+    Parameters
+    ----------
+    estimate, variance : ndarray
+        NaN only where ``reason`` says why.
+    reason : ndarray of object
+        Why a trial is left out; "" if it is in.
+    corrected : ndarray of bool
+        Which trials had a zero-cell correction.
     """
 
     estimate: FloatArray
@@ -69,7 +75,15 @@ class Effects:
 
 @dataclass(frozen=True)
 class LeftOut:
-    """A trial that stays listed but gives no usable effect on this measure, and why."""
+    """A trial that stays listed but gives no usable effect on this measure.
+
+    Parameters
+    ----------
+    trial : hashable
+        Its label.
+    reason : str
+        Why it is left out, in words for the report.
+    """
 
     trial: Hashable
     reason: str

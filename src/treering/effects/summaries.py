@@ -26,7 +26,14 @@ SHI = "Shi, Luo, Wan, Liu, Liu, Bian and Tong 2020, arXiv 2010.05749"
 class Skewness:
     """Result of the skewness test at the 5% level.
 
-    ``statistic`` is without unit; data whose statistic lies above ``critical`` are taken as ``skewed``.
+    Parameters
+    ----------
+    statistic : float
+        Size of the asymmetry, without unit.
+    critical : float
+        Value that one normal sample in twenty passes.
+    skewed : bool
+        Whether the statistic lies above it.
     """
 
     statistic: float

@@ -32,6 +32,11 @@ _RATIO = (
     Route("ratio and interval", INTERVAL, reported.ratio_from_interval),
     Route("log ratio and standard error", ("log_estimate", "standard_error"), reported.from_log_estimate),
 )
+_LOG_RANK = Route(
+    "observed minus expected",
+    ("observed_minus_expected", "variance_oe"),
+    time_to_event.from_observed_minus_expected,
+)
 _DIFFERENCE = (
     Route("estimate and interval", INTERVAL, reported.difference_from_interval),
     Route("estimate and standard error", ("estimate", "standard_error"), reported.from_standard_error),
@@ -41,7 +46,7 @@ _DIFFERENCE = (
 ROUTES: dict[Measure, tuple[Route, ...]] = {
     Measure.RISK_RATIO: (Route("counts", COUNTS, binary.log_risk_ratio), *_RATIO),
     Measure.ODDS_RATIO: (Route("counts", COUNTS, binary.log_odds_ratio), *_RATIO),
-    Measure.PETO_ODDS_RATIO: (Route("counts", COUNTS, binary.log_peto_odds_ratio),),
+    Measure.PETO_ODDS_RATIO: (Route("counts", COUNTS, binary.log_peto_odds_ratio), _LOG_RANK),
     Measure.RISK_DIFFERENCE: (Route("counts", COUNTS, binary.risk_difference), *_DIFFERENCE),
     Measure.ARCSINE_DIFFERENCE: (Route("counts", COUNTS, binary.arcsine_difference),),
     Measure.RATE_RATIO: (Route("events and time", RATES, binary.log_rate_ratio), *_RATIO),
@@ -53,11 +58,7 @@ ROUTES: dict[Measure, tuple[Route, ...]] = {
     Measure.RATIO_OF_MEANS: (Route("means", MEANS, continuous.log_ratio_of_means), *_RATIO),
     Measure.HAZARD_RATIO: (
         *_RATIO,
-        Route(
-            "observed minus expected",
-            ("observed_minus_expected", "variance_oe"),
-            time_to_event.from_observed_minus_expected,
-        ),
+        _LOG_RANK,
         Route("ratio and P value", ("estimate", "p_value"), reported.ratio_from_p),
         Route(
             "log-rank P value and events",
@@ -88,8 +89,8 @@ def effect_sizes(
                                                     comparator_events comparator_time
     hazard-ratio, and ratios                        estimate ci_low ci_high (natural scale), or
     without arm-level figures                       log_estimate standard_error
-    hazard-ratio                                    observed_minus_expected variance_oe, or
-                                                    estimate p_value, or p_value intervention_events
+    hazard-ratio and peto-odds-ratio                observed_minus_expected variance_oe
+    hazard-ratio                                    estimate p_value, or p_value intervention_events
                                                     comparator_events lower_hazard (name of the arm)
     generic, and differences                        estimate ci_low ci_high, or
     without arm-level figures                       estimate standard_error

@@ -15,7 +15,23 @@ from treering.effects.rows import Effects, FloatArray, Rows, refuse
 
 
 def from_observed_minus_expected(rows: Rows) -> Effects:
-    """Log hazard ratio (O - E)/V, variance 1/V (Parmar et al. 1998, equations 1 and 2)."""
+    """Log hazard ratio (O - E)/V, variance 1/V (Parmar et al. 1998, equations 1 and 2).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``observed_minus_expected`` and ``variance_oe``, in events.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), log scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
+    """
     information = rows["variance_oe"]
     refuse(
         information <= 0,
@@ -77,6 +93,21 @@ def from_log_rank_p(rows: Rows) -> Effects:
 
     :math:`O - E = \pm z_{1-p/2} \sqrt{V}`, so that the log hazard ratio is :math:`\pm z/\sqrt{V}` (Parmar et
     al. 1998; Tierney et al. 2007). The sign is minus where ``lower_hazard`` says "intervention".
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``p_value``, events of both arms above zero, and ``lower_hazard`` as a sign.
+
+    Returns
+    -------
+    Effects
+        Shape (k,), log scale.
+
+    Raises
+    ------
+    AnalysisError
+        Naming the trial and the field, if a figure cannot be right.
     """
     reported.probability(rows)
     for arm in ("intervention", "comparator"):

@@ -19,7 +19,18 @@ COUNTS = ("intervention_events", "intervention_total", "comparator_events", "com
 
 
 def has_zero_cell(rows: Rows) -> BoolArray:
-    """Tell which 2 by 2 tables have an empty cell, shape (k,)."""
+    """Tell which 2 by 2 tables have an empty cell, shape (k,).
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total``.
+
+    Returns
+    -------
+    ndarray of bool, shape (k,)
+        True where any of the four cells is empty.
+    """
     zero = np.zeros(len(rows.labels), dtype=bool)
     for arm in checks.ARMS:
         events, total = rows[f"{arm}_events"], rows[f"{arm}_total"]
@@ -57,7 +68,18 @@ def correction_amounts(
 
 
 def corrected_rows(rows: Rows) -> tuple[Rows, BoolArray]:
-    """Give the counts with the correction added in trials with a zero cell, and which trials these are."""
+    """Give the counts with the correction added in trials with a zero cell, and which trials these are.
+
+    Parameters
+    ----------
+    rows : Rows, k trials
+        With ``intervention_events intervention_total comparator_events comparator_total`` and the correction.
+
+    Returns
+    -------
+    tuple of Rows and ndarray of bool
+        Counts after correction, and which trials changed, shape (k,).
+    """
     zero = has_zero_cell(rows)
     if rows.correction is Correction.NONE:
         return rows, np.zeros(zero.shape, dtype=bool)
@@ -72,6 +94,20 @@ def corrected_rows(rows: Rows) -> tuple[Rows, BoolArray]:
 
 def count_rows(table: pd.DataFrame, correction: Correction = Correction.NONE, amount: float = 0.5) -> Rows:
     """Read and check the four count columns of a table.
+
+    Parameters
+    ----------
+    table : DataFrame, k rows
+        With the four count columns.
+    correction : Correction
+        Correction that the rows carry along.
+    amount : float
+        Its size, in events.
+
+    Returns
+    -------
+    Rows
+        Checked counts.
 
     Raises
     ------

@@ -1,0 +1,108 @@
+"""Checks of a reported interval: it has a width, holds its estimate and is symmetric where it is analysed."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from treering.effects import checks
+from treering.effects.rows import BoolArray, FloatArray, IntArray, Rows, refuse
+
+# Where rounding would have to move the middle of an interval by more than this share of its half-width,
+# the printed digits are too coarse to yield a standard error, even if rounding could explain the gap.
+COARSEST = 0.25
+_FLOAT_NOISE = 1e-6
+_MOST_DECIMALS = 12
+
+
+def check_interval(rows: Rows, *, log_scale: bool) -> None:
+    """Refuse an interval unless it has a width, holds its estimate and is symmetric on the analysis scale.
+
+    An interval taken as the estimate plus and minus a multiple of its standard error is symmetric on the
+    scale of the analysis. Printed figures are rounded, so a gap between the estimate and the middle of the
+    limits is accepted if rounding of the printed digits can explain it and it stays within a quarter of the
+    half-width (own rule; beyond that the digits are too coarse to yield a standard error).
+
+    Parameters
+    ----------
+    rows : Rows
+        With ``estimate``, ``ci_low``, ``ci_high`` on the natural scale and ``ci_level``.
+    log_scale : bool
+        Whether the analysis is on the log scale.
+    """
+    estimate, low, high = rows["estimate"], rows["ci_low"], rows["ci_high"]
+    level = rows["ci_level"]
+    outside_level = (level <= 0) | (level >= 1)
+    refuse(outside_level, rows.labels, "ci_level", level, "is no confidence level", "a value such as 0.95")
+    if log_scale:
+        checks.positive(rows, "estimate", "ci_low")
+    refuse(
+        low >= high, rows.labels, "ci_low", low, "is not below ci_high", "a lower limit below the upper one"
+    )
+    outside = (estimate < low) | (estimate > high)
+
+    def shown(at: int) -> str:
+        return f"{estimate[at]:g} ({low[at]:g} to {high[at]:g})"
+
+    refuse(
+        outside, rows.labels, "estimate", shown, "lies outside its interval", "ci_low <= estimate <= ci_high"
+    )
+    skewed = ~_symmetric(estimate, low, high, log_scale=log_scale)
+    scale = "log scale" if log_scale else "analysis scale"
+    refuse(
+        skewed,
+        rows.labels,
+        "ci_low, ci_high",
+        shown,
+        f"the interval is not symmetric about the estimate on the {scale}, beyond what rounding explains",
+        "an interval of the form estimate plus and minus a multiple of its standard error",
+    )
+
+
+def _symmetric(estimate: FloatArray, low: FloatArray, high: FloatArray, *, log_scale: bool) -> BoolArray:
+    """Whether some unrounded figures behind the printed ones make the interval symmetric."""
+
+    def scale(x: FloatArray) -> FloatArray:
+        return np.log(x) if log_scale else x
+
+    decimals = np.maximum(printed_decimals(low), printed_decimals(high))
+    if (
+        log_scale
+    ):  # ratios below 10 are printed with a decimal at least; 2 (1 to 5) is no rounding to integers
+        decimals = np.maximum(decimals, np.where(high < 10, 1, 0))
+    half = _half_unit(decimals)
+    half_estimate = _half_unit(np.maximum(decimals, printed_decimals(estimate)))
+    middle_low = (scale(low - half) + scale(high - half)) / 2
+    middle_high = (scale(low + half) + scale(high + half)) / 2
+    explained = (scale(estimate - half_estimate) <= middle_high) & (
+        scale(estimate + half_estimate) >= middle_low
+    )
+    gap = np.abs(scale(estimate) - (scale(low) + scale(high)) / 2)
+    width = (scale(high) - scale(low)) / 2
+    return (gap <= _FLOAT_NOISE * width) | (explained & (gap <= COARSEST * width))
+
+
+def printed_decimals(values: FloatArray) -> IntArray:
+    """Count the decimals a value was printed with, trailing zeros not counted (0.70 gives 1).
+
+    Parameters
+    ----------
+    values : ndarray, shape (k,)
+        Figures as printed.
+
+    Returns
+    -------
+    ndarray of int, shape (k,)
+        0 to 12; 12 stands for a figure that was not rounded.
+    """
+    found = np.full(values.shape, _MOST_DECIMALS)
+    for decimals in range(_MOST_DECIMALS - 1, -1, -1):
+        with np.errstate(over="ignore", invalid="ignore"):
+            scaled = values * 10.0**decimals
+            near = np.abs(scaled - np.round(scaled)) <= 1e-12 * np.abs(scaled)
+        found = np.where(near, decimals, found)
+    return found
+
+
+def _half_unit(decimals: IntArray) -> FloatArray:
+    """Half a unit of the last printed decimal; zero for unrounded figures."""
+    return np.where(decimals >= _MOST_DECIMALS, 0.0, 0.5 * 10.0 ** (-decimals.astype(float)))
