@@ -11,25 +11,22 @@ from prefect.artifacts import create_link_artifact, create_table_artifact
 from prefect.cache_policies import NO_CACHE
 
 from treering import __version__
-from treering.records import NewEntry
 from treering.update import RunContext, Summary, read_review
 from treering.update import weekly as steps
-from treering.update.taking_in import FileOutcome, TakenIn
+from treering.update.taking_in import TakenIn
 from treering.update.versions import Analyses, Basis, analyse_synthesis, changes_of
-
-Read = tuple[tuple[FileOutcome, ...], tuple[NewEntry, ...]]
 
 
 @task(name="read intake", cache_policy=NO_CACHE)
-def read_intake(context: RunContext) -> Read:
+def read_intake(context: RunContext) -> TakenIn:
     """Read and check the dropped files."""
     return steps.step_read(context)
 
 
 @task(name="verify", cache_policy=NO_CACHE)
-def verify(context: RunContext, read: Read) -> TakenIn:
+def verify(context: RunContext, read: TakenIn) -> TakenIn:
     """Pair what two people extracted apart; a third settles."""
-    return steps.step_verify(context, *read)
+    return steps.step_verify(context, read)
 
 
 @task(name="append", cache_policy=NO_CACHE)

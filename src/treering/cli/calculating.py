@@ -5,11 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 from treering.cli.output import EXIT_DONE, remark, say, say_json, say_table
-
-ADVICE = (
-    "Published advice (Cochrane expert panel 2018; Handbook chapter 22) is against sequential methods for main "
-    "conclusions in most circumstances."
-)
+from treering.terms import CAUTION
 
 
 def boundaries(
@@ -97,7 +93,7 @@ def boundaries(
     for name, value in table.required.items():
         say(f"{name.replace('_', ' ')}: {value:.6g}")
     remark(f"Convention: {table.convention}.")
-    remark(ADVICE)
+    remark(CAUTION)
     return EXIT_DONE
 
 

@@ -196,14 +196,13 @@ def _tell(summary: Summary, indent: str = "") -> None:
     for event in sorted({(item["event"], item["synthesis"]) for item in summary.told}):
         people = sorted({i["person"] for i in summary.told if (i["event"], i["synthesis"]) == event})
         say(f"{indent}told of '{event[0]}' ({event[1]}): {', '.join(people)}")
-    for item in summary.remarks:
-        for text in item["remarks"]:
-            remark(f"{item['file']}: {text}")
+    for text in summary.remarks:
+        remark(text)
     for item in summary.waiting:
         remark(f"waits: {item['trial']}, {item['outcome']}: {item['why']}")
     for item in summary.returned:
         for text in item["faults"]:
-            remark(f"returned: {item['file']}: {text}")
+            remark(f"returned: {text}")
     for text in summary.undelivered:
         remark(f"not delivered: {text}")
     if not indent:
@@ -213,7 +212,7 @@ def _tell(summary: Summary, indent: str = "") -> None:
 def _preview_lines(found: dict[str, Any]) -> list[str]:
     lines = [f"{len(found['files'])} file(s) in intake, {len(found['returned'])} would go back."]
     for item in found["returned"]:
-        lines += [f"  {item['file']}: {fault}" for fault in item["faults"]]
+        lines += [f"  {fault}" for fault in item["faults"]]
     lines += [f"  verified: {item['trial']}, {item['outcome']}" for item in found["verified"]]
     lines += [f"  waits: {item['trial']}, {item['outcome']}: {item['why']}" for item in found["waiting"]]
     lines.append(

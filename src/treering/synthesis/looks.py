@@ -11,6 +11,7 @@ from treering.monitoring import (
     PER_TAIL_CONVENTION,
     Look,
     MonitoringPlan,
+    RestsOn,
     hindsight,
     information_per_participant,
     minimum_trials,
@@ -109,7 +110,7 @@ def monitoring_block(
         "look": ledger[-1].to_dict() if ledger else None,
         "looks": [look.to_dict() for look in ledger],
         "hindsight": _hindsight(plan, estimated),
-        **_beside(plan, ledger, trials, estimates, variances),
+        **_beside(plan, ledger, trials, estimates, variances, _per_participant(outcome, estimated)),
     }
 
 
@@ -200,7 +201,12 @@ def _hindsight(plan: MonitoringPlan, estimated: Estimated) -> list[dict[str, Any
 
 
 def _beside(
-    plan: MonitoringPlan, ledger: Sequence[Look], trials: Sequence[str], estimates: Any, variances: Any
+    plan: MonitoringPlan,
+    ledger: Sequence[Look],
+    trials: Sequence[str],
+    estimates: Any,
+    variances: Any,
+    per_participant: float | None,
 ) -> dict[str, Any]:
     """Return the second opinions, what the crossing rests on, and how many trials are needed at least."""
     if not trials or not ledger:
@@ -212,10 +218,25 @@ def _beside(
     return {
         "opinions": [opinion.to_dict() for opinion in strip.opinions],
         "agree": strip.agree,
-        "rests_on": None if rests is None else rests.to_dict(),
+        "rests_on": None if rests is None else _rests_body(rests, per_participant),
         "minimum_trials": minimum_trials(
             plan.effect, tau2, alpha=plan.alpha, power=plan.power, sides=plan.sides
         ),
+    }
+
+
+def _rests_body(rests: RestsOn, per_participant: float | None) -> dict[str, Any]:
+    """Return what a crossing rests on, with the null trial also told in participants."""
+    people = None
+    if rests.null_information is not None and per_participant:
+        people = math.ceil(rests.null_information / per_participant)
+    return {
+        "trials": [list(group) for group in rests.sets],
+        "tau2": rests.tau2_lost,
+        "tau2_now": rests.tau2,
+        "null_information": rests.null_information,
+        "null_participants": people,
+        "text": rests.sentence,
     }
 
 

@@ -5,9 +5,9 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Any
 
-from treering.errors import AnalysisError
 from treering.pooling import (
     PooledEffect,
+    SubgroupEffect,
     egger,
     leave_one_out,
     pool,
@@ -15,13 +15,21 @@ from treering.pooling import (
     pool_peto,
     subgroup_analysis,
 )
-from treering.pooling import absolute_effects as absolute_from_ratio
+from treering.pooling import absolute_effects as per_people
 from treering.protocol import Outcome
 from treering.synthesis.estimates import Estimated, pool_planned, values_table
 from treering.synthesis.trials import TrialRow
 from treering.terms import Judgement, Measure
 
-BINARY = frozenset({Measure.RISK_RATIO, Measure.ODDS_RATIO, Measure.RISK_DIFFERENCE, Measure.PETO_ODDS_RATIO})
+WITH_ABSOLUTE = frozenset(
+    {
+        Measure.RISK_RATIO,
+        Measure.ODDS_RATIO,
+        Measure.RISK_DIFFERENCE,
+        Measure.PETO_ODDS_RATIO,
+        Measure.HAZARD_RATIO,
+    }
+)
 MANTEL_HAENSZEL = frozenset({Measure.RISK_RATIO, Measure.ODDS_RATIO, Measure.RISK_DIFFERENCE})
 #: Small-study tests need about ten trials (Sterne et al. 2011, BMJ 343:d4002).
 FEWEST_FOR_SMALL_STUDY = 10
@@ -151,18 +159,29 @@ def _subgroup(estimated: Estimated, outcome: Outcome, name: str) -> dict[str, An
                 "q": None, "q_df": None, "p": None, "why": "fewer than two levels with trials"}  # fmt: skip
     numbers = estimated.numbers(rows)
     test = subgroup_analysis(
-        *numbers, [row.subgroup[name] for row in rows], model=outcome.pooling.model, tau2=outcome.pooling.tau2
+        *numbers,
+        [row.subgroup[name] for row in rows],
+        model=outcome.pooling.model,
+        tau2=outcome.pooling.tau2,
+        interval=outcome.pooling.interval,
+        level=outcome.pooling.level,
     )
     return {
         "name": name,
         "planned": True,
         "without_level": missing,
-        "levels": [_short(pooled, level) | {"level": level} for level, pooled in test.levels.items()],
-        "q": test.q_between,
-        "q_df": test.df,
-        "p": test.p,
+        "levels": [_level(group) for group in sorted(test.groups, key=lambda group: group.label)],
+        "test": test.test_name,
+        "q": test.test,
+        "q_df": test.test_df,
+        "p": test.test_p,
         "why": "",
     }
+
+
+def _level(group: SubgroupEffect) -> dict[str, Any]:
+    fields = ("k", "estimate", "ci_low", "ci_high", "tau2")
+    return {"level": group.label} | {name: getattr(group, name) for name in fields}
 
 
 def small_study(estimated: Estimated) -> dict[str, Any]:
@@ -183,24 +202,16 @@ def small_study(estimated: Estimated) -> dict[str, Any]:
 
 def absolute_effects(planned: PooledEffect | None, outcome: Outcome) -> dict[str, Any] | None:
     """Effect per 1000 people at the protocol's comparator risk; None without one."""
-    if planned is None or outcome.comparator_risk is None or outcome.measure not in BINARY:
+    if planned is None or outcome.comparator_risk is None or outcome.measure not in WITH_ABSOLUTE:
         return None
-    try:
-        effect = absolute_from_ratio(
-            planned.estimate,
-            planned.ci_low,
-            planned.ci_high,
-            measure=outcome.measure,
-            comparator_risk=outcome.comparator_risk,
-        )
-    except AnalysisError as error:
-        return {"comparator_risk": outcome.comparator_risk, "per": 1000, "difference": None,
-                "low": None, "high": None, "why": str(error)}  # fmt: skip
+    (effect,) = per_people(planned, outcome.measure, outcome.comparator_risk)
     return {
         "comparator_risk": outcome.comparator_risk,
-        "per": 1000,
+        "per": effect.per,
+        "comparator": effect.comparator,
+        "intervention": effect.intervention,
         "difference": effect.difference,
-        "low": effect.low,
-        "high": effect.high,
-        "why": "",
+        "low": effect.difference_low,
+        "high": effect.difference_high,
+        "why": "a risk had to be cut at 0 or 1: the measure does not fit this risk" if effect.cut else "",
     }

@@ -8,7 +8,7 @@ from typing import Any
 from treering.store import State
 from treering.terms import EntryKind
 from treering.update.context import open_evidence, read_review
-from treering.update.taking_in import read_intake, verify
+from treering.update.taking_in import moved, read_intake, verify
 from treering.update.versions import TRIGGERS
 
 
@@ -40,13 +40,12 @@ def preview(folder: Path, day: str) -> dict[str, Any]:
         store = open_evidence(review)
         state = store.state()
         store.close()
-    files, entries = read_intake(review, state, day)
-    taken = verify(review, state, files, entries)
+    taken = verify(review, state, read_intake(review, state, day))
     fresh = [entry for entry in taken.entries if state.after([entry]) is not state]
     return {
-        "files": [file.dropped.name for file in taken.files],
-        "returned": [{"file": f.dropped.name, "faults": list(f.faults)} for f in taken.returned],
-        "remarks": [{"file": f.dropped.name, "remarks": list(f.remarks)} for f in taken.files if f.remarks],
+        "files": [dropped.shown for dropped in (*moved(taken.checked), *taken.checked.returned)],
+        "returned": taken.returned,
+        "remarks": taken.remarks,
         "verified": [
             {"trial": entry.body["trial"], "outcome": entry.body["outcome"]}
             for entry in fresh

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import shutil
+from datetime import date, timedelta
 from pathlib import Path
 from typing import Any
 
@@ -12,12 +13,7 @@ from treering.report import ReportView, render, render_index
 from treering.store import EvidenceStore, State
 from treering.terms import EntryKind
 from treering.update.context import Review, RunContext
-from treering.update.views import index_rows, version_view
-
-
-def folder_name(version: dict[str, Any]) -> str:
-    """Return the name of a version's report folder, DATE-vNNN."""
-    return f"{version['date']}-v{int(version['version']):03d}"
+from treering.update.views import folder_name, index_rows, version_view
 
 
 def unpublished(store: EvidenceStore) -> list[dict[str, Any]]:
@@ -117,6 +113,10 @@ def publish_index(store: EvidenceStore, review: Review, *, status: dict[str, Any
     return path
 
 
+def _plus(day: str, days: int) -> str:
+    return (date.fromisoformat(day) + timedelta(days=days)).isoformat()
+
+
 def status_of(state: State, context_day: str, review: Review, waiting: int) -> dict[str, Any]:
     """Say how the living review stands: last run, searches, what waits, what is due.
 
@@ -142,7 +142,11 @@ def status_of(state: State, context_day: str, review: Review, waiting: int) -> d
             source = entry.body["source"]
             searches[source] = max(searches.get(source, ""), entry.body["date"])
     runs = state.live(EntryKind.RUN)
+    searched = "; ".join(f"{source} {day}" for source, day in sorted(searches.items()))
     return {
+        "text": f"living; last run {context_day}; searched to: {searched or 'no search run is recorded'}; "
+        f"{waiting} result(s) wait for verification; next update due "
+        f"{_plus(context_day, review.protocol.living.update_every_days)}.",
         "date": context_day,
         "searches": dict(sorted(searches.items())),
         "planned_sources": dict(sorted(review.protocol.living.search_every_days.items())),

@@ -14,9 +14,8 @@ from treering.report import render
 from treering.store import EvidenceStore
 from treering.terms import EntryKind
 from treering.update.context import Review
-from treering.update.publishing import folder_name
 from treering.update.versions import analyse_synthesis
-from treering.update.views import basis_of, version_body, view_from
+from treering.update.views import basis_of, folder_name, version_body, view_from
 
 #: A number that differs by less than this (relative) between code versions is not listed.
 SAME_NUMBER = 1e-8

@@ -6,8 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
-from treering.intake import Dropped, check, entries_for, read_folder, read_records, settle
-from treering.protocol import Protocol
+from treering.intake import Checked, Dropped, check, entries_for, read_folder, read_records, settle
 from treering.records import NewEntry
 from treering.store import State
 from treering.terms import EntryKind
@@ -16,52 +15,39 @@ from treering.update.plan_changes import protocol_entries
 
 
 @dataclass(frozen=True)
-class FileOutcome:
-    """What becomes of one dropped file.
-
-    Parameters
-    ----------
-    dropped : Dropped
-        The file as it was read.
-    faults : tuple of str
-        One sentence per fault; empty when the file is taken in.
-    remarks : tuple of str
-        What a person should look at although the file is taken in.
-    """
-
-    dropped: Dropped
-    faults: tuple[str, ...]
-    remarks: tuple[str, ...]
-
-
-@dataclass(frozen=True)
 class TakenIn:
     """What an update would append, and what it leaves waiting.
 
     Parameters
     ----------
-    files : tuple of FileOutcome
-        Every file of the intake folder, by name.
+    checked : Checked
+        The files of the intake folder, sorted by what becomes of them.
     entries : tuple of NewEntry
         In the order in which they are appended.
     waiting : tuple of dict
         Results that are not verified yet: trial, outcome, why, differences.
     """
 
-    files: tuple[FileOutcome, ...]
+    checked: Checked
     entries: tuple[NewEntry, ...]
-    waiting: tuple[dict[str, Any], ...]
+    waiting: tuple[dict[str, Any], ...] = ()
 
     @property
-    def returned(self) -> tuple[FileOutcome, ...]:
-        """The files that go back."""
-        return tuple(file for file in self.files if file.faults)
+    def returned(self) -> list[dict[str, Any]]:
+        """The files that go back, with their faults in words."""
+        return [
+            {"file": dropped.shown, "faults": _sentences(self.checked, dropped)}
+            for dropped in self.checked.returned
+        ]
+
+    @property
+    def remarks(self) -> list[str]:
+        """What a reviewer should look at although it is taken in."""
+        return [str(remark) for remark in self.checked.remarks]
 
 
-def read_intake(
-    review: Review, state: State, day: str
-) -> tuple[tuple[FileOutcome, ...], tuple[NewEntry, ...]]:
-    """Read and check every file in intake/, each against the state that the files before it would leave.
+def read_intake(review: Review, state: State, day: str) -> TakenIn:
+    """Read and check every file in intake/ against protocol and store.
 
     Parameters
     ----------
@@ -74,37 +60,23 @@ def read_intake(
 
     Returns
     -------
-    tuple of FileOutcome, tuple of NewEntry
+    TakenIn
+        Without the results that pairing will verify.
 
     Raises
     ------
     AmendmentError
         When the plan changed without an amendment.
     """
-    entries = list(protocol_entries(review, state, day))
-    state = state.after(entries)
-    files = []
-    for dropped in read_folder(review.intake):
-        outcome, fresh = _one_file(dropped, review.protocol, state, day)
-        files.append(outcome)
-        entries.extend(fresh)
-        state = state.after(fresh)
-    return tuple(files), tuple(entries)
+    plan = protocol_entries(review, state, day)
+    parsed = read_records(read_folder(review.intake))
+    checked = check(parsed, review.protocol, state, known_date=day)
+    fresh = entries_for(checked, review.protocol, state, day)
+    back = [_returned(dropped, checked, day) for dropped in checked.returned]
+    return TakenIn(checked, (*plan, *back, *fresh))
 
 
-def _one_file(
-    dropped: Dropped, protocol: Protocol, state: State, day: str
-) -> tuple[FileOutcome, Sequence[NewEntry]]:
-    checked = check(read_records(dropped), protocol, state)
-    if checked.faults:
-        return FileOutcome(dropped, tuple(checked.faults), ()), (_returned(dropped, checked.faults, day),)
-    fresh = entries_for(checked, protocol, state, day)
-    return FileOutcome(dropped, (), tuple(checked.remarks)), fresh
-
-
-def verify(
-    review: Review, state: State, files: tuple[FileOutcome, ...], entries: tuple[NewEntry, ...]
-) -> TakenIn:
+def verify(review: Review, state: State, read: TakenIn) -> TakenIn:
     """Pair what was read and add the results that two people, or a third, have verified.
 
     Parameters
@@ -113,28 +85,33 @@ def verify(
         The review folder.
     state : State
         The evidence before this run.
-    files, entries
+    read : TakenIn
         What `read_intake` gave.
 
     Returns
     -------
     TakenIn
     """
-    settled = settle(state.after(entries), review.protocol)
-    return TakenIn(files, entries + tuple(settled.entries), tuple(settled.waiting))
+    settled = settle(state.after(read.entries), review.protocol)
+    return TakenIn(read.checked, read.entries + settled.entries, settled.waiting)
 
 
-def _returned(dropped: Dropped, faults: Sequence[str], day: str) -> NewEntry:
+def _sentences(checked: Checked, dropped: Dropped) -> list[str]:
+    return [str(fault) for fault in checked.faults_of(dropped)]
+
+
+def _returned(dropped: Dropped, checked: Checked, day: str) -> NewEntry:
     """Record that a file was given back and why: nothing received is ever lost, not even a bad file."""
-    return NewEntry(
-        EntryKind.RECEIPT,
-        f"receipt/{dropped.sha256}/returned/{day}",
-        {
-            "file": dropped.name,
-            "sha256": dropped.sha256,
-            "size": len(dropped.content),
-            "record": None,
-            "faults": list(faults),
-        },
-        true_at=day,
-    )
+    body = {
+        "file": dropped.shown,
+        "sha256": dropped.sha256,
+        "size": len(dropped.content),
+        "record": None,
+        "faults": _sentences(checked, dropped),
+    }
+    return NewEntry(EntryKind.RECEIPT, f"receipt/{dropped.sha256}/returned/{day}", body, true_at=day)
+
+
+def moved(checked: Checked) -> Sequence[Dropped]:
+    """Return the files that go to filed/: taken in now, or in the store already."""
+    return (*checked.accepted, *checked.doubles)

@@ -7,7 +7,7 @@ from typing import Any
 
 from treering.errors import StoreError
 from treering.intake import settle
-from treering.report import ReportView, build_view
+from treering.report import ReportView, build_view, version_summary
 from treering.store import EvidenceStore, State, StoredEntry
 from treering.terms import EntryKind
 from treering.update.versions import Basis, analyses_of, changes_of, stored_protocol
@@ -144,15 +144,12 @@ def _status(basis: Basis) -> dict[str, Any]:
 def index_rows(store: EvidenceStore) -> list[dict[str, Any]]:
     """Return one row per version for reports/index.html, oldest first."""
     whole = store.state()
-    told: dict[int, int] = {}
-    for entry in whole.all(EntryKind.NOTICE):
-        told[int(entry.body["version"])] = told.get(int(entry.body["version"]), 0) + 1
     return [
-        {
-            **body,
-            "folder": f"{body['date']}-v{int(body['version']):03d}",
-            "notices": told.get(int(body["version"]), 0),
-            "analyses": analyses_of(whole, int(body["version"])),
-        }
+        version_summary(body, analyses_of(whole, int(body["version"])), folder_name(body))
         for body in store.versions()
     ]
+
+
+def folder_name(version: Mapping[str, Any]) -> str:
+    """Return the name of a version's report folder, DATE-vNNN."""
+    return f"{version['date']}-v{int(version['version']):03d}"

@@ -16,7 +16,7 @@ from treering.terms import EntryKind
 from treering.update.context import RunContext, open_evidence
 from treering.update.laying_down import lay_down
 from treering.update.publishing import publish_index, publish_version, status_of, unpublished
-from treering.update.taking_in import FileOutcome, TakenIn, read_intake, verify
+from treering.update.taking_in import TakenIn, moved, read_intake, verify
 from treering.update.versions import Analyses, Basis, analyse_synthesis, changes_of, next_basis
 
 
@@ -32,8 +32,8 @@ class Summary:
         The version that was laid down; None in a quiet week.
     returned : tuple of dict
         Files given back: file, faults.
-    remarks : tuple of dict
-        Files taken in that someone should look at: file, remarks.
+    remarks : tuple of str
+        What someone should look at although it was taken in.
     waiting : tuple of dict
         Results not verified yet: trial, outcome, why.
     verdicts : dict
@@ -49,7 +49,7 @@ class Summary:
     day: str
     version: int | None
     returned: tuple[dict[str, Any], ...]
-    remarks: tuple[dict[str, Any], ...]
+    remarks: tuple[str, ...]
     waiting: tuple[dict[str, Any], ...]
     verdicts: dict[str, str]
     told: tuple[dict[str, Any], ...]
@@ -80,18 +80,16 @@ def one_writer(context: RunContext) -> Iterator[None]:
         yield
 
 
-def step_read(context: RunContext) -> tuple[tuple[FileOutcome, ...], tuple[NewEntry, ...]]:
-    """Read the intake folder; writes nothing."""
+def step_read(context: RunContext) -> TakenIn:
+    """Read and check the intake folder; writes nothing."""
     with evidence(context) as store:
         return read_intake(context.review, store.state(), context.day)
 
 
-def step_verify(
-    context: RunContext, files: tuple[FileOutcome, ...], entries: tuple[NewEntry, ...]
-) -> TakenIn:
+def step_verify(context: RunContext, read: TakenIn) -> TakenIn:
     """Pair extractions and settle what two people, or a third, agree on; writes nothing."""
     with evidence(context) as store:
-        return verify(context.review, store.state(), files, entries)
+        return verify(context.review, store.state(), read)
 
 
 def step_append(context: RunContext, taken: TakenIn) -> None:
@@ -102,11 +100,10 @@ def step_append(context: RunContext, taken: TakenIn) -> None:
     """
     with evidence(context) as store:
         store.append(taken.entries, known_at=context.known_at)
-    for file in taken.files:
-        if file.faults:
-            give_back(context.review.intake, file.dropped, file.faults)
-        else:
-            file_away(context.review.intake, file.dropped, context.day)
+    for dropped in taken.checked.returned:
+        give_back(context.review.intake, dropped, taken.checked.faults_of(dropped))
+    for dropped in moved(taken.checked):
+        file_away(context.review.intake, dropped)
 
 
 def step_basis(context: RunContext) -> Basis | None:
@@ -163,14 +160,11 @@ def step_close(context: RunContext, taken: TakenIn, failures: tuple[str, ...]) -
         state = store.state()
         status = status_of(state, context.day, context.review, len(done["waiting"]))
         index = publish_index(store, context.review, status=status)
-        remarks = tuple(
-            {"file": f.dropped.name, "remarks": list(f.remarks)} for f in taken.files if f.remarks
-        )
         return Summary(
             day=context.day,
             version=done["version"],
             returned=tuple(done["returned"]),
-            remarks=remarks,
+            remarks=tuple(taken.remarks),
             waiting=tuple(done["waiting"]),
             verdicts=latest_verdicts(state),
             told=tuple(_told(context, state)),
@@ -227,7 +221,7 @@ def run_update(context: RunContext) -> Summary:
         Of the kind that says what stopped the update; what was committed before stays.
     """
     with one_writer(context):
-        taken = step_verify(context, *step_read(context))
+        taken = step_verify(context, step_read(context))
         step_append(context, taken)
         basis = step_basis(context)
         if basis is not None:
