@@ -229,7 +229,8 @@ def test_shrinking_information_redraws_the_bound_of_the_calculated_example():
     assert planned.z[-1] == pytest.approx(2.32, abs=0.006)
     assert planned.alpha_spent[-1] == pytest.approx(0.0217, abs=6e-5)
     assert redrawn.alpha_spent[-1] == pytest.approx(0.0012, abs=6e-5)
-    assert boundaries([3300 / (2 * required)]).z[0] == pytest.approx(3.29, abs=0.06)
+    assert redrawn.fractions[-1] == pytest.approx(0.43, abs=0.005)
+    assert redrawn.z[-1] == pytest.approx(3.29, abs=0.006)
 
 
 @pytest.mark.slow

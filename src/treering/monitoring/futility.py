@@ -41,7 +41,8 @@ class FutilityBoundaries:
     drift : float
         Mean of Z at fraction 1 under the effect to detect.
     inflation : float
-        Required information with these futility looks over that of one final test.
+        Required information with these futility looks over that of one final test. The power counts a
+        crossing on either side, the single test's formula on one, so a single look can stand at 0.9997.
     """
 
     fractions: FloatArray

@@ -221,11 +221,25 @@ def tail_bound(paths: Paths, information: float, target: float, *, drift: float 
     The logarithm of a normal tail smoothed over an interval is concave, so Newton's method on it,
     started above the root, comes down to it without overshooting.
     """
-    sigma = math.sqrt(information - paths.information)
-    edge = float(paths.nodes.max(initial=-math.inf)) + drift * sigma**2
     if not target >= _LEAST:
         return math.inf
-    reach = -float(special.ndtri(min(target, 1.0)))
+    if target < float(paths.mass.sum()):
+        score = _descend(paths, information, target, drift)
+        if score is not None:
+            return score
+    raise NotConvergedError(
+        "No bound was found for this look.",
+        found=f"{target:g} of probability to spend, {float(paths.mass.sum()):g} of the paths left",
+        expected="less to spend than is left",
+        next_step="Check the informations and bounds of the earlier looks.",
+    )
+
+
+def _descend(paths: Paths, information: float, target: float, drift: float) -> float | None:
+    """Newton's method on the logarithm of the tail; None when it does not settle."""
+    sigma = math.sqrt(information - paths.information)
+    edge = float(paths.nodes.max()) + drift * sigma**2
+    reach = -float(special.ndtri(target))
     score = min(drift * information + reach * math.sqrt(information), edge + reach * sigma)
     close = min(1e-11 * math.sqrt(information), 1e-4 * sigma)  # the step after it is the square of it
     for _ in range(100):
@@ -238,12 +252,7 @@ def tail_bound(paths: Paths, information: float, target: float, *, drift: float 
         score += change
         if abs(change) <= close:
             return score
-    raise NotConvergedError(
-        "No bound was found for this look.",
-        found=f"{target:g} of probability to spend, {float(paths.mass.sum()):g} of the paths left",
-        expected="less to spend than is left",
-        next_step="Check the informations and bounds of the earlier looks.",
-    )
+    return None
 
 
 def _clipped(low: float, high: float, information: float, drift: float) -> tuple[float, float]:
