@@ -77,7 +77,7 @@ def other_methods(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]
         _short(pool(*numbers, tau2=tau2, interval=interval, level=level), name)
         for name, (tau2, interval) in names.items()
     ]
-    counted = [row for row in estimated.rows if row.left_out is None or "event" in row.left_out]
+    counted = [row for row in estimated.rows if row.status == "included"]  # zero cells count here
     if outcome.measure in MANTEL_HAENSZEL:
         others.append(_short(pool_mantel_haenszel(values_table(counted), outcome.measure), "Mantel-Haenszel"))
     if outcome.measure in (Measure.ODDS_RATIO, Measure.PETO_ODDS_RATIO):
