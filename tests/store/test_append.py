@@ -229,3 +229,28 @@ def test_proofs_hold_without_the_store(evidence, study, moment):
     steps = [bytes.fromhex(step) for step in evidence.consistency_proof(300, 600)]
     roots = bytes.fromhex(old.root), bytes.fromhex(new.root)
     assert merkle.verify_consistency(300, 600, *roots, steps)
+
+
+def test_what_follows_a_head_is_laid_down_with_what_the_head_covers(evidence, study, version, moment):
+    def notices(head):
+        told = {"event": "boundary crossed", "person": "P1", "text": f"{head.size} {head.root}"}
+        return [
+            version(1, entries=head.size, root=head.root),
+            NewEntry(EntryKind.NOTICE, "notice/1/S/crossing/P1", told, "2026-05-04"),
+        ]
+
+    laid = evidence.append([study("T1")], known_at=moment, then=notices)
+    assert [entry.seq for entry in laid] == [0, 1, 2]
+    assert laid[2].body["text"] == f"1 {evidence.head(1).root}"
+    assert check_links(evidence.chain_rows())[0] == 3
+
+
+def test_error_in_what_follows_leaves_nothing_behind(evidence, study, moment):
+    def fails(head):
+        raise ZeroDivisionError
+
+    with pytest.raises(ZeroDivisionError):
+        evidence.append([study("T1")], known_at=moment, then=fails)
+    assert evidence.head().size == 0
+    evidence.append([study("T2")], known_at=moment)
+    assert check_links(evidence.chain_rows())[0] == 1

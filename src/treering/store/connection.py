@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sqlite3
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -102,6 +103,32 @@ def _prepare_sqlite(connection: Any, _record: object) -> None:
 def _begin_sqlite(connection: Connection) -> None:
     writing = connection.get_execution_options().get(_WRITING, False)
     connection.exec_driver_sql("BEGIN IMMEDIATE" if writing else "BEGIN")
+
+
+def set_write_ahead(engine: Engine) -> None:
+    """Let readers of a SQLite file go on while it is written to; the file remembers it.
+
+    Parameters
+    ----------
+    engine : Engine
+        Of any database; PostgreSQL needs nothing.
+
+    Raises
+    ------
+    StoreError
+        When the file cannot be written.
+    """
+    if engine.dialect.name != "sqlite":
+        return
+    # The mode cannot be changed inside a transaction, which is where SQLAlchemy's connections always are.
+    with translated("write"):
+        raw = engine.raw_connection()
+    try:
+        raw.cursor().execute("PRAGMA journal_mode=WAL")
+    except sqlite3.Error as error:
+        raise explained(str(error), type(error).__name__, "write") from error
+    finally:
+        raw.close()
 
 
 @contextmanager

@@ -6,17 +6,19 @@ import json
 from collections.abc import Iterable, Iterator, Sequence
 from typing import Any
 
-from sqlalchemy import Connection, Engine
+from sqlalchemy import Connection, Engine, select
 
 from treering.errors import StoreError
 from treering.store.chain import ChainRow, Tip
 from treering.store.connection import reading
 from treering.store.entries import ROW_FIELDS, LedgerRow
 from treering.store.merkle import Node, frontier, leaf_hash, node_hash
-from treering.store.models import TABLES
+from treering.store.models import METADATA, TABLES
 from treering.store.plan import KEPT_LEVEL, Batch, Tail
+from treering.terms import EntryKind
 
 _CHUNK = 5000
+_TYPED_CHUNK = 100_000
 _COLUMNS = ", ".join(f'"{name}"' for name in ROW_FIELDS)
 _TIPS = {
     "sqlite": "SELECT seq, kind, key, true_at, canonical FROM entry WHERE seq IN "
@@ -110,6 +112,32 @@ def chain_rows(engine: Engine, since: int, until: int) -> Iterator[ChainRow]:
         with reading(engine) as connection:
             rows = fetch(connection, query, start, min(start + _CHUNK, until))
         yield from rows
+
+
+def typed_rows(engine: Engine, kind: EntryKind, since: int, until: int) -> Iterator[dict[str, Any]]:
+    """Yield the rows of a typed table.
+
+    Parameters
+    ----------
+    engine : Engine
+        Engine of the store.
+    kind : EntryKind
+        Kind of entry.
+    since, until : int
+        First sequence number, and the one after the last.
+
+    Yields
+    ------
+    dict
+        Column to value, in the order of the ledger.
+    """
+    table = METADATA.tables[str(TABLES[kind].__tablename__)]
+    for start in range(since, until, _TYPED_CHUNK):
+        stop = min(start + _TYPED_CHUNK, until)
+        query = select(table).where(table.c.entry >= start, table.c.entry < stop).order_by(table.c.entry)
+        with reading(engine) as connection:
+            rows = connection.execute(query).mappings().all()
+        yield from (dict(row) for row in rows)
 
 
 def rows_as_of(connection: Connection, size: int, known: str, true: str) -> list[LedgerRow]:

@@ -7,9 +7,12 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from sqlalchemy import Connection, inspect
+from sqlalchemy import Connection, Engine, insert, inspect
 
 from treering.errors import StoreError
+from treering.store.connection import place_of, writing
+from treering.store.entries import ENTRY_FORMAT
+from treering.store.models import METADATA
 
 HEAD_REVISION = "0001"
 """Newest revision in ``migrations/versions``."""
@@ -47,6 +50,33 @@ def revision_of(connection: Connection) -> str | None:
         found=", ".join(sorted(tables)[:5]),
         next_step="Point store in config/review.toml to the evidence store, or to an empty database.",
     )
+
+
+def lay_out(engine: Engine, review: str) -> None:
+    """Make all tables in one transaction: a store is there as a whole or not at all.
+
+    Parameters
+    ----------
+    engine : Engine
+        On an empty database.
+    review : str
+        Name of the review the store belongs to.
+
+    Raises
+    ------
+    StoreError
+        When the database is not empty or cannot be written to.
+    """
+    with writing(engine) as connection:
+        if revision_of(connection) is not None:
+            raise StoreError(
+                "There is a store already.",
+                file=place_of(engine.url),
+                next_step="Open it, or choose another place for a new one.",
+            )
+        migrate(connection)
+        values = {"id": 1, "review": review, "format": ENTRY_FORMAT}
+        connection.execute(insert(METADATA.tables["store"]), [values])
 
 
 def migrate(connection: Connection, *, to: str = HEAD_REVISION) -> None:

@@ -8,6 +8,8 @@ from __future__ import annotations
 
 from sqlalchemy import Connection
 
+from treering.store.models import METADATA
+
 REFUSAL = "append-only: rows of the evidence store are never changed or removed"
 
 
@@ -83,3 +85,42 @@ def _taken(table: str, primary: tuple[str, ...]) -> str:
         )
     match = " AND ".join(f"{column} = NEW.{column}" for column in primary)
     return f"EXISTS (SELECT 1 FROM {table} WHERE {match})"
+
+
+def expected_triggers(dialect: str) -> set[str]:
+    """Return the names of the triggers a sound store has.
+
+    Parameters
+    ----------
+    dialect : str
+        "sqlite" or "postgresql".
+
+    Returns
+    -------
+    set of str
+        Of every table of the models.
+    """
+    names = set()
+    for table in METADATA.tables.values():
+        primary = tuple(column.name for column in table.primary_key)
+        names |= {statement.split()[2] for statement in guard_statements(dialect, table.name, primary)}
+    return names
+
+
+def installed_triggers(connection: Connection) -> set[str]:
+    """Return the names of the triggers a store has and that fire.
+
+    Parameters
+    ----------
+    connection : Connection
+        To the store.
+
+    Returns
+    -------
+    set of str
+        Switched-off triggers of PostgreSQL are left out.
+    """
+    query = "SELECT name FROM sqlite_master WHERE type = 'trigger'"
+    if connection.dialect.name == "postgresql":
+        query = "SELECT tgname FROM pg_trigger WHERE NOT tgisinternal AND tgenabled IN ('O', 'A')"
+    return {str(row[0]) for row in connection.exec_driver_sql(query)}
