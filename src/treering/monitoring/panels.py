@@ -8,7 +8,7 @@ would number millions, so they double in width with the distance from every cut.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Callable
 from functools import cache
 
 import numpy as np
@@ -50,7 +50,7 @@ def _to_legendre() -> FloatArray:
 
 
 def panel_edges(
-    low: float, high: float, scale: float, cuts: Iterable[tuple[float, float]], spread: float
+    low: float, high: float, scale: float, cuts: Callable[[], list[tuple[float, float]]], spread: float
 ) -> FloatArray:
     """Return the ends of the panels over [low, high].
 
@@ -60,8 +60,8 @@ def panel_edges(
         Ends on the score scale.
     scale : float
         Standard deviation of the narrower of the two steps around the look.
-    cuts : iterable of (position, blur)
-        Where the density is steep, and on which scale.
+    cuts : callable
+        Gives where the density is steep and on which scale, as pairs; called only when needed.
     spread : float
         Standard deviation of the score, the widest scale there is.
 
@@ -71,8 +71,9 @@ def panel_edges(
     """
     count = max(1, math.ceil((high - low) / (PANEL_WIDTH * scale)))
     if count <= _EQUAL_PANELS:
-        return np.linspace(low, high, count + 1)
-    places = list(cuts)
+        equal: FloatArray = low + (high - low) / count * np.arange(count + 1.0)
+        return equal
+    places = cuts()
     edges = np.unique([low, high, *(place for place, _ in places if low < place < high)])
     while True:
         left, right = edges[:-1], edges[1:]
@@ -87,21 +88,20 @@ def panel_edges(
         edges = np.sort(np.concatenate([edges, (left[wide] + right[wide]) / 2.0]))
 
 
-def fill(edges: FloatArray) -> tuple[FloatArray, FloatArray]:
+def fill(left: FloatArray, width: FloatArray) -> tuple[FloatArray, FloatArray]:
     """Return the nodes and weights of all panels, panel by panel.
 
     Parameters
     ----------
-    edges : ndarray, shape (panels + 1,)
-        Ends of the panels.
+    left, width : ndarray, shape (p,)
+        The panels.
 
     Returns
     -------
-    (nodes, weights) : tuple of ndarray, shape (16 panels,)
+    (nodes, weights) : tuple of ndarray, shape (16 p,)
     """
-    width = np.diff(edges)
     nodes, weights = rule(NODES)
-    return (edges[:-1, None] + width[:, None] * nodes).ravel(), (width[:, None] * weights).ravel()
+    return (left[:, None] + width[:, None] * nodes).ravel(), (width[:, None] * weights).ravel()
 
 
 def window(

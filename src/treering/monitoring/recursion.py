@@ -41,6 +41,8 @@ class Paths:
         Probability carried by each node; sums to the chance of being still inside.
     left, width : ndarray, shape (p,)
         The panels.
+    widest : float
+        Width of the widest panel.
     cuts : tuple of (position, information)
         Where and when paths were cut off; positions are score less drift times information.
     """
@@ -50,6 +52,7 @@ class Paths:
     mass: FloatArray
     left: FloatArray
     width: FloatArray
+    widest: float
     cuts: tuple[tuple[float, float], ...]
 
 
@@ -60,7 +63,7 @@ def start() -> Paths:
     -------
     Paths
     """
-    return Paths(0.0, np.zeros(1), np.ones(1), np.zeros(0), np.zeros(0), ())
+    return Paths(0.0, np.zeros(1), np.ones(1), np.zeros(0), np.zeros(0), 0.0, ())
 
 
 def mirrored(paths: Paths) -> Paths:
@@ -75,9 +78,15 @@ def mirrored(paths: Paths) -> Paths:
     -------
     Paths
     """
-    left = -(paths.left + paths.width)[::-1]
-    cuts = tuple((-place, when) for place, when in paths.cuts)
-    return Paths(paths.information, -paths.nodes[::-1], paths.mass[::-1], left, paths.width[::-1], cuts)
+    return Paths(
+        paths.information,
+        -paths.nodes[::-1],
+        paths.mass[::-1],
+        -(paths.left + paths.width)[::-1],
+        paths.width[::-1],
+        paths.widest,
+        tuple((-place, when) for place, when in paths.cuts),
+    )
 
 
 def tail(paths: Paths, information: float, score: float, *, drift: float = 0.0) -> float:
@@ -100,8 +109,7 @@ def tail(paths: Paths, information: float, score: float, *, drift: float = 0.0) 
     """
     step = information - paths.information
     sigma, goal = math.sqrt(step), score - drift * step
-    narrow = _narrow(paths, sigma)
-    nodes, mass = (paths.nodes, paths.mass) if narrow.all() else (paths.nodes[narrow], paths.mass[narrow])
+    nodes, mass = _narrow(paths, sigma)
     total = float(mass @ special.ndtr((nodes - goal) / sigma))
     for left, width, held in _wide(paths, sigma):
         ends = np.clip([goal - _WINDOW * sigma, goal + _WINDOW * sigma, math.inf], left, left + width)
@@ -132,17 +140,14 @@ def density(paths: Paths, information: float, scores: FloatArray, *, drift: floa
     """
     step = information - paths.information
     sigma, goals = math.sqrt(step), scores - drift * step
-    narrow = _narrow(paths, sigma)
-    nodes, mass = (paths.nodes, paths.mass) if narrow.all() else (paths.nodes[narrow], paths.mass[narrow])
-    away = (goals[:, None] - nodes) / sigma
-    total: FloatArray = np.exp(-0.5 * away * away) @ mass
+    nodes, mass = _narrow(paths, sigma)
+    total: FloatArray = _bells((goals[:, None] - nodes) / sigma) @ mass
     for left, width, held in _wide(paths, sigma):
         near = (goals > left - _WINDOW * sigma) & (goals < left + width + _WINDOW * sigma)
         low = np.maximum(goals[near] - _WINDOW * sigma, left)
         high = np.minimum(goals[near] + _WINDOW * sigma, left + width)
         nodes, mass = window(left, width, held, low, high)
-        away = (goals[near, None] - nodes) / sigma
-        total[near] += np.sum(mass * np.exp(-0.5 * away * away), axis=1)
+        total[near] += np.sum(mass * _bells((goals[near, None] - nodes) / sigma), axis=1)
     return total / (sigma * _ROOT_2PI)
 
 
@@ -177,19 +182,20 @@ def advance(
     scale = min(math.sqrt(information - paths.information), after)
     ends = [_clipped(low, high, information, drift) for low, high in regions]
     ends = [(low, high) for low, high in ends if low < high]
-    blurred = [(place + drift * information, math.sqrt(information - when)) for place, when in paths.cuts]
-    steep = blurred + [(end, after) for pair in ends for end in pair]
+    if not ends:
+        return Paths(information, np.zeros(0), np.zeros(0), np.zeros(0), np.zeros(0), 0.0, paths.cuts)
+
+    def steep() -> list[tuple[float, float]]:
+        old = [(cut + drift * information, math.sqrt(information - when)) for cut, when in paths.cuts]
+        return old + [(end, after) for pair in ends for end in pair]
+
     panels = [panel_edges(low, high, scale, steep, math.sqrt(information)) for low, high in ends]
-    if not panels:
-        return Paths(information, np.zeros(0), np.zeros(0), np.zeros(0), np.zeros(0), paths.cuts)
-    filled = [fill(edges) for edges in panels]
-    nodes = np.concatenate([part[0] for part in filled])
-    weights = np.concatenate([part[1] for part in filled])
-    mass = weights * density(paths, information, nodes, drift=drift)
     left = np.concatenate([edges[:-1] for edges in panels])
-    width = np.concatenate([np.diff(edges) for edges in panels])
+    width = np.concatenate([edges[1:] - edges[:-1] for edges in panels])
+    nodes, weights = fill(left, width)
+    mass = weights * density(paths, information, nodes, drift=drift)
     cuts = (*paths.cuts, *((end - drift * information, information) for pair in ends for end in pair))
-    return Paths(information, nodes, mass, left, width, cuts)
+    return Paths(information, nodes, mass, left, width, float(width.max()), cuts)
 
 
 def tail_bound(paths: Paths, information: float, target: float, *, drift: float = 0.0) -> float:
@@ -263,15 +269,32 @@ def _clipped(low: float, high: float, information: float, drift: float) -> tuple
     return max(low, floor), min(high, ceiling)
 
 
-def _narrow(paths: Paths, sigma: float) -> np.ndarray:
-    """Mark the nodes of panels that resolve a step of this standard deviation as they are."""
-    if not paths.width.size:
-        return np.ones(paths.nodes.size, dtype=np.bool_)
-    return np.repeat(paths.width <= PANEL_WIDTH * sigma * (1.0 + 1e-9), NODES)
+def _bells(away: FloatArray) -> FloatArray:
+    """Turn distances in standard deviations into exp(-distance^2/2), in place to spare memory."""
+    np.square(away, out=away)
+    away *= -0.5
+    return np.exp(away, out=away)
+
+
+def _narrow(paths: Paths, sigma: float) -> tuple[FloatArray, FloatArray]:
+    """Nodes and mass of the panels that resolve a step of this standard deviation as they are."""
+    limit = _widest_resolved(sigma)
+    if paths.widest <= limit:
+        return paths.nodes, paths.mass
+    narrow = np.repeat(paths.width <= limit, NODES)
+    return paths.nodes[narrow], paths.mass[narrow]
 
 
 def _wide(paths: Paths, sigma: float) -> Iterator[tuple[float, float, FloatArray]]:
     """Yield the other panels, which are sampled anew within windows, with the mass of their nodes."""
-    for place in np.flatnonzero(paths.width > PANEL_WIDTH * sigma * (1.0 + 1e-9)):
+    limit = _widest_resolved(sigma)
+    if paths.widest <= limit:
+        return
+    for place in np.flatnonzero(paths.width > limit):
         held = paths.mass[place * NODES : (place + 1) * NODES]
         yield float(paths.left[place]), float(paths.width[place]), held
+
+
+def _widest_resolved(sigma: float) -> float:
+    """Width up to which a panel resolves a step of this standard deviation."""
+    return PANEL_WIDTH * sigma * (1.0 + 1e-9)
