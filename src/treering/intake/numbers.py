@@ -145,8 +145,17 @@ def _gives_no_effect(values: Numbers, outcome: Outcome) -> list[Finding]:
     try:
         effect_sizes(pd.DataFrame([dict(values)], index=["this trial"]), outcome.measure)
     except AnalysisError as error:
-        return [Finding(next(iter(values)), f"no effect can be computed: {error}")]
+        return [_as_finding(error, values)]
     return []
+
+
+def _as_finding(error: AnalysisError, values: Numbers) -> Finding:
+    """Turn what the analysis refuses ("field: reason.") into a finding about that field."""
+    named, _, reason = error.message.partition(": ")
+    field = next((name for name in named.split(", ") if name in values), next(iter(values)))
+    found = f" (found {error.found})" if error.found is not None else ""
+    wanted = f"; expected {error.expected}" if error.expected is not None else ""
+    return Finding(field, f"{(reason or named).rstrip('.')}{found}{wanted}.")
 
 
 def number_remarks(values: Numbers, outcome: Outcome, *, usual_sds: Sequence[float] = ()) -> list[Finding]:

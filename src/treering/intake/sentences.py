@@ -70,10 +70,18 @@ def record_faults(error: ValidationError, place: Place, shape: type[BaseModel]) 
     list of Fault
         One per fault, in the order of the shape's fields.
     """
+    faults = error.errors(include_url=False)
+    deeper = [fault["loc"] for fault in faults]
     return [
         Fault(place.file, place.where(_column(fault["loc"], place)), _sentence(fault, shape))
-        for fault in error.errors(include_url=False, include_context=True)
+        for fault in faults
+        # A list whose items are faulty is also called too short; the items' faults say it better.
+        if fault["type"] != "too_short" or not any(_within(fault["loc"], loc) for loc in deeper)
     ]
+
+
+def _within(outer: tuple[int | str, ...], inner: tuple[int | str, ...]) -> bool:
+    return len(inner) > len(outer) and inner[: len(outer)] == outer
 
 
 def _column(steps: tuple[int | str, ...], place: Place) -> str:

@@ -13,6 +13,9 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, Field
 LARGEST = 1e12
 """Largest magnitude of a number read from a report; beyond it a cell holds something else."""
 
+LONGEST = 20_000
+"""Most characters of one text."""
+
 _PLAIN = re.compile(r"[+-]?\d+(\.\d+)?([eE][+-]?\d{1,3})?")
 _REDUCED_DATE = re.compile(r"(\d{4})(?:-(\d{2})(?:-(\d{2}))?)?")
 _ABSENT_WORDS = frozenset(
@@ -88,6 +91,8 @@ def written_text(value: Any) -> Any:
         return value
     if any("\ud800" <= sign <= "\udfff" or sign == "\x00" for sign in value):
         raise ValueError("the text holds characters that can't be written as UTF-8")
+    if len(value) > LONGEST:
+        raise ValueError(f"the text is too long ({len(value)} characters, at most {LONGEST})")
     return value.strip() or None
 
 
@@ -148,10 +153,12 @@ def last_day(written: str) -> date:
 Identifier = Annotated[
     str, BeforeValidator(written_text), Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9._-]{0,63}$", max_length=64)
 ]
-Text = Annotated[str, BeforeValidator(written_text), Field(max_length=20_000)]
-OptionalText = Annotated[str | None, BeforeValidator(written_text), Field(max_length=20_000)]
+Text = Annotated[str, BeforeValidator(written_text)]
+OptionalText = Annotated[str | None, BeforeValidator(written_text)]
 Number = Annotated[float | int | None, BeforeValidator(plain_number)]
 Whole = Annotated[int | None, BeforeValidator(whole_number)]
+Positive = Annotated[Annotated[int, Field(ge=1)] | None, BeforeValidator(whole_number)]
+Year = Annotated[Annotated[int, Field(ge=1800, le=2200)] | None, BeforeValidator(whole_number)]
 Day = Annotated[date, BeforeValidator(iso_day)]
 OptionalDay = Annotated[date | None, BeforeValidator(iso_day)]
 WrittenDate = Annotated[str | None, BeforeValidator(reduced_date)]

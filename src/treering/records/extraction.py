@@ -10,10 +10,12 @@ from treering.records.base import (
     Identifier,
     Number,
     OptionalText,
+    Positive,
     Record,
     Text,
     Whole,
     WrittenDate,
+    Year,
     last_day,
     written_text,
 )
@@ -138,8 +140,8 @@ class StudyFacts(Record):
     title: OptionalText = None
     registration: OptionalText = None
     published: WrittenDate = None
-    year: Annotated[Whole, Field(ge=1800, le=2200)] = None
-    randomised: Annotated[Whole, Field(ge=1)] = None
+    year: Year = None
+    randomised: Positive = None
     design: Annotated[Design | None, BeforeValidator(written_text)] = None
     funding: OptionalText = None
     interests: OptionalText = None

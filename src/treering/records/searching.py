@@ -7,7 +7,7 @@ from typing import Annotated, Literal, Self
 
 from pydantic import Field, model_validator
 
-from treering.records.base import Day, Identifier, OptionalDay, OptionalText, Record, Text, Whole
+from treering.records.base import Day, Identifier, OptionalDay, OptionalText, Positive, Record, Text, Whole
 
 
 class SearchRun(Record):
@@ -72,7 +72,7 @@ class Ongoing(Record):
     record: Literal["ongoing trial"]
     trial: Identifier
     registration: OptionalText = None
-    planned: Annotated[Whole, Field(ge=1)] = None
+    planned: Positive = None
     expected_end: OptionalDay = None
     status: Literal["planned", "recruiting", "completed", "stopped", "unknown"]
     outcomes: tuple[Identifier, ...] = ()

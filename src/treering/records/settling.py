@@ -10,9 +10,9 @@ from treering.records.base import (
     Identifier,
     OptionalDay,
     OptionalText,
+    Positive,
     Record,
     Text,
-    Whole,
     WrittenDate,
     written_text,
 )
@@ -26,7 +26,7 @@ class SettledFacts(Record):
 
     registration: OptionalText = None
     published: WrittenDate = None
-    randomised: Annotated[Whole, Field(ge=1)] = None
+    randomised: Positive = None
     design: Annotated[Design | None, BeforeValidator(written_text)] = None
 
 
