@@ -7,7 +7,8 @@ import pandas as pd
 import pytest
 from scipy.special import expit
 
-from treering.pooling.one_stage import OneStageModel, pool_one_stage
+from treering.pooling.one_stage import pool_one_stage
+from treering.pooling.one_stage_models import OneStageModel
 
 
 @pytest.fixture(scope="module")

@@ -16,7 +16,8 @@ from scipy.special import expit
 
 from treering.errors import AnalysisError
 from treering.pooling.hypergeometric import log_pmf
-from treering.pooling.one_stage import OneStageEffect, OneStageModel, pool_one_stage
+from treering.pooling.one_stage import OneStageEffect, pool_one_stage
+from treering.pooling.one_stage_models import OneStageModel
 
 COLUMNS = ["intervention_events", "intervention_total", "comparator_events", "comparator_total"]
 PUBLISHED = Path(__file__).parents[1] / "published"

@@ -8,7 +8,8 @@ from treering.pooling.bayes import BayesianEffect, pool_bayesian
 from treering.pooling.credibility import SUBGROUP_QUESTIONS, SubgroupAnswer, SubgroupCredibility
 from treering.pooling.interaction import Interaction, interaction_test
 from treering.pooling.inverse_variance import pool, pool_many
-from treering.pooling.one_stage import OneStageEffect, OneStageModel, pool_one_stage
+from treering.pooling.one_stage import OneStageEffect, pool_one_stage
+from treering.pooling.one_stage_models import OneStageModel
 from treering.pooling.priors import EMPIRICAL_PRIORS, HalfCauchy, HalfNormal, LogNormal, LogStudent, tau_prior
 from treering.pooling.regression import MetaRegression, meta_regression
 from treering.pooling.result import PooledEffect

@@ -22,8 +22,6 @@ and 5); Kuss 2015, Stat Med 34:1097.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from enum import StrEnum
-from functools import partial
 
 import numpy as np
 import pandas as pd
@@ -31,22 +29,12 @@ from scipy.special import expit, gammaln
 from scipy.stats import norm
 
 from treering.errors import AnalysisError
-from treering.pooling import beta_binomial, binomial, hypergeometric
 from treering.pooling.binomial import Arms
 from treering.pooling.checks import check_level, choose
-from treering.pooling.likelihood_fit import Fit, Problem, best_point, fit_at, maximise, profile_interval
-from treering.pooling.quadrature import Array, Derivatives, marginal
+from treering.pooling.likelihood_fit import Fit, Problem, profile_interval
+from treering.pooling.one_stage_models import OneStageModel, fit_model, refuse_infinite
 from treering.pooling.tables import two_arm_counts
 from treering.terms import Measure
-
-
-class OneStageModel(StrEnum):
-    """One-stage model of binary counts."""
-
-    HYPERGEOMETRIC_NORMAL = "hypergeometric-normal"
-    BINOMIAL_NORMAL_FIXED = "binomial-normal-fixed-intercepts"
-    BINOMIAL_NORMAL_RANDOM = "binomial-normal-random-intercepts"
-    BETA_BINOMIAL = "beta-binomial"
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,75 +93,6 @@ class OneStageEffect:
     k_informative: int
     k_double_zero: int
     nodes: int | None
-
-
-def _crude(arms: Arms) -> float:
-    """Crude log odds ratio of the summed tables with one half added (a start value only)."""
-    a, c = arms.events_1.sum() + 0.5, arms.events_2.sum() + 0.5
-    b, d = (arms.total_1 - arms.events_1).sum() + 0.5, (arms.total_2 - arms.events_2).sum() + 0.5
-    return float(np.log(a * d / (b * c)))
-
-
-def _normal_problem(model: OneStageModel, arms: Arms, nodes: int) -> Problem:
-    """Likelihood in (mean, tau2) for the two models that have no random intercept."""
-    k, crude = len(arms.events_1), _crude(arms)
-    tables = hypergeometric.conditional_tables(arms.events_1, arms.total_1, arms.events_2, arms.total_2)
-    warm = {"intercepts": binomial.starting_intercepts(arms)}
-
-    def objective(x: Array, nodes: int = nodes) -> tuple[float, Array]:
-        if model is OneStageModel.HYPERGEOMETRIC_NORMAL:
-            result = marginal(tables.derivatives, x[:1], x[1:], k=k, nodes=nodes)
-        else:
-            result, warm["intercepts"] = binomial.profiled_marginal(
-                arms, float(x[0]), float(x[1]), warm["intercepts"], nodes=nodes
-            )
-        gradient = np.concatenate([result.gradient_mean.sum(axis=0), result.gradient_variance.sum(axis=0)])
-        return float(result.log.sum()), gradient
-
-    starts = tuple(np.array([crude, tau2]) for tau2 in (0.05, 1.0))
-    lower, upper = np.array([-30.0, 0.0]), np.array([30.0, 50.0])
-    return Problem(objective, starts, lower, upper, (1,), coarse=partial(objective, nodes=min(7, nodes)))
-
-
-def _random_problem(arms: Arms, nodes: int) -> Problem:
-    """Likelihood in (mean intercept, mean effect, intercept variance, tau2)."""
-    k, crude = len(arms.events_1), _crude(arms)
-
-    def both(theta: Array) -> Derivatives:
-        return binomial.intercept_and_effect(arms, theta)
-
-    def objective(x: Array, nodes: int = nodes) -> tuple[float, Array]:
-        result = marginal(both, x[:2], x[2:], k=k, nodes=nodes)
-        gradient = np.concatenate([result.gradient_mean.sum(axis=0), result.gradient_variance.sum(axis=0)])
-        return float(result.log.sum()), gradient
-
-    events, total = (arms.events_1 + arms.events_2).sum(), (arms.total_1 + arms.total_2).sum()
-    intercept = float(np.log((events + 0.5) / (total - events + 0.5)))
-    starts = tuple(np.array([intercept, crude, 0.5, tau2]) for tau2 in (0.05, 1.0))
-    lower, upper = np.array([-40.0, -30.0, 0.0, 0.0]), np.array([40.0, 30.0, 100.0, 50.0])
-    return Problem(objective, starts, lower, upper, (2, 3), coarse=partial(objective, nodes=min(5, nodes)))
-
-
-def _refuse_infinite(model: OneStageModel, arms: Arms) -> None:
-    """Raise when the likelihood is largest at an infinite effect."""
-    sums = {
-        "no event in the intervention arm of any trial": arms.events_1.sum() == 0,
-        "no event in the comparator arm of any trial": arms.events_2.sum() == 0,
-        "events in everyone in all intervention arms": np.all(arms.events_1 == arms.total_1),
-        "events in everyone in all comparator arms": np.all(arms.events_2 == arms.total_2),
-    }
-    if model in (OneStageModel.HYPERGEOMETRIC_NORMAL, OneStageModel.BINOMIAL_NORMAL_FIXED):
-        least = (arms.events_1 == 0) | (arms.events_2 == arms.total_2)
-        most = (arms.events_2 == 0) | (arms.events_1 == arms.total_1)
-        sums["in every trial the events lie as far as they can on the same side"] = bool(
-            np.all(least) or np.all(most)
-        )
-    reasons = [text for text, holds in sums.items() if holds]
-    if reasons:
-        raise AnalysisError(
-            f"The odds ratio has no finite maximum-likelihood estimate: {reasons[0]}.",
-            next_step="Report the counts; a risk difference can still be pooled.",
-        )
 
 
 def _constant(arms: Arms) -> float:
@@ -239,28 +158,16 @@ def pool_one_stage(
     chosen, wanted = _options(model, measure, interval, level)
     arms = two_arm_counts(table, whole=chosen is OneStageModel.HYPERGEOMETRIC_NORMAL)
     events, total = arms.events_1 + arms.events_2, arms.total_1 + arms.total_2
-    within_trial = chosen in (OneStageModel.HYPERGEOMETRIC_NORMAL, OneStageModel.BINOMIAL_NORMAL_FIXED)
-    informative = (events > 0) & (events < total) if within_trial else np.ones(len(events), dtype=bool)
-    used = arms.subset(informative)
+    informative = (
+        (events > 0) & (events < total) if chosen.within_trial else np.ones(events.shape, dtype=bool)
+    )
     if not informative.any():
         raise AnalysisError("No trial has both an event and a non-event: nothing to estimate.")
-    _refuse_infinite(chosen, used)
-    if chosen is OneStageModel.BETA_BINOMIAL:
-        problem, fit, correlation = _fit_beta_binomial(used)
-        nodes_used = None
-    else:
-        nodes_used = nodes or (11 if chosen is OneStageModel.BINOMIAL_NORMAL_RANDOM else 15)
-        random = chosen is OneStageModel.BINOMIAL_NORMAL_RANDOM
-        problem = _random_problem(used, nodes_used) if random else _normal_problem(chosen, used, nodes_used)
-        fit, correlation = maximise(problem), None
-    position = 0 if within_trial else 1
-    estimate, error = float(fit.x[position]), float(np.sqrt(fit.covariance[position, position]))
-    if chosen is OneStageModel.BETA_BINOMIAL:
-        estimate, error = _measured(fit, wanted)
-    half = float(norm.ppf(0.5 + level / 2)) * error
-    low, high = estimate - half, estimate + half
-    if interval == "profile-likelihood":
-        low, high = profile_interval(problem, fit, position, level)
+    used = arms.subset(informative)
+    refuse_infinite(chosen, used)
+    nodes = nodes or (11 if chosen is OneStageModel.BINOMIAL_NORMAL_RANDOM else 15)
+    problem, fit = fit_model(chosen, used, nodes)
+    estimate, error, low, high = _effect(chosen, wanted, problem, fit, interval, level)
     constant = 0.0 if chosen is OneStageModel.HYPERGEOMETRIC_NORMAL else _constant(arms)
     return OneStageEffect(
         model=chosen.value,
@@ -273,16 +180,40 @@ def pool_one_stage(
         level=level,
         z=estimate / error,
         p=float(2 * norm.sf(abs(estimate / error))),
-        tau2=None if chosen is OneStageModel.BETA_BINOMIAL else float(fit.x[-1]),
-        intercept=float(fit.x[0]) if chosen is OneStageModel.BINOMIAL_NORMAL_RANDOM else None,
-        intercept_variance=float(fit.x[2]) if chosen is OneStageModel.BINOMIAL_NORMAL_RANDOM else None,
-        correlation=correlation,
+        **_spread(chosen, fit),
         log_likelihood=fit.log_likelihood + constant,
         k=len(events),
         k_informative=int(informative.sum()),
         k_double_zero=int(np.sum(events == 0)),
-        nodes=nodes_used,
+        nodes=None if chosen is OneStageModel.BETA_BINOMIAL else nodes,
     )
+
+
+def _effect(
+    model: OneStageModel, measure: Measure, problem: Problem, fit: Fit, interval: str, level: float
+) -> tuple[float, float, float, float]:
+    """Estimate, standard error and interval on the analysis scale of the measure."""
+    position = 0 if model.within_trial else 1
+    estimate, error = float(fit.x[position]), float(np.sqrt(fit.covariance[position, position]))
+    if model is OneStageModel.BETA_BINOMIAL:
+        estimate, error = _measured(fit, measure)
+    if interval == "profile-likelihood":
+        return estimate, error, *profile_interval(problem, fit, position, level)
+    half = float(norm.ppf(0.5 + level / 2)) * error
+    return estimate, error, estimate - half, estimate + half
+
+
+def _spread(model: OneStageModel, fit: Fit) -> dict[str, float | None]:
+    """Variation over trials in the terms of the model."""
+    random, beta = model is OneStageModel.BINOMIAL_NORMAL_RANDOM, model is OneStageModel.BETA_BINOMIAL
+    # a beta-binomial fit of two parameters is the one without correlation
+    correlation = float(expit(-fit.x[2])) if len(fit.x) > 2 else 0.0
+    return {
+        "tau2": None if beta else float(fit.x[-1]),
+        "intercept": float(fit.x[0]) if random else None,
+        "intercept_variance": float(fit.x[2]) if random else None,
+        "correlation": correlation if beta else None,
+    }
 
 
 def _options(model: str, measure: str, interval: str, level: float) -> tuple[OneStageModel, Measure]:
@@ -299,15 +230,3 @@ def _options(model: str, measure: str, interval: str, level: float) -> tuple[One
         raise AnalysisError("The profile-likelihood interval is for the odds ratio only.", found=measure)
     check_level(level)
     return chosen, Measure(measure)
-
-
-def _fit_beta_binomial(arms: Arms) -> tuple[Problem, Fit, float]:
-    """Fit with a free correlation and with none; keep the simpler one when it is as likely."""
-    plain = beta_binomial.problem(arms, correlated=False)
-    plain_fit = maximise(plain)
-    varying = beta_binomial.problem(arms, correlated=True)
-    x, value = best_point(varying)
-    if value <= plain_fit.log_likelihood + 1e-7:
-        return plain, plain_fit, 0.0
-    fit = fit_at(varying, x, value)
-    return varying, fit, float(1 / (1 + np.exp(fit.x[2])))
