@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from treering.protocol import Outcome
-from treering.report.labels import field_words, spending_words, value_words
+from treering.report.labels import spending_words, value_words
 from treering.report.numbers import effect, number, percent, small
 from treering.report.view import ReportView
 
@@ -35,17 +35,55 @@ def monitoring_inputs(view: ReportView, outcome: Outcome | None, body: Body) -> 
         *_errors(plan, look, block),
         *_effect(outcome, body, plan),
         *_risk(body),
-        *_information(outcome, plan, look),
+        *_information(outcome, plan, look, (block.get("inputs") or {}).get("information_per_participant")),
         ("Spending function", spending_words(plan)),
         ("Futility", "non-binding bound by beta spending" if plan.get("futility") else "no futility bound"),
         ("Monitored Z", _test_words(plan, body)),
-        *((field_words(k)[:1].upper() + field_words(k)[1:], _input(v)) for k, v in (block.get("inputs") or {}).items()),
+        *_heterogeneity(block),
+        ("Amendments", value_words((block.get("inputs") or {}).get("amendments") or "none")),
         ("Data", "looks.csv and trials.csv beside this page"),
     ]
 
 
-def _input(value: Any) -> str:
-    return small(value) if isinstance(value, float) else value_words(value)
+def _heterogeneity(block: Body) -> list[tuple[str, str]]:
+    least = block.get("minimum_trials")
+    if least is None:
+        return []
+    return [("Fewest trials", f"{value_words(least)}: with fewer, the between-trial variance alone keeps the power out of reach")]
+
+
+def rests_on_pairs(body: Body) -> list[tuple[str, str]]:
+    """Return what a crossing rests on as pairs of name and text; empty without a crossing.
+
+    Parameters
+    ----------
+    body : mapping
+        Analysis body of a monitored outcome.
+
+    Returns
+    -------
+    list of (str, str)
+    """
+    block = body["monitoring"]
+    rests = block.get("rests_on")
+    if not rests:
+        return []
+    names = {row["trial"]: row["label"] for row in body["trials"]}
+    sets = "; ".join(" with ".join(names.get(t, t) for t in group) for group in rests["sets"])
+    lost, null = rests.get("tau2_lost"), rests.get("null_information")
+    people = (block.get("inputs") or {}).get("information_per_participant")
+    translated = f" (about {number(null / people, 0)} people)" if null is not None and people else ""
+    return [
+        ("Trials without which it is not crossed", sets or f"no set of up to {rests['searched']} trials"),
+        (
+            "Between-trial variance at which it is lost",
+            f"{'no value' if lost is None else small(lost)} (now {small(rests['tau2'])})",
+        ),
+        (
+            "Smallest further trial with no effect that undoes it",
+            "none" if null is None else f"information {number(null)}{translated}",
+        ),
+    ]
 
 
 def _errors(plan: Body, look: Body, block: Body) -> list[tuple[str, str]]:
@@ -84,15 +122,18 @@ def _risk(body: Body) -> list[tuple[str, str]]:
     return [("Comparator risk", f"{text}; observed in the trials {observed}")]
 
 
-def _information(outcome: Outcome | None, plan: Body, look: Body) -> list[tuple[str, str]]:
+def _information(
+    outcome: Outcome | None, plan: Body, look: Body, per_person: float | None
+) -> list[tuple[str, str]]:
     reason = outcome.monitoring.diversity_reason if outcome and outcome.monitoring else "no reason in the protocol"
     pairs = [("Allowance for heterogeneity, fixed", f"D² {percent(plan['diversity'])}: {reason}")]
     if not look:
         return pairs
     again = look.get("required_reestimated")
+    people = f" (about {number(look['required'] / per_person, 0)} people)" if per_person else ""
     pairs += [
         ("Information so far", f"{number(look['information'])} (1/variance of the common-effect estimate)"),
-        ("Required information", f"{number(look['required'])}; share reached {percent(look['fraction'], 1)}"),
+        ("Required information", f"{number(look['required'])}{people}; share reached {percent(look['fraction'], 1)}"),
         (
             "The same with D² estimated now",
             "not estimable"

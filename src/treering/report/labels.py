@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from treering.report.numbers import number
+from treering.report.numbers import MINUS, number
 
 _FIELDS = {
     "standard_error": "standard error",
@@ -15,6 +15,7 @@ _FIELDS = {
     "ci_low": "lower end",
     "ci_high": "upper end",
 }
+_ARM = {"sd": "SD", "time": "person-time"}
 _SPENDING = {
     "obrien-fleming": "O'Brien-Fleming-type function of Lan and DeMets",
     "pocock": "Pocock-type function of Lan and DeMets",
@@ -38,7 +39,7 @@ def value_words(value: Any) -> str:
     if isinstance(value, int):
         return number(value, 0)
     if isinstance(value, float):
-        return number(value, 0 if value.is_integer() else 4)
+        return number(value, 0) if value.is_integer() else f"{value:.6g}".replace("-", MINUS)
     if isinstance(value, Mapping):
         return "; ".join(f"{field_words(k)}: {value_words(v)}" for k, v in value.items()) or "none"
     if isinstance(value, list | tuple):
@@ -55,12 +56,32 @@ def spending_words(plan: Mapping[str, Any]) -> str:
     return f"{with_parameter}, {convention}"
 
 
-def raw_columns(measure: str, rows: list[Mapping[str, Any]]) -> list[str]:
-    """Return the value fields that any trial has, in the order the effects package reads them."""
-    order = [
-        f"{side}_{what}"
-        for side in ("intervention", "comparator")
-        for what in ("events", "mean", "sd", "time", "total")
-    ]
-    present = {name for row in rows for name, value in (row.get("values") or {}).items() if value is not None}
-    return [name for name in order if name in present] + sorted(present - set(order))
+def side_words(values: Mapping[str, Any], side: str) -> str:
+    """Return the numbers of one arm as one text: "18 of 96", "mean 3.2, SD 1.1, 60 people".
+
+    Parameters
+    ----------
+    values : mapping
+        Verified numbers of a trial.
+    side : str
+        "intervention" or "comparator".
+
+    Returns
+    -------
+    str
+        "not reported" when the trial reports no number of that arm.
+    """
+    own = {k.removeprefix(f"{side}_"): v for k, v in values.items() if k.startswith(f"{side}_") and v is not None}
+    if "events" in own and "total" in own:
+        parts = [f"{value_words(own.pop('events'))} of {value_words(own.pop('total'))}"]
+    else:
+        parts = []
+    people = [f"{value_words(own.pop('total'))} people"] if "total" in own else []
+    parts += [f"{_ARM.get(name, field_words(name))} {value_words(value)}" for name, value in own.items()]
+    return ", ".join([*parts, *people]) or "not reported"
+
+
+def other_words(values: Mapping[str, Any]) -> str:
+    """Return the numbers of a trial that belong to no arm, as one text; empty when there are none."""
+    rest = {k: v for k, v in values.items() if not k.startswith(("intervention_", "comparator_")) and v is not None}
+    return ", ".join(f"{field_words(name)} {value_words(value)}" for name, value in rest.items())

@@ -90,17 +90,26 @@ def number(value: float | None, digits: int = 2) -> str:
         return NOT_ESTIMABLE
     if math.isinf(value):
         return "unbounded"
-    text = f"{value:,.{digits}f}".replace(",", "\u202f")
+    # Four digits read well without a gap: 1000, but 12 000.
+    text = f"{value:,.{digits}f}".replace(",", "\u202f" if abs(value) >= 10_000 else "")
     if float(f"{value:.{digits}f}") == 0.0:
         text = text.removeprefix("-")
     return text.replace("-", MINUS)
+
+
+def plural(value: float, noun: str) -> str:
+    """Write "1 trial" or "3 trials"; "person" becomes "people"."""
+    several = "people" if noun == "person" else f"{noun}s"
+    return f"{number(value, 0)} {noun if value == 1 else several}"
 
 
 def small(value: float | None) -> str:
     """Write a number that may be very small with two significant digits at least."""
     if value is None:
         return NOT_ESTIMABLE
-    if value == 0 or abs(value) >= 0.01:
+    if value == 0:
+        return "0"
+    if abs(value) >= 0.01:
         return number(value, 3)
     if abs(value) < 1e-4:
         return "below 0.0001" if value > 0 else number(value, 5)
@@ -143,11 +152,20 @@ def effect(value: float | None, scale: str, measure: str = "") -> str:
     shown = natural(value, scale)
     if shown is None or math.isinf(shown):
         return number(shown)
-    if scale == "log":
-        if shown >= 100:
-            return number(shown, 0)
-        return number(shown, 2) if shown >= 0.1 else f"{shown:.2g}" if shown >= 1e-4 else "below 0.0001"
-    return number(shown, 3 if "risk-difference" in measure or "arcsine" in measure else 2)
+    if scale != "log":
+        return _apart(shown, 0.0, 3 if "risk-difference" in measure or "arcsine" in measure else 2)
+    if shown >= 100:
+        return number(shown, 0)
+    if shown >= 0.1:
+        return _apart(shown, 1.0, 2)
+    return f"{shown:.2g}" if shown >= 1e-4 else "below 0.0001"
+
+
+def _apart(value: float, no_effect: float, digits: int) -> str:
+    """Add decimals while rounding would hide on which side of no effect a value lies."""
+    while value != no_effect and round(value, digits) == no_effect and digits < 6:
+        digits += 1
+    return number(value, digits)
 
 
 def interval(low: float | None, high: float | None, scale: str, measure: str = "") -> str:

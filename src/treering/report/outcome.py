@@ -11,8 +11,8 @@ from markupsafe import Markup
 from treering.protocol import Outcome
 from treering.report import wording
 from treering.report.figures.forest import axis_note
-from treering.report.inputs import monitoring_inputs
-from treering.report.labels import field_words, raw_columns, value_words
+from treering.report.inputs import monitoring_inputs, rests_on_pairs
+from treering.report.labels import field_words, other_words, side_words, value_words
 from treering.report.marks import margin_marks
 from treering.report.numbers import effect, interval, number
 from treering.report.view import ReportView
@@ -46,13 +46,15 @@ def outcome_context(view: ReportView, name: str, figures: Mapping[str, str]) -> 
     changes = view.changes.get(name) or {}
     level = outcome.pooling.level if outcome else 0.95
     measure = wording.measure_words(body["measure"])
+    names = {row["trial"]: row["label"] for row in body["trials"]}
     return {
         "first": False,
         "anchor": f"o-{name}",
         "body": body,
         "measure": f"{measure[0].upper()}{measure[1:]}",
         "changes": {"causes": [], "split": [], "split_note": None, **changes},
-        "names": {row["trial"]: row["label"] for row in body["trials"]},
+        "small_measure": measure,
+        "names": names,
         **_estimate_words(body, view, level),
         **_change_words(body, before, changes),
         **_trial_words(view, body, changes),
@@ -69,7 +71,9 @@ def _estimate_words(body: Body, view: ReportView, level: float) -> dict[str, Any
         "has_estimate": pooled.get("estimate") is not None,
         "headline": wording.headline(body, level),
         "reading": wording.reading(body),
-        "absolute": wording.absolute_words(body, view.protocol.review.comparator),
+        "absolute": wording.absolute_words(
+            body, view.protocol.review.intervention, view.protocol.review.comparator
+        ),
         "prediction": wording.prediction_words(body),
         "explain": wording.explain_interval(level),
         "no_effect": wording.no_effect(body["scale"]),
@@ -117,8 +121,10 @@ def change_lines(changes: Body) -> list[str]:
     for item in changes.get("trials_removed", ()):
         lines.append(f"{item['label']}: left the main analysis: {item['left_out']}{_why(item)}")
     told = {"left_out", "status", "flags", *(("in_main",) if changes.get("trials_removed") else ())}
+    numbers = {i["trial"] for i in changes.get("trials_changed", ()) if i["field"].startswith("values.")}
     for item in changes.get("trials_changed", ()):
-        if item["field"] not in told:
+        follows = item["trial"] in numbers and item["field"] in ("estimate", "standard_error")
+        if item["field"] not in told and not follows:
             moved = f"{_shown(item['before'])} became {_shown(item['after'])}"
             lines.append(f"{item['label']}: {field_words(item['field'])} {moved}{_why(item)}")
     for item in changes.get("plan_changed", ()):
@@ -141,10 +147,15 @@ def _trial_words(view: ReportView, body: Body, changes: Body) -> dict[str, Any]:
     judged = Counter(row.get("risk_of_bias") or "not judged" for row in body["trials"] if row["in_main"])
     order = ("Low", "Some concerns", "High", "not judged")
     return {
-        "columns": raw_columns(body["measure"], list(body["trials"])),
+        "arms": {row["trial"]: arm_words(row.get("values") or {}) for row in body["trials"]},
         "marks": margin_marks(changes) if view.version.get("previous") else {},
         "bias_line": ", ".join(f"{judged[word]} {word}" for word in order if judged[word]) or "no trial",
     }
+
+
+def arm_words(values: Body) -> tuple[str, str, str]:
+    """Return what a trial reports of the intervention, of the comparator, and of both together."""
+    return side_words(values, "intervention"), side_words(values, "comparator"), other_words(values)
 
 
 def _figures(name: str, body: Body, before: Body | None, figures: Mapping[str, str]) -> dict[str, Any]:
@@ -167,15 +178,18 @@ def _monitoring_words(
 ) -> dict[str, Any]:
     block = body.get("monitoring")
     if not block:
-        return {"verdict_line": "not monitored", "inputs": [], "bound_line": ""}
+        return {"verdict_line": "not monitored"}
     look = block.get("look")
     verdict = look["verdict"] if look else "no look yet"
     last = (((before or {}).get("monitoring") or {}).get("look") or {}).get("verdict")
     line = verdict if last in (None, verdict) else f"{verdict} (last version: {last})"
     return {
         "verdict_line": line,
+        "verdict": f"{verdict[0].upper()}{verdict[1:]}",
+        "sign": "±" if block["plan"].get("sides", 2) == 2 else "",
         "inputs": monitoring_inputs(view, outcome, body),
         "bound_line": bound_words(look, block["plan"]),
+        "rests": rests_on_pairs(body),
     }
 
 

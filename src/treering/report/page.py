@@ -12,7 +12,7 @@ from markupsafe import Markup
 from treering.report import wording
 from treering.report.coverage import counts, coverage
 from treering.report.labels import field_words, value_words
-from treering.report.numbers import count, effect, interval, number, p_value, percent, small
+from treering.report.numbers import count, effect, interval, number, p_value, percent, plural, small
 from treering.report.outcome import outcome_context
 from treering.report.process import process_tables
 from treering.report.rings import rings
@@ -41,6 +41,7 @@ def environment() -> Environment:
         "number": number,
         "p": p_value,
         "percent": percent,
+        "plural": plural,
         "small": small,
         "value": value_words,
         "words": field_words,
@@ -80,7 +81,7 @@ def render_page(view: ReportView, figures: Mapping[str, str], files: list[str]) 
         **shared_context(view.protocol.review, view.number),
         "version": view.version,
         "store_head": view.store_head,
-        "status": view.status,
+        "status_line": wording.status_words(view.status),
         "syntheses": syntheses,
         "monitored": any(body.get("monitoring") for body in view.analyses.values()),
         "uncaused": _uncaused(view),
@@ -88,6 +89,7 @@ def render_page(view: ReportView, figures: Mapping[str, str], files: list[str]) 
         "certainty": view.listed("certainty"),
         "unrated": [title for name, title in titles.items() if name not in rated],
         "titles": titles,
+        "trial_names": {row["trial"]: row["label"] for body in view.analyses.values() for row in body["trials"]},
         "process_tables": process_tables(view),
         "coverage": rows,
         "coverage_counts": counts(rows),

@@ -8,7 +8,7 @@ from datetime import date
 from typing import Any
 
 from treering.report.labels import value_words
-from treering.report.numbers import count
+from treering.report.numbers import count, plural
 from treering.report.view import ReportView
 
 Body = Mapping[str, Any]
@@ -96,7 +96,7 @@ def _verification(view: ReportView) -> Table:
     differ = sum(len(v.get("differences") or ()) for v in done)
     reread = sum(bool(v.get("reread")) for v in done)
     rows = [(basis, bases[basis]) for basis in sorted(bases)]
-    after = "" if not done else f"{fields} fields compared, {differ} differed; {reread} results were read again."
+    after = "" if not done else f"{plural(fields, 'field')} compared, {differ} differed; {plural(reread, 'result')} read again."
     return _table(
         "How results were verified",
         ("Basis", "Results"),

@@ -16,6 +16,7 @@ from treering.report.page import environment, render_page, shared_context
 from treering.report.report_json import report_json
 from treering.report.tables import tables
 from treering.report.view import ReportView
+from treering.report.wording import status_words
 
 Body = Mapping[str, Any]
 
@@ -98,35 +99,22 @@ def figures(view: ReportView) -> dict[str, str]:
     return drawn
 
 
-def version_summary(version: Body, analyses: Mapping[str, Body], folder: str) -> dict[str, Any]:
-    """Return the line of one version for the index.
-
-    Parameters
-    ----------
-    version : mapping
-        Body of the version.
-    analyses : mapping
-        Its analysis bodies by synthesis id.
-    folder : str
-        Name of its folder under reports/.
-
-    Returns
-    -------
-    dict
-    """
+def _summary(row: Body) -> dict[str, Any]:
+    """Return what the index prints of one version."""
     outcomes = [
         {
             "title": body["title"],
             "estimate": short_estimate(body, body.get("pooled")),
             "verdict": ((body.get("monitoring") or {}).get("look") or {}).get("verdict"),
         }
-        for body in analyses.values()
+        for body in row["analyses"].values()
     ]
     return {
-        "version": version["version"],
-        "date": version["date"],
-        "causes": list(version.get("causes") or ()),
-        "folder": folder,
+        "version": row["version"],
+        "date": row["date"],
+        "causes": list(row.get("causes") or ()),
+        "folder": row["folder"],
+        "notices": row.get("notices"),
         "outcomes": outcomes,
     }
 
@@ -139,9 +127,10 @@ def render_index(protocol: Protocol, versions: Sequence[Body], status: str | Bod
     protocol : Protocol
         The plan in force.
     versions : sequence of mapping
-        One :func:`version_summary` each, in any order.
+        One each, in any order: the version body with ``folder`` (its name under reports/), ``analyses``
+        (bodies by synthesis id) and, where known, ``notices`` (how many were sent).
     status : str or mapping
-        Status line of this run.
+        Status line of this run, or the facts for it (see :func:`treering.report.wording.status_words`).
 
     Returns
     -------
@@ -150,7 +139,7 @@ def render_index(protocol: Protocol, versions: Sequence[Body], status: str | Bod
     """
     context = {
         **shared_context(protocol.review, len(versions)),
-        "versions": sorted(versions, key=lambda v: -int(v["version"])),
-        "status": {"text": status} if isinstance(status, str) else status,
+        "versions": [_summary(row) for row in sorted(versions, key=lambda row: -int(row["version"]))],
+        "status_line": status if isinstance(status, str) else status_words(status),
     }
     return environment().get_template("index.html").render(context).encode()

@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from treering.report.numbers import NOT_ESTIMABLE, effect, interval, natural, number
+from treering.report.numbers import NOT_ESTIMABLE, effect, interval, natural, number, plural
 from treering.terms import Better, Measure
 
 Body = Mapping[str, Any]
@@ -123,7 +123,7 @@ def headline(body: Body, level: float) -> str:
     value = effect(pooled["estimate"], scale, measure)
     ends = interval(pooled["ci_low"], pooled["ci_high"], scale, measure)
     name = measure_words(measure)
-    return f"{name[0].upper()}{name[1:]} {value}{unit} ({number(100 * level, 0)}% interval {ends}{unit})"
+    return f"{name[0].upper()}{name[1:]} {value}{unit} ({number(100 * level, 0)}% interval {ends})"
 
 
 def reading(body: Body) -> str:
@@ -183,15 +183,15 @@ def mid_words(body: Body) -> str:
     return f"{effect(body['mid'], scale, measure)}{unit} (the same size the other way: {other}{unit})"
 
 
-def absolute_words(body: Body, comparator: str) -> str | None:
+def absolute_words(body: Body, intervention: str, comparator: str) -> str | None:
     """Give the absolute effect per so many people, or None when the protocol names no comparator risk.
 
     Parameters
     ----------
     body : mapping
         Analysis body.
-    comparator : str
-        Name of the comparator in the protocol.
+    intervention, comparator : str
+        Their names in the protocol.
 
     Returns
     -------
@@ -200,12 +200,12 @@ def absolute_words(body: Body, comparator: str) -> str | None:
     absolute = body.get("absolute")
     if not absolute:
         return None
-    per = absolute["per"]
-    base = f"Of {number(per, 0)} people with {comparator}, {_people(per * absolute['comparator_risk'])} have it"
+    per = number(absolute["per"], 0)
+    base = f"With {comparator}, {_people(absolute['per'] * absolute['comparator_risk'])} of {per} people by the protocol"
     if absolute.get("difference") is None:
         return f"{base}; the absolute effect is {NOT_ESTIMABLE}."
-    ends = ", ".join(_fewer(absolute[end]) for end in ("low", "high"))
-    return f"{base}; with the intervention {_fewer(absolute['difference'])} per {number(per, 0)} (interval: {ends})."
+    ends = " to ".join(_fewer(absolute[end]) for end in ("low", "high"))
+    return f"{base}; with {intervention}, {_fewer(absolute['difference'])} per {per} (interval {ends})."
 
 
 def _people(value: float) -> str:
@@ -240,6 +240,39 @@ def movement_words(value: float | None, scale: str) -> str:
     if scale == "log":
         return f"\u00d7 {number(natural(value, scale), 3)}"
     return f"{'+' if value > 0 else ''}{number(value, 3)}"
+
+
+def status_words(status: Body) -> str:
+    """Say the status of the living review in one line.
+
+    Parameters
+    ----------
+    status : mapping
+        ``text`` as it is to stand, or the facts: date, searches (source to date), planned_sources,
+        waiting, ongoing, update_every_days.
+
+    Returns
+    -------
+    str
+    """
+    if status.get("text"):
+        return str(status["text"])
+    parts = [f"living, last run {status['date']}" if status.get("date") else "living"]
+    searches = status.get("searches") or {}
+    parts += [f"{source} searched to {day}" for source, day in sorted(searches.items())]
+    never = sorted(set(status.get("planned_sources") or {}) - set(searches))
+    if never:
+        parts.append(f"no search of {', '.join(never)} recorded")
+    elif not searches:
+        parts.append("no search recorded")
+    if status.get("waiting") is not None:
+        waits = "waits" if status["waiting"] == 1 else "wait"
+        parts.append(f"{plural(status['waiting'], 'result')} {waits} for verification")
+    if status.get("ongoing") is not None:
+        parts.append(f"{plural(status['ongoing'], 'ongoing trial')} listed")
+    if status.get("update_every_days"):
+        parts.append(f"an update is due every {status['update_every_days']} days")
+    return "; ".join(parts)
 
 
 def prediction_words(body: Body) -> str:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from treering.report.figures import style
-from treering.report.numbers import effect, interval, percent
+from treering.report.numbers import effect, interval, percent, plural
 from treering.report.wording import directions, measure_words, no_effect
 from treering.terms import Better
 
@@ -74,7 +74,7 @@ def describe(body: Body, rows: Sequence[Body]) -> str:
     pooled = body.get("pooled") or {}
     ends = interval(pooled.get("ci_low"), pooled.get("ci_high"), body["scale"], body["measure"])
     return (
-        f"{len(rows)} trials with their {measure_words(body['measure'])} and interval. Pooled: "
+        f"{plural(len(rows), 'trial')} with their {measure_words(body['measure'])} and interval. Pooled: "
         f"{effect(pooled.get('estimate'), body['scale'], body['measure'])} ({ends}). All numbers stand in the table "
         "below the figure."
     )
@@ -82,7 +82,7 @@ def describe(body: Body, rows: Sequence[Body]) -> str:
 
 def _frame(body: Body, rows: Sequence[Body], ghost: Body | None) -> Frame:
     """Cover every point and the pooled intervals; a wider trial interval ends in an arrow."""
-    values = [0.0, body["mid"]]
+    values = [0.0, body["mid"], -body["mid"]]
     values += [row["estimate"] for row in rows]
     for pooled in (body.get("pooled"), ghost):
         values += [pooled[k] for k in ("ci_low", "ci_high") if pooled and pooled.get(k) is not None]
@@ -104,7 +104,7 @@ def _heads(axes: Axes, body: Body) -> None:
     unit = f", {body['unit']}" if body.get("unit") else ""
     for x, text, side in (
         (0.068, "Trial", "left"),
-        (RIGHT + 0.015, f"{name[0].upper()}{name[1:]} (interval{unit})", "left"),
+        (RIGHT + 0.015, f"{name[0].upper()}{name[1:]}{unit}", "left"),
         (WEIGHT, "Weight", "right"),
         (BIAS, "Risk of bias", "left"),
     ):
@@ -188,7 +188,7 @@ def _pooled(axes: Axes, y: float, body: Body, ghost: Body | None, frame: Frame) 
         _text(axes, 0.068, y, "Pooled: not estimable", ha="left")
         return
     _diamond(axes, y, pooled, ghosted=False)
-    _text(axes, 0.068, y, f"Pooled, {body['k']} trials", ha="left", fontweight="bold")
+    _text(axes, 0.068, y, f"Pooled, {plural(body['k'], 'trial')}", ha="left", fontweight="bold")
     values = f"{effect(pooled['estimate'], frame.scale, frame.measure)} ({_ends(pooled, frame)})"
     _text(axes, RIGHT + 0.015, y, values, ha="left", fontweight="bold")
     if pooled.get("prediction_low") is not None:

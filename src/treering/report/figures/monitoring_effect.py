@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 Body = Mapping[str, Any]
-HEIGHT = 3.9
+HEIGHT = 4.2
 
 
 def effect_figure(body: Body, intervention: str, name: str) -> str:
@@ -37,7 +37,7 @@ def effect_figure(body: Body, intervention: str, name: str) -> str:
     looks = [look for look in body["monitoring"]["looks"] if look.get("estimate") is not None]
     with style.settings():
         figure = style.new_figure(HEIGHT)
-        axes = figure.add_axes((0.075, 0.19, 0.905, 0.66))
+        axes = figure.add_axes((0.075, 0.21, 0.905, 0.63))
         low, high = _range(body, looks)
         axes.set_ylim(low, high)
         axes.set_xlim(0.4, len(looks) + 0.6)
@@ -70,7 +70,7 @@ def _range(body: Body, looks: Sequence[Body]) -> tuple[float, float]:
     outer = [look[k] for look in looks for k in ("adjusted_low", "adjusted_high") if look.get(k) is not None]
     low = max(min([*inner, *outer]), min(inner) - 0.45 * span)
     high = min(max([*inner, *outer]), max(inner) + 0.45 * span)
-    return low - 0.13 * span, high + 0.13 * span  # room for the words at both ends
+    return low - 0.05 * span, high + 0.05 * span
 
 
 def _scale(
@@ -89,12 +89,8 @@ def _scale(
     good = body["better"] == Better.LOWER
     name = measure_words(body["measure"])
     unit = f" ({body['unit']})" if body.get("unit") else ""
-    axes.text(0.0, 1.035, f"{name[0].upper()}{name[1:]}{unit}", transform=axes.transAxes, color=style.MUTED, ha="left")
-    for y, text, va in (
-        (0.985, f"\u2191 {above}, {'worse' if good else 'better'}", "top"),
-        (0.015, f"\u2193 {below}, {'better' if good else 'worse'}", "bottom"),
-    ):
-        axes.text(0.008, y, text, transform=axes.transAxes, va=va, ha="left", fontsize=8.5, color=style.MUTED)
+    ends = f"\u2191 {above}, {'worse' if good else 'better'}", f"\u2193 {below}, {'better' if good else 'worse'}"
+    style.end_words(axes, f"{name[0].upper()}{name[1:]}{unit}", *ends, below=-0.24)
 
 
 def _look(axes: Axes, x: float, look: Body, low: float, high: float) -> None:
@@ -156,7 +152,7 @@ def _key(axes: Axes) -> None:
     axes.legend(
         handles=handles,
         loc="lower right",
-        bbox_to_anchor=(1.0, 1.0),
+        bbox_to_anchor=(1.0, 1.07),
         ncols=len(handles),
         frameon=False,
         fontsize=8,

@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 Body = Mapping[str, Any]
-HEIGHT = 4.1
+HEIGHT = 4.3
 TALLEST = 6.0
 
 
@@ -38,7 +38,7 @@ def z_figure(body: Body, name: str) -> str:
     hindsight = [step for step in monitoring.get("hindsight") or () if step.get("z") is not None]
     with style.settings():
         figure = style.new_figure(HEIGHT)
-        axes = figure.add_axes((0.055, 0.135, 0.925, 0.72))
+        axes = figure.add_axes((0.055, 0.14, 0.925, 0.69))
         right = max([1.0, *(s["fraction"] for s in [*looks, *hindsight])]) * 1.06
         tall = _tall(looks, hindsight)
         axes.set_xlim(0.0, right)
@@ -80,12 +80,8 @@ def _scale(axes: Axes, body: Body, right: float, tall: float) -> None:
     axes.axvline(1.0, color=style.MUTED, lw=0.9, ls=(0, (5, 3)), zorder=1)
     axes.text(1.0, -tall * 0.97, "required information ", ha="right", va="bottom", fontsize=8.5, color=style.MUTED)
     axes.set_xlabel("share of the required information", fontsize=8.5)
-    axes.text(0.0, 1.035, "Z", transform=axes.transAxes, color=style.MUTED)
-    up_good = body["better"] == Better.HIGHER
-    for y, va, good in ((0.985, "top", up_good), (0.015, "bottom", not up_good)):
-        word = "towards benefit" if good else "towards harm"
-        arrow = "\u2191" if va == "top" else "\u2193"
-        axes.text(0.008, y, f"{arrow} {word}", transform=axes.transAxes, va=va, fontsize=8.5, color=style.MUTED)
+    up, down = ("benefit", "harm") if body["better"] == Better.HIGHER else ("harm", "benefit")
+    style.end_words(axes, "Z", f"\u2191 towards {up}", f"\u2193 towards {down}", below=-0.13)
 
 
 def _hindsight(axes: Axes, steps: Sequence[Body], tall: float) -> None:
@@ -136,7 +132,7 @@ def _path(axes: Axes, looks: Sequence[Body], tall: float) -> None:
         axes.annotate(
             str(look["number"]),
             (look["fraction"], look["z"]),
-            xytext=(0, -14 if above else 8),
+            xytext=(0, 8 if above else -15),
             textcoords="offset points",
             ha="center",
             fontsize=8,
@@ -157,7 +153,7 @@ def _key(axes: Axes) -> None:
     axes.legend(
         handles=handles,
         loc="lower right",
-        bbox_to_anchor=(1.0, 1.0),
+        bbox_to_anchor=(1.0, 1.06),
         ncols=len(handles),
         frameon=False,
         fontsize=8,

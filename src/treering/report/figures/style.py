@@ -170,6 +170,13 @@ def bare(axes: Axes, *keep: str) -> None:
         spine.set_visible(side in keep)
 
 
+def end_words(axes: Axes, name: str, up: str, down: str, *, below: float) -> None:
+    """Name an upright axis and both its directions outside the drawing, where nothing can cover them."""
+    axes.text(0.0, 1.1, name, transform=axes.transAxes, color=MUTED, va="bottom")
+    axes.text(0.0, 1.02, up, transform=axes.transAxes, color=MUTED, va="bottom", fontsize=8.5)
+    axes.text(0.0, below, down, transform=axes.transAxes, color=MUTED, va="top", fontsize=8.5)
+
+
 def at_most(text: str, length: int) -> str:
     """Cut a long name at a word, with an ellipsis."""
     if len(text) <= length:
