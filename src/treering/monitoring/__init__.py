@@ -14,8 +14,10 @@ from treering.monitoring.boundaries import (
     next_boundary,
     nominal_p,
 )
+from treering.monitoring.calibrate import Calibration, calibrate
 from treering.monitoring.crossing import Crossing, crossing_probabilities
 from treering.monitoring.dependence import RestsOn, rests_on
+from treering.monitoring.design import SimulationDesign
 from treering.monitoring.finding import LedgerState
 from treering.monitoring.futility import FutilityBoundaries, futility_boundaries, next_futility_bound
 from treering.monitoring.hindsight import HindsightCurve, hindsight
@@ -44,6 +46,8 @@ from treering.monitoring.participants import (
     required_participants,
 )
 from treering.monitoring.plan import MonitoringPlan
+from treering.monitoring.simulate import simulate
+from treering.monitoring.simulation_result import SimulatedRule, SimulationResult
 from treering.monitoring.spending import PER_TAIL_CONVENTION, alpha_spent, beta_spent
 from treering.monitoring.table import BoundaryTable, DetectableEffect, boundary_table
 
@@ -51,6 +55,7 @@ __all__ = [
     "PER_TAIL_CONVENTION",
     "Boundaries",
     "BoundaryTable",
+    "Calibration",
     "Crossing",
     "DetectableEffect",
     "FutilityBoundaries",
@@ -62,12 +67,16 @@ __all__ = [
     "Opinion",
     "OpinionStrip",
     "RestsOn",
+    "SimulatedRule",
+    "SimulationDesign",
+    "SimulationResult",
     "StagewiseEstimate",
     "alpha_spent",
     "beta_spent",
     "boundaries",
     "boundaries_for_alpha",
     "boundary_table",
+    "calibrate",
     "conditional_power",
     "crossing_probabilities",
     "detection_constant",
@@ -94,6 +103,7 @@ __all__ = [
     "required_participants",
     "rests_on",
     "second_opinions",
+    "simulate",
     "stagewise_p",
     "trend_drift",
 ]

@@ -51,8 +51,8 @@ class RestsOn:
         value does it.
     null_information : float or None
         Information of the smallest further trial with no effect at all that would undo the crossing;
-        None for futility, and when none up to 100 times the required information does. For readers, divide it by the
-        information of one participant.
+        None for futility, and when none up to 100 times the required information does. For readers,
+        divide it by the information of one participant.
     """
 
     verdict: Verdict
