@@ -10,7 +10,6 @@ from treering.intake.scene import Scene
 from treering.intake.values import Checked, Dropped, Fault, Located, Parsed, Remark
 from treering.intake.view import StateView
 from treering.protocol import Protocol
-from treering.terms import EntryKind
 
 
 def check(parsed: Parsed, protocol: Protocol, view: StateView, *, known_date: str | None = None) -> Checked:
@@ -78,14 +77,14 @@ def _settle_links(
 
 def _copies(parsed: Parsed, view: StateView) -> dict[str, str | None]:
     """Find files whose content the store or an earlier file of the drop holds; name that file, if any."""
-    stored = {str(entry.body["sha256"]) for entry in view.live(EntryKind.RECEIPT)}
     faulty = {fault.file for fault in parsed.faults}
     first: dict[str, str] = {}
     found: dict[str, str | None] = {}
     for file in parsed.dropped:
         if file.shown in faulty:
             continue
-        if file.sha256 in stored:
+        # A file that was given back has no such receipt: dropped again, it is read again.
+        if view.get(f"receipt/{file.sha256}") is not None:
             found[file.shown] = None
         elif file.sha256 in first:
             found[file.shown] = first[file.sha256]

@@ -1,0 +1,30 @@
+"""From events of a version to people told of them, each once, with what was said kept in the store."""
+
+from treering.notify.build import build_notices, is_recused
+from treering.notify.channels import (
+    AppriseService,
+    Channel,
+    Email,
+    FileOutbox,
+    Message,
+    Webhook,
+)
+from treering.notify.deliver import Delivered, Sent, deliver, deliver_pending, pending
+from treering.notify.event import Event
+
+__all__ = [
+    "AppriseService",
+    "Channel",
+    "Delivered",
+    "Email",
+    "Event",
+    "FileOutbox",
+    "Message",
+    "Sent",
+    "Webhook",
+    "build_notices",
+    "deliver",
+    "deliver_pending",
+    "is_recused",
+    "pending",
+]

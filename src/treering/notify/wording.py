@@ -1,0 +1,149 @@
+"""The words of a notice: what happened, the effect in natural numbers, what it rests on. Pure."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Mapping
+from typing import Any
+
+from treering.notify.event import Body, Event
+from treering.terms import EventClass
+
+MINUS = "\u2212"
+ASK = (
+    "This notice asks you to meet and look at the evidence. It is not a recommendation, and it does not say "
+    "what to do for patients."
+)
+_HAPPENED = {
+    EventClass.CROSSING: "At this version the monitoring says: {verdict}.",
+    EventClass.CROSSING_LOST: (
+        "A crossing that you were told of no longer stands: {verdict}. This notice weighs as much as the one "
+        "before it."
+    ),
+    EventClass.INTEGRITY: "A notice about a trial of this outcome was published: {notices}.",
+    EventClass.CERTAINTY_STALE: "The certainty rating of this outcome was made on older numbers.",
+    EventClass.DEFECT: "A defect in the program touched this outcome; the report says which versions.",
+}
+
+
+def happened(event: Event) -> str:
+    """Say in a sentence or two what happened, with the causes of what changed."""
+    told = _HAPPENED[event.event].format(verdict=_verdict(event.body), notices=_notices(event))
+    causes = [str(cause) for cause in event.changes.get("causes", ())]
+    if causes:
+        told += f" What changed since the version before: {', '.join(causes)}."
+    left = _left(event)
+    if left:
+        told += f" No longer in the main analysis: {'; '.join(left)}."
+    return told
+
+
+def _verdict(body: Body) -> str:
+    look = (body.get("monitoring") or {}).get("look") or {}
+    return str(look.get("verdict") or "no look was made")
+
+
+def _rows(body: Body | None) -> dict[str, Mapping[str, Any]]:
+    return {str(row["trial"]): row for row in (body or {}).get("trials", ())}
+
+
+def _left(event: Event) -> list[str]:
+    """Name the trials that were in the main analysis before and are not now, with the reason."""
+    before = _rows(event.previous)
+    return [
+        f"{row.get('label') or trial} ({row.get('left_out') or 'no reason stored'})"
+        for trial, row in _rows(event.body).items()
+        if not row.get("in_main") and before.get(trial, {}).get("in_main")
+    ]
+
+
+def _notices(event: Event) -> str:
+    """Name the flags that trials have now and had not before."""
+    before = _rows(event.previous)
+    fresh = [
+        f"{row.get('label') or trial}: {flag}"
+        for trial, row in _rows(event.body).items()
+        for flag in row.get("flags") or ()
+        if flag not in (before.get(trial, {}).get("flags") or ())
+    ]
+    return "; ".join(fresh) or "see the report"
+
+
+def effect(body: Body) -> Iterator[str]:
+    """Yield the pooled effect and what it means per 1000 people, in natural numbers."""
+    pooled = body.get("pooled") or {}
+    if pooled.get("estimate") is None:
+        yield "No effect can be estimated in the main analysis now."
+        return
+    scale, unit = str(body["scale"]), f" {body['unit']}" if body.get("unit") else ""
+    point, low, high = (_natural(pooled[name], scale) for name in ("estimate", "ci_low", "ci_high"))
+    name = str(body["measure"]).replace("-", " ")
+    trials = "1 trial" if pooled["k"] == 1 else f"{pooled['k']} trials"
+    people = f" with {body['participants']} participants" if body.get("participants") else ""
+    yield (
+        f"{name[:1].upper()}{name[1:]} {_number(point)}{unit} ({_level(body)}interval {_number(low)} to "
+        f"{_number(high)}{unit}), from {trials}{people}."
+    )
+    if pooled["ci_low"] <= 0 <= pooled["ci_high"]:
+        yield "The interval is compatible with no effect."
+    absolute = body.get("absolute")
+    if absolute:
+        yield _absolute(absolute)
+
+
+def _natural(value: float, scale: str) -> float:
+    """Take an effect from the analysis scale to the natural one."""
+    if scale != "log":
+        return value
+    return math.exp(value) if value < 700 else math.inf
+
+
+def _number(value: float) -> str:
+    if math.isinf(value):
+        return "beyond any number"
+    digits = 2 if abs(value) < 100 else 0
+    text = f"{abs(value):.{digits}f}"
+    return f"{MINUS}{text}" if value < 0 and float(text) != 0 else text
+
+
+def _level(body: Body) -> str:
+    level = ((body.get("monitoring") or {}).get("plan") or {}).get("level")
+    return f"{100 * level:g}% " if level else ""
+
+
+def _absolute(absolute: Mapping[str, Any]) -> str:
+    """Say the effect as more or fewer people among, for example, 1000."""
+    per = int(absolute["per"])
+    base = f"{per * absolute['comparator_risk']:.1f}".removesuffix(".0")
+    told = _more(absolute["difference"])
+    ends = [_more(absolute[name]) for name in ("low", "high")]
+    return f"Per {per} people: {told} ({ends[0]} to {ends[1]}), where {base} would have it without."
+
+
+def _more(value: float) -> str:
+    digits = 0 if abs(value) >= 10 else 1
+    size = f"{abs(value):.{digits}f}"
+    return f"{size} {'fewer' if value < 0 else 'more'}" if float(size) else "none fewer or more"
+
+
+def dependence(body: Body) -> str | None:
+    """Say what a crossing rests on; None when nothing was found or asked."""
+    rests = (body.get("monitoring") or {}).get("rests_on")
+    if not rests:
+        return None
+    told = str(rests.get("text") or "").strip()
+    if rests.get("tau2") is not None:
+        told += f" It holds while the between-trial variance stays below {rests['tau2']:.3g}."
+    if rests.get("null_participants"):
+        told += f" One new trial of {rests['null_participants']} people without any effect would undo it."
+    return told.strip() or None
+
+
+def certainty(rated: Body | None, version: int) -> str:
+    """Say how certain people judged the evidence to be, and on which version."""
+    if rated is None:
+        return "Nobody has rated the certainty of this outcome yet."
+    told = f"Rated {rated['rating']} on version {rated['version']}"
+    if int(rated["version"]) == version:
+        return f"{told}, this one."
+    return f"{told}; this is version {version}, so the rating was made on older numbers."
