@@ -144,6 +144,12 @@ def test_a_look_with_nothing_to_spend_has_an_infinite_bound_and_changes_no_other
     assert found.z[[0, 2]] == pytest.approx(boundaries_for_alpha([0.3, 1.0], [0.01, 0.05]).z, abs=1e-10)
 
 
+def test_looks_too_early_to_spend_anything_have_no_bound():
+    found = boundaries([1e-6, 2e-6])
+    assert np.all(np.isinf(found.z))
+    assert crossing_probabilities(found.fractions, found.z, lower=-found.z).total == 0.0
+
+
 PLANS = {
     "spending": st.sampled_from(list(Spending)),
     "sides": st.sampled_from([1, 2]),

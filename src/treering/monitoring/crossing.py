@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from itertools import zip_longest
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -77,7 +78,7 @@ def crossing_probabilities(
     out = Crossing(np.zeros(t.size), np.zeros(t.size), np.zeros(t.size))
     active = [k for k in range(t.size) if high[k] < np.inf or low[k] > -np.inf or half[k] > 0.0]
     paths = start()
-    for k, following in zip(active, [*active[1:], None], strict=True):
+    for k, following in zip_longest(active, active[1:]):
         root = math.sqrt(t[k])
         out.upper[k] = tail(paths, t[k], high[k] * root, drift=drift)
         out.lower[k] = tail(mirrored(paths), t[k], -low[k] * root, drift=-drift)
