@@ -135,7 +135,7 @@ def shared_postgres(cluster: Cluster) -> str:
 def place(request: pytest.FixtureRequest, tmp_path: Path) -> str:
     """Where no store is yet: on each of the two databases in turn."""
     if request.param == "sqlite":
-        return str(tmp_path / "store" / "evidence.db")
+        return str(tmp_path / "new" / "evidence.db")
     return str(request.getfixturevalue("postgres_url"))
 
 

@@ -55,7 +55,7 @@ def test_store_is_never_made_over_another(place):
 def test_absent_store_is_named(place, tmp_path):
     with pytest.raises(StoreError, match=r"There is no evidence store here.*treering start"):
         store.open_store(place)
-    assert not (tmp_path / "store").exists()
+    assert not (tmp_path / "new").exists()
 
 
 def test_other_database_is_left_alone(tmp_path):

@@ -123,12 +123,10 @@ def set_write_ahead(engine: Engine) -> None:
     # The mode cannot be changed inside a transaction, which is where SQLAlchemy's connections always are.
     with translated("write"):
         raw = engine.raw_connection()
-    try:
-        raw.cursor().execute("PRAGMA journal_mode=WAL")
-    except sqlite3.Error as error:
-        raise explained(str(error), type(error).__name__, "write") from error
-    finally:
-        raw.close()
+        try:
+            raw.cursor().execute("PRAGMA journal_mode=WAL")
+        finally:
+            raw.close()
 
 
 @contextmanager
@@ -206,7 +204,7 @@ def translated(action: str) -> Iterator[None]:
     """
     try:
         yield
-    except SQLAlchemyError as error:
+    except (SQLAlchemyError, sqlite3.Error) as error:  # opening and fetching give the driver's own errors
         cause = error.orig if isinstance(error, DBAPIError) else error
         raise explained(str(cause), type(cause).__name__, action) from error
 

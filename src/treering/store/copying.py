@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import sqlite3
 from collections.abc import Iterable, Iterator
+from contextlib import closing
 from itertools import groupby, islice
 from pathlib import Path
 
@@ -37,18 +38,16 @@ def backup(engine: Engine, path: Path) -> None:
         When there is a file already or the place cannot be written to.
     """
     partial = prepare(path)
-    try:
-        with translated("read"):
-            source = engine.raw_connection()
-        target = sqlite3.connect(partial)
+    with translated("copy"):
+        source = engine.raw_connection()
         try:
-            source.driver_connection.backup(target)  # type: ignore[union-attr]
+            with closing(sqlite3.connect(partial)) as target:
+                source.driver_connection.backup(target)  # type: ignore[union-attr]
+        except sqlite3.Error:
+            partial.unlink(missing_ok=True)
+            raise
         finally:
-            target.close()
             source.close()
-    except sqlite3.Error as error:
-        partial.unlink(missing_ok=True)
-        raise explained(str(error), type(error).__name__, "copy") from error
     finish(partial, path)
 
 

@@ -117,13 +117,17 @@ def plan(entries: Iterable[NewEntry], *, known_at: str, tail: Tail, tips: Mutabl
     return batch
 
 
-def provisional(entries: Iterable[NewEntry], *, size: int, tips: MutableMapping[str, Tip]) -> list[LedgerRow]:
+def provisional(
+    entries: Iterable[NewEntry], *, known_at: str, size: int, tips: MutableMapping[str, Tip]
+) -> list[LedgerRow]:
     """Turn entries into rows as they would lie in the ledger, without hashes, for a look ahead.
 
     Parameters
     ----------
     entries : iterable of NewEntry
         In the order in which they would be laid down.
+    known_at : str
+        When they would become known.
     size : int
         Number of entries before them.
     tips : mutable mapping of key to Tip
@@ -132,7 +136,7 @@ def provisional(entries: Iterable[NewEntry], *, size: int, tips: MutableMapping[
     Returns
     -------
     list of LedgerRow
-        Without the entries that repeat the last one on their key; hash empty, time of knowing empty.
+        Without the entries that repeat the last one on their key; hash empty.
 
     Raises
     ------
@@ -148,7 +152,7 @@ def provisional(entries: Iterable[NewEntry], *, size: int, tips: MutableMapping[
             continue
         chain.check_replacement(entry, tip)
         seq, kind = size + len(rows), str(entry.kind)
-        canonical = entry_bytes(entry, body, seq=seq, known_at="", previous="")
+        canonical = entry_bytes(entry, body, seq=seq, known_at=known_at, previous="")
         cause = None if entry.cause is None else str(entry.cause)
         rows.append(
             (
@@ -156,7 +160,7 @@ def provisional(entries: Iterable[NewEntry], *, size: int, tips: MutableMapping[
                 kind,
                 entry.key,
                 entry.true_at,
-                "",
+                known_at,
                 str(entry.by),
                 cause,
                 entry.reason,

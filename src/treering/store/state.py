@@ -132,13 +132,15 @@ class State:
         """
         yield from map(self._entry, self._rows.values())
 
-    def after(self, entries: Iterable[NewEntry]) -> State:
+    def after(self, entries: Iterable[NewEntry], *, known_at: str) -> State:
         """Return the state that appending `entries` would leave; nothing is written.
 
         Parameters
         ----------
         entries : iterable of NewEntry
             In order; one that repeats the last entry on its key adds nothing.
+        known_at : str
+            When they would become known, ISO date-time.
 
         Returns
         -------
@@ -151,7 +153,8 @@ class State:
             When an entry breaks a rule of the ledger.
         """
         tips = {key: Tip(row[0], row[1], row[3], row[10]) for key, row in self._tips.items()}
-        added = provisional(entries, size=max(self._rows, default=-1) + 1, tips=tips)
+        size = max(self._rows, default=-1) + 1
+        added = provisional(entries, known_at=known_at, size=size, tips=tips)
         return State([*self._rows.values(), *added]) if added else self
 
     def without(self, dropped: Callable[[StoredEntry], bool]) -> State:
