@@ -1,7 +1,7 @@
 """An invented review in three versions, with numbers from the real effect, pooling and monitoring functions.
 
-Every trial, person and date here is invented. Version 1 is the base, version 2 brings two trials and a crossing,
-version 3 a correction and a retraction after which the crossing is no longer supported.
+Every trial, person and date here is invented. Version 1 is the base, version 2 brings two trials and a
+crossing, version 3 a correction and a retraction after which the crossing is no longer supported.
 """
 
 from __future__ import annotations
@@ -51,10 +51,19 @@ VALUES: dict[str, dict[str, Sequence[float]]] = {
         "elm": (2.9, 2.0, 110, 3.8, 2.1, 111),
     },
     MINUTES: {"alder": (6.8, 3.9, 120, 8.1, 4.4, 118)},
-    BURNS: {"brook": (1, 96, 2, 98), "alder": (0, 120, 0, 118), "dune": (1, 150, 1, 149), "fern": (3, 480, 2, 478)},
+    BURNS: {
+        "brook": (1, 96, 2, 98),
+        "alder": (0, 120, 0, 118),
+        "dune": (1, 150, 1, 149),
+        "fern": (3, 480, 2, 478),
+    },
 }
 DATES = {1: "2030-09-10", 2: "2031-03-10", 3: "2031-05-10"}
-KNOWN = {1: ("brook", "alder", "cedar", "dune"), 2: tuple(t[0] for t in TRIALS), 3: tuple(t[0] for t in TRIALS)}
+KNOWN = {
+    1: ("brook", "alder", "cedar", "dune"),
+    2: tuple(t[0] for t in TRIALS),
+    3: tuple(t[0] for t in TRIALS),
+}
 RETRACTED = "report retracted on 2031-05-02"
 
 
@@ -91,7 +100,9 @@ def analysis(outcome: Outcome, version: int, looks: list[Look]) -> dict[str, Any
     if version == 3 and outcome.id == MAIN:
         values = values | {"cedar": (9, 60, 14, 61)}
     table = pd.DataFrame(
-        list(values.values()), index=list(values), columns=list(COUNTS if len(values["alder" if "alder" in values else "brook"]) == 4 else MEANS)
+        list(values.values()),
+        index=list(values),
+        columns=list(COUNTS if len(values["alder" if "alder" in values else "brook"]) == 4 else MEANS),
     )
     effects = effect_sizes(table, outcome.measure)
     reasons = {row.trial: row.reason for row in effects.attrs.get("left_out", ())}
@@ -105,7 +116,8 @@ def analysis(outcome: Outcome, version: int, looks: list[Look]) -> dict[str, Any
     common = pool(y, v, model="common", interval="wald")
     weights = dict(zip(main, planned.weights, strict=True))
     rows = [
-        _row(facts[t], dict(table.loc[t].items()), effects.loc[t], weights.get(t), reasons.get(t)) for t in ids
+        _row(facts[t], dict(table.loc[t].items()), effects.loc[t], weights.get(t), reasons.get(t))
+        for t in ids
     ]
     ratio = outcome.is_ratio
     return {
@@ -130,9 +142,9 @@ def analysis(outcome: Outcome, version: int, looks: list[Look]) -> dict[str, Any
         "others": [{"name": "common effect", "k": common.k, **_ends(common), "tau2": 0.0, "note": ""}],
         "leave_one_out": [],
         "absolute": _absolute(outcome, planned),
-        "sensitivity": [{"name": "with retracted trials", "k": len(ids), **_ends(planned), "tau2": 0.0, "note": ""}],
-        "subgroups": [{"name": "setting", "planned": True, "levels": [], "without_level": 0, "q": None, "q_df": None,
-                       "p": None, "why": "fewer than two levels with trials"}],
+        "sensitivity": [{"name": "low risk of bias only", "k": 2, **_ends(common), "tau2": 0.0, "note": ""}],
+        "subgroups": [{"name": "setting", "planned": True, "levels": [], "without_level": 0, "q": None,
+                       "q_df": None, "p": None, "why": "fewer than two levels with trials"}],
         "small_study": {"done": False, "why": f"{len(main)} trials; the test is read with ten or more only"},
         "bayes": None,
         "monitoring": _monitoring(outcome, version, looks, main, y, v, facts),
@@ -141,7 +153,11 @@ def analysis(outcome: Outcome, version: int, looks: list[Look]) -> dict[str, Any
 
 
 def _row(
-    facts: tuple[str, str, str, str | None], values: dict[Any, Any], effect: Any, weight: Any, reason: str | None
+    facts: tuple[str, str, str, str | None],
+    values: dict[Any, Any],
+    effect: Any,
+    weight: Any,
+    reason: str | None,
 ) -> dict[str, Any]:
     trial, label, published, bias = facts
     y = float(effect["estimate"])
@@ -194,8 +210,14 @@ def _monitoring(
     if plan is None:
         return None
     if not (looks and list(looks[-1].trials) == main):
-        looks.append(next_look(plan, looks, date=DATES[version], version=version, trials=main, estimates=y, variances=v))
-    curve = hindsight(plan, dates=[facts[t][2] for t in main], trials=main, estimates=y, variances=v).to_dict()
+        looks.append(
+            next_look(
+                plan, looks, date=DATES[version], version=version, trials=main, estimates=y, variances=v
+            )
+        )
+    curve = hindsight(
+        plan, dates=[facts[t][2] for t in main], trials=main, estimates=y, variances=v
+    ).to_dict()
     strip = second_opinions(plan, looks, y, v)
     rests = rests_on(plan, looks, main, y, v).to_dict() if looks[-1].verdict in CROSSED else None
     return {
@@ -228,7 +250,9 @@ def repool(synthesis: str, rows: Sequence[Any]) -> float | None:
     if not rows:
         return None
     method = "modified-knapp-hartung" if len(rows) > 1 else "wald"
-    return pool([r["estimate"] for r in rows], [r["standard_error"] ** 2 for r in rows], interval=method).estimate
+    return pool(
+        [r["estimate"] for r in rows], [r["standard_error"] ** 2 for r in rows], interval=method
+    ).estimate
 
 
 def _entries(version: int) -> list[StoredEntry]:
@@ -240,9 +264,13 @@ def _entries(version: int) -> list[StoredEntry]:
                         {"trial": "fern", "notice": "retraction", "reason": "retracted by the journal"}, 61),
         ]  # fmt: skip
     before = KNOWN.get(version - 1, ())
-    fresh = [(t, o) for o, values in VALUES.items() for t in values if t in KNOWN[version] and t not in before]
+    fresh = [
+        (t, o) for o, values in VALUES.items() for t in values if t in KNOWN[version] and t not in before
+    ]
     return [
-        StoredEntry("result", f"result/{t}/{o}", {"trial": t, "outcome": o}, 30 * version + i, cause="new trial")
+        StoredEntry(
+            "result", f"result/{t}/{o}", {"trial": t, "outcome": o}, 30 * version + i, cause="new trial"
+        )
         for i, (t, o) in enumerate(fresh)
     ]
 
@@ -284,8 +312,8 @@ def make_view(protocol: Protocol, version: int) -> ReportView:
         certainty=[{"outcome": MAIN, "rating": "low", "reasons": {"imprecision": "wide interval"},
                     "raters": ["TR", "SL"], "version": 1, "date": "2030-09-20",
                     "numbers": {"k": 4, "ci_low": -0.5, "ci_high": 0.05}}],
-        ongoing=[{"trial": "heath", "registration": "INVENTED-7", "planned": 400, "expected_end": "2031-12-01",
-                  "status": "recruiting", "outcomes": [MAIN]}],
+        ongoing=[{"trial": "heath", "registration": "INVENTED-7", "planned": 400, "outcomes": [MAIN],
+                  "expected_end": "2031-12-01", "status": "recruiting"}],
         studies=[{"trial": "brook", "title": "Brook 2029", "registration": "INVENTED-1", "randomised": 194,
                   "design": "parallel", "year": 2029, "funding": "none", "interests": "none"}],
         reports=[{"report": "brook-article", "trial": "brook", "form": "article",

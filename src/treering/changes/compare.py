@@ -92,9 +92,7 @@ def _one(
     find: Finder,
     repool: Callable[[str, Sequence[Row]], float | None],
 ) -> dict[str, Any]:
-    found = differences(
-        before["trials"] if before else (), after["trials"] if after else (), name, find
-    )
+    found = differences(before["trials"] if before else (), after["trials"] if after else (), name, find)
     plan = _plan_changes(before, after, find.fallback)
     split, note = _split(name, before, after, found, find, repool)
     judged = [e for e in find.entries if e.kind == EntryKind.CERTAINTY and e.body.get("outcome") == name]
@@ -109,7 +107,9 @@ def _one(
         "split_note": note,
         "order_effect": max((abs(p["movement"] - p["movement_reversed"]) for p in split), default=None),
     }
-    present = {d.explanation.cause for d in found} | {Cause(p["cause"]) for p in [*split, *plan] if p["cause"]}
+    present = {d.explanation.cause for d in found} | {
+        Cause(p["cause"]) for p in [*split, *plan] if p["cause"]
+    }
     present |= {cause_of(e) for e in judged}
     result["causes"] = [str(cause) for cause in Cause if cause in present]
     result["uncaused"] = _uncaused(result, found)
@@ -125,7 +125,9 @@ def _listed(before: Body | None, after: Body | None, found: Sequence[Difference]
         head = {"trial": d.trial, "label": row.get("label")}
         tail = {"cause": d.explanation.cause and str(d.explanation.cause), "reason": d.explanation.reason}
         if d.group == "added":
-            lists["trials_added"].append({**head, "in_main": row["in_main"], "left_out": row.get("left_out"), **tail})
+            lists["trials_added"].append(
+                {**head, "in_main": row["in_main"], "left_out": row.get("left_out"), **tail}
+            )
         elif d.group == "removed" or (d.group == "membership" and not row["in_main"]):
             left = "no longer among the trials" if d.group == "removed" else row.get("left_out")
             lists["trials_removed"].append({**head, "left_out": left, **tail})
@@ -162,7 +164,10 @@ def _split(
 ) -> tuple[list[dict[str, Any]], str | None]:
     """Return the split, or the reason why there is none."""
     if before is None or after is None:
-        return [], "There is no earlier estimate to move from." if before is None else "The synthesis was ended."
+        return (
+            [],
+            "There is no earlier estimate to move from." if before is None else "The synthesis was ended.",
+        )
     if _pooled(before) is None or _pooled(after) is None:
         return [], "One of the two versions has no pooled estimate."
     if before["measure"] != after["measure"]:
@@ -205,6 +210,11 @@ def _uncaused(result: Mapping[str, Any], found: Sequence[Difference]) -> list[di
     ]
     for what in ("estimate", "verdict"):
         pair = result[what]
-        if pair["before"] is not None and pair["before"] != pair["after"] and not result["causes"] and not listed:
+        if (
+            pair["before"] is not None
+            and pair["before"] != pair["after"]
+            and not result["causes"]
+            and not listed
+        ):
             listed.append({"what": what, "detail": f"{pair['before']} became {pair['after']}"})
     return listed

@@ -24,7 +24,15 @@ Row = Mapping[str, Any]
 #: left out: they follow from these.
 GROUPS: dict[str, tuple[tuple[str, ...], tuple[EntryKind, ...]]] = {
     "data": (
-        ("values", "estimate", "standard_error", "intervention_total", "comparator_total", "basis", "imputed"),
+        (
+            "values",
+            "estimate",
+            "standard_error",
+            "intervention_total",
+            "comparator_total",
+            "basis",
+            "imputed",
+        ),
         DATA_KINDS,
     ),
     "membership": (("in_main", "left_out", "status"), MEMBERSHIP_KINDS),
@@ -62,7 +70,9 @@ class Finder:
         return found if found.cause is not None else self.fallback
 
 
-def differences(before: Sequence[Row], after: Sequence[Row], synthesis: str, find: Finder) -> list[Difference]:
+def differences(
+    before: Sequence[Row], after: Sequence[Row], synthesis: str, find: Finder
+) -> list[Difference]:
     """Return every difference between two lists of trial rows.
 
     Parameters
@@ -101,7 +111,9 @@ def _row_differences(old: Row, new: Row, synthesis: str, find: Finder) -> list[D
         changed = _changed_fields(old, new, names)
         if changed:
             patch = {name: new.get(name) for name in names}
-            found.append(Difference(new["trial"], group, find(new["trial"], synthesis, kinds), patch, changed))
+            found.append(
+                Difference(new["trial"], group, find(new["trial"], synthesis, kinds), patch, changed)
+            )
     return found
 
 

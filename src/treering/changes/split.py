@@ -53,7 +53,9 @@ def split_movement(
     reverse = _walk(before, after, found, repool, method, tuple(reversed(ORDER)))
     parts = []
     for cause in ORDER:
-        entries = sorted({seq for d in found if d.explanation.cause is cause for seq in d.explanation.entries})
+        entries = sorted(
+            {seq for d in found if d.explanation.cause is cause for seq in d.explanation.entries}
+        )
         moved = cause in method or any(d.explanation.cause is cause for d in found)
         if moved:
             parts.append(

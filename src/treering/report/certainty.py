@@ -1,9 +1,9 @@
 """Whether a certainty judgement still stands on the numbers it was made on.
 
-The tool never rates; it only says that a rating is older than the numbers (JOB.md W11). A rating is stale when
-the interval now lies differently against no effect or the smallest difference that matters, when a monitored
-outcome gained or lost its required information, when the set of trials or the heterogeneity changed, or when
-the half-yearly re-reading is overdue.
+The tool never rates; it only says that a rating is older than the numbers. A rating is stale when the
+interval now lies differently against no effect or the smallest difference that matters, when a monitored
+outcome gained or lost its required information, when the set of trials or the heterogeneity changed, or
+when the half-yearly re-reading is overdue.
 """
 
 from __future__ import annotations
@@ -107,7 +107,7 @@ def _evidence_reasons(numbers: Body, body: Body) -> list[str]:
     if was is not None and now is not None and abs(was - now) > I2_TOLERANCE:
         reasons.append("the heterogeneity changed")
     fraction = ((body.get("monitoring") or {}).get("look") or {}).get("fraction")
-    if numbers.get("fraction") is not None and fraction is not None:
-        if (numbers["fraction"] >= 1) != (fraction >= 1):
-            reasons.append(f"the required information was {'reached' if fraction >= 1 else 'lost'}")
+    rated = numbers.get("fraction")
+    if rated is not None and fraction is not None and (rated >= 1) != (fraction >= 1):
+        reasons.append(f"the required information was {'reached' if fraction >= 1 else 'lost'}")
     return reasons

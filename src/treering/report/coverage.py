@@ -38,7 +38,9 @@ def coverage(view: ReportView) -> list[dict[str, Any]]:
     for standard, items in ((PRISMA, PRISMA_ITEMS), (MONITORING, MONITORING_ITEMS)):
         for item in items:
             state, why, place = rules[item.item](view)
-            rows.append({"standard": standard, **item._asdict(), "state": str(state), "why": why, "place": place})
+            rows.append(
+                {"standard": standard, **item._asdict(), "state": str(state), "why": why, "place": place}
+            )
     return rows
 
 

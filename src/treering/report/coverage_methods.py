@@ -43,7 +43,11 @@ def _title(view: ReportView) -> Found:
 
 
 def _abstract(view: ReportView) -> Found:
-    return PARTLY, "the facts stand in the summary; nobody has written limitations and interpretation", "changed"
+    return (
+        PARTLY,
+        "the facts stand in the summary; nobody has written limitations and interpretation",
+        "changed",
+    )
 
 
 def _rationale(view: ReportView) -> Found:
@@ -93,7 +97,9 @@ def _days(view: ReportView, day: str) -> int:
 
 def _strategies(view: ReportView) -> Found:
     runs = view.listed("searches")
-    return share(sum(bool(r.get("strategy")) for r in runs), len(runs), "search runs with their text", "searches")
+    return share(
+        sum(bool(r.get("strategy")) for r in runs), len(runs), "search runs with their text", "searches"
+    )
 
 
 def _selection(view: ReportView) -> Found:
@@ -113,12 +119,18 @@ def _outcomes(view: ReportView) -> Found:
     with_window = sum(bool(outcome.window) for outcome in outcomes)
     if with_window == len(outcomes):
         return FILLED, "definitions with windows", "outcomes"
-    return PARTLY, f"definitions; {len(outcomes) - with_window} of {len(outcomes)} name no time window", "outcomes"
+    return (
+        PARTLY,
+        f"definitions; {len(outcomes) - with_window} of {len(outcomes)} name no time window",
+        "outcomes",
+    )
 
 
 def _variables(view: ReportView) -> Found:
     studies = view.listed("studies")
-    return share(sum(bool(s.get("funding")) for s in studies), len(studies), "trials with their funding", "trials")
+    return share(
+        sum(bool(s.get("funding")) for s in studies), len(studies), "trials with their funding", "trials"
+    )
 
 
 def _bias_methods(view: ReportView) -> Found:
@@ -137,7 +149,11 @@ def _assignment(view: ReportView) -> Found:
 
 def _preparation(view: ReportView) -> Found:
     imputed = sum(row.get("imputed", False) for body in view.analyses.values() for row in body["trials"])
-    return PARTLY, f"{imputed} results with imputed numbers, marked; conversions are not listed here", "trials"
+    return (
+        PARTLY,
+        f"{imputed} results with imputed numbers, marked; conversions are not listed here",
+        "trials",
+    )
 
 
 def _display(view: ReportView) -> Found:
@@ -145,7 +161,11 @@ def _display(view: ReportView) -> Found:
 
 
 def _synthesis(view: ReportView) -> Found:
-    return PARTLY, "model, estimator, interval and looks; the protocol gives no reason for the model", "outcomes"
+    return (
+        PARTLY,
+        "model, estimator, interval and looks; the protocol gives no reason for the model",
+        "outcomes",
+    )
 
 
 def _subgroups(view: ReportView) -> Found:
@@ -201,7 +221,11 @@ def _interests(view: ReportView) -> Found:
 
 
 def _availability(view: ReportView) -> Found:
-    return FILLED, "store head, protocol digest, code version, tables and the command that checks them", "audit"
+    return (
+        FILLED,
+        "store head, protocol digest, code version, tables and the command that checks them",
+        "audit",
+    )
 
 
 METHOD_RULES = {

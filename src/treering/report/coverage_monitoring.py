@@ -39,7 +39,11 @@ def _reasons(view: ReportView) -> Found:
         return NOT_APPLICABLE, "no outcome is monitored", ""
     other = [o.id for o, _ in found if o.monitoring and o.monitoring.effect != o.minimally_important]
     if other:
-        return PARTLY, f"the effect to detect is not the smallest difference that matters: {', '.join(other)}", "outcomes"
+        return (
+            PARTLY,
+            f"the effect to detect is not the smallest difference that matters: {', '.join(other)}",
+            "outcomes",
+        )
     return FILLED, "value and reason, equal to the smallest difference that matters", "outcomes"
 
 
@@ -57,7 +61,9 @@ MONITORING_RULES = {
     "M1": _rule(lambda pair: True, "monitored outcomes with alpha, sides and power"),
     "M2": _reasons,
     "M3": _rule(_risk_is_printed, "monitored outcomes with a stated comparator risk, or none needed"),
-    "M4": _rule(lambda p: _look(p).get("required_reestimated") is not None, "outcomes with both required sizes"),
+    "M4": _rule(
+        lambda p: _look(p).get("required_reestimated") is not None, "outcomes with both required sizes"
+    ),
     "M5": _rule(lambda p: bool(p[1]["monitoring"].get("looks")), "outcomes with their table of looks"),
     "M6": _rule(lambda p: _look(p).get("alpha_spent") is not None, "outcomes with function, spent and left"),
     "M7": _rule(lambda p: bool((p[1].get("pooled") or {}).get("method")), "outcomes with model and data"),

@@ -26,7 +26,9 @@ def _near_misses(view: ReportView) -> Found:
         return MISSING, "no screening decision in the store", ""
     if not excluded:
         return NOT_APPLICABLE, "no report was excluded", ""
-    return share(sum(bool(d.get("reason")) for d in excluded), len(excluded), "exclusions with a reason", "flow")
+    return share(
+        sum(bool(d.get("reason")) for d in excluded), len(excluded), "exclusions with a reason", "flow"
+    )
 
 
 def _characteristics(view: ReportView) -> Found:
@@ -60,12 +62,16 @@ def _explored(view: ReportView) -> Found:
     blocks = [block for body in view.analyses.values() for block in body.get("subgroups") or ()]
     if not blocks:
         return NOT_APPLICABLE, "no subgroup was planned", ""
-    return share(sum(bool(b.get("levels")) for b in blocks), len(blocks), "planned subgroup comparisons", "outcomes")
+    return share(
+        sum(bool(b.get("levels")) for b in blocks), len(blocks), "planned subgroup comparisons", "outcomes"
+    )
 
 
 def _robustness(view: ReportView) -> Found:
     done = sum(bool(b.get("sensitivity") or b.get("leave_one_out")) for b in view.analyses.values())
-    return share(done, len(view.analyses), "outcomes with variants", "outcomes", none="no variant differs yet")
+    return share(
+        done, len(view.analyses), "outcomes with variants", "outcomes", none="no variant differs yet"
+    )
 
 
 def _reporting_bias(view: ReportView) -> Found:
@@ -96,7 +102,11 @@ def _interpretation(view: ReportView) -> Found:
 
 
 def _evidence_limits(view: ReportView) -> Found:
-    return PARTLY, "heterogeneity, risk of bias and warnings are printed; nobody has written the text", "outcomes"
+    return (
+        PARTLY,
+        "heterogeneity, risk of bias and warnings are printed; nobody has written the text",
+        "outcomes",
+    )
 
 
 def _process_limits(view: ReportView) -> Found:

@@ -14,7 +14,7 @@ Body = Mapping[str, Any]
 
 
 def monitoring_inputs(view: ReportView, outcome: Outcome | None, body: Body) -> list[tuple[str, str]]:
-    """Return the inputs as pairs of name and text, in the order of STANDARDS: errors, effect, risk, information.
+    """Return the inputs as pairs of name and text: error rates, effect, risk, information, test.
 
     Parameters
     ----------
@@ -49,7 +49,12 @@ def _heterogeneity(block: Body) -> list[tuple[str, str]]:
     least = block.get("minimum_trials")
     if least is None:
         return []
-    return [("Fewest trials", f"{value_words(least)}: with fewer, the between-trial variance alone keeps the power out of reach")]
+    return [
+        (
+            "Fewest trials",
+            f"{value_words(least)}: with fewer, the between-trial variance alone keeps power out of reach",
+        )
+    ]
 
 
 def rests_on_pairs(body: Body) -> list[tuple[str, str]]:
@@ -104,7 +109,9 @@ def _effect(outcome: Outcome | None, body: Body, plan: Body) -> list[tuple[str, 
     shown = effect(plan["effect"], body["scale"], body["measure"])
     unit = f" {body['unit']}" if body.get("unit") else ""
     same = "equal to" if abs(plan["effect"] - body["mid"]) < 1e-12 else "not equal to"
-    reason = outcome.monitoring.effect_reason if outcome and outcome.monitoring else "no reason in the protocol"
+    reason = (
+        outcome.monitoring.effect_reason if outcome and outcome.monitoring else "no reason in the protocol"
+    )
     return [
         ("Effect to detect", f"{shown}{unit}: {reason}"),
         ("Against the smallest difference that matters", f"{same} it"),
@@ -125,7 +132,9 @@ def _risk(body: Body) -> list[tuple[str, str]]:
 def _information(
     outcome: Outcome | None, plan: Body, look: Body, per_person: float | None
 ) -> list[tuple[str, str]]:
-    reason = outcome.monitoring.diversity_reason if outcome and outcome.monitoring else "no reason in the protocol"
+    reason = (
+        outcome.monitoring.diversity_reason if outcome and outcome.monitoring else "no reason in the protocol"
+    )
     pairs = [("Allowance for heterogeneity, fixed", f"D² {percent(plan['diversity'])}: {reason}")]
     if not look:
         return pairs
@@ -133,7 +142,10 @@ def _information(
     people = f" (about {number(look['required'] / per_person, 0)} people)" if per_person else ""
     pairs += [
         ("Information so far", f"{number(look['information'])} (1/variance of the common-effect estimate)"),
-        ("Required information", f"{number(look['required'])}{people}; share reached {percent(look['fraction'], 1)}"),
+        (
+            "Required information",
+            f"{number(look['required'])}{people}; share reached {percent(look['fraction'], 1)}",
+        ),
         (
             "The same with D² estimated now",
             "not estimable"

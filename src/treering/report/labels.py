@@ -52,7 +52,9 @@ def spending_words(plan: Mapping[str, Any]) -> str:
     name = _SPENDING[plan["spending"]]
     parameter = plan.get("spending_parameter")
     with_parameter = name if parameter is None else f"{name}, parameter {number(parameter, 2)}"
-    convention = "applied to half of alpha in each tail" if plan["sides"] == 2 else "applied to alpha in one tail"
+    convention = (
+        "applied to half of alpha in each tail" if plan["sides"] == 2 else "applied to alpha in one tail"
+    )
     return f"{with_parameter}, {convention}"
 
 
@@ -71,7 +73,9 @@ def side_words(values: Mapping[str, Any], side: str) -> str:
     str
         "not reported" when the trial reports no number of that arm.
     """
-    own = {k.removeprefix(f"{side}_"): v for k, v in values.items() if k.startswith(f"{side}_") and v is not None}
+    own = {
+        k.removeprefix(f"{side}_"): v for k, v in values.items() if k.startswith(f"{side}_") and v is not None
+    }
     if "events" in own and "total" in own:
         parts = [f"{value_words(own.pop('events'))} of {value_words(own.pop('total'))}"]
     else:
@@ -83,5 +87,9 @@ def side_words(values: Mapping[str, Any], side: str) -> str:
 
 def other_words(values: Mapping[str, Any]) -> str:
     """Return the numbers of a trial that belong to no arm, as one text; empty when there are none."""
-    rest = {k: v for k, v in values.items() if not k.startswith(("intervention_", "comparator_")) and v is not None}
+    rest = {
+        k: v
+        for k, v in values.items()
+        if not k.startswith(("intervention_", "comparator_")) and v is not None
+    }
     return ", ".join(f"{field_words(name)} {value_words(value)}" for name, value in rest.items())

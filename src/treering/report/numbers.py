@@ -42,7 +42,9 @@ def canonical(value: Any, place: str = "report") -> Any:
     if isinstance(value, float):
         if not math.isfinite(value):
             raise ReportError(
-                f"the number at {place} is not finite.", found=value, expected="a number, or null if not estimable"
+                f"the number at {place} is not finite.",
+                found=value,
+                expected="a number, or null if not estimable",
             )
         return float(f"{value:.{SIGNIFICANT_DIGITS}g}") + 0.0
     if isinstance(value, Mapping):

@@ -89,7 +89,9 @@ def render_page(view: ReportView, figures: Mapping[str, str], files: list[str]) 
         "certainty": view.listed("certainty"),
         "unrated": [title for name, title in titles.items() if name not in rated],
         "titles": titles,
-        "trial_names": {row["trial"]: row["label"] for body in view.analyses.values() for row in body["trials"]},
+        "trial_names": {
+            row["trial"]: row["label"] for body in view.analyses.values() for row in body["trials"]
+        },
         "process_tables": process_tables(view),
         "coverage": rows,
         "coverage_counts": counts(rows),

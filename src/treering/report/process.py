@@ -1,4 +1,4 @@
-"""The tables about how a version came to be: who read what, what waits, what was waived, what was left out."""
+"""The tables about how a version came to be: who read what, what waits, what was waived or left out."""
 
 from __future__ import annotations
 
@@ -73,9 +73,13 @@ def _waiting(view: ReportView) -> Table:
 
 
 def _waivers(view: ReportView) -> Table:
-    rows = [(w["trial"], _title(view, w["outcome"]), w["person"], w["reason"]) for w in view.listed("waivers")]
+    rows = [
+        (w["trial"], _title(view, w["outcome"]), w["person"], w["reason"]) for w in view.listed("waivers")
+    ]
     heads = ("Trial", "Outcome", "Waived by", "Reason")
-    return _table("Waivers of the second reading", heads, rows, "No waiver: every result was read by two people.")
+    return _table(
+        "Waivers of the second reading", heads, rows, "No waiver: every result was read by two people."
+    )
 
 
 def _left_out(view: ReportView) -> Table:
@@ -86,7 +90,9 @@ def _left_out(view: ReportView) -> Table:
         if not row["in_main"]
     ]
     heads = ("Trial", "Outcome", "Reason")
-    return _table("Trials left out of a main analysis", heads, rows, "No trial with a verified result is left out.")
+    return _table(
+        "Trials left out of a main analysis", heads, rows, "No trial with a verified result is left out."
+    )
 
 
 def _verification(view: ReportView) -> Table:
@@ -96,7 +102,11 @@ def _verification(view: ReportView) -> Table:
     differ = sum(len(v.get("differences") or ()) for v in done)
     reread = sum(bool(v.get("reread")) for v in done)
     rows = [(basis, bases[basis]) for basis in sorted(bases)]
-    after = "" if not done else f"{plural(fields, 'field')} compared, {differ} differed; {plural(reread, 'result')} read again."
+    after = (
+        ""
+        if not done
+        else f"{plural(fields, 'field')} compared, {differ} differed; {plural(reread, 'result')} read again."
+    )
     return _table(
         "How results were verified",
         ("Basis", "Results"),
@@ -125,17 +135,17 @@ def _ongoing(view: ReportView) -> Table:
 
 def _overdue(view: ReportView, trial: Body) -> str:
     end = trial.get("expected_end")
-    past = bool(end) and date.fromisoformat(end[:10]) < view.date
+    past = end is not None and date.fromisoformat(end[:10]) < view.date
     return f"{trial.get('status') or 'not given'}{', past its expected end' if past else ''}"
 
 
 def _searches(view: ReportView) -> Table:
     last: dict[str, Body] = {}
-    for run in sorted(view.listed("searches"), key=lambda r: (r["date"], r["source"])):
-        last[run["source"]] = run
-    rows = []
+    for done in sorted(view.listed("searches"), key=lambda r: (r["date"], r["source"])):
+        last[done["source"]] = done
+    rows: list[tuple[Any, ...]] = []
     for source in sorted({*last, *view.protocol.living.search_every_days}):
-        run = last.get(source)
+        run: Body | None = last.get(source)
         every = view.protocol.living.search_every_days.get(source)
         due = f"every {every} days" if every else "not planned"
         if run is None:
@@ -144,14 +154,20 @@ def _searches(view: ReportView) -> Table:
         age = (view.date - date.fromisoformat(run["date"][:10])).days
         late = ", overdue" if every and age > every else ""
         outcome = run.get("error") or f"{count(run.get('new_hits'))} new of {count(run.get('hits'))}"
-        rows.append((source, f"{run['date']}, {age} days ago{late}", due, run.get("strategy"), run.get("by"), outcome))
+        rows.append(
+            (source, f"{run['date']}, {age} days ago{late}", due, run.get("strategy"), run.get("by"), outcome)
+        )
     heads = ("Source", "Last run", "Planned", "Strategy", "By", "Found")
-    return _table("Searches", heads, rows, "No source is planned and no search run is stored.", anchor="searches")
+    return _table(
+        "Searches", heads, rows, "No source is planned and no search run is stored.", anchor="searches"
+    )
 
 
 def _flow(view: ReportView) -> Table:
     decisions = view.listed("screening")
-    totals = Counter((d["decision"], d.get("reason") if d["decision"] == "exclude" else None) for d in decisions)
+    totals = Counter(
+        (d["decision"], d.get("reason") if d["decision"] == "exclude" else None) for d in decisions
+    )
     rows = [
         (decision, reason or "", totals[decision, reason])
         for decision, reason in sorted(totals, key=lambda pair: (pair[0], pair[1] or ""))
@@ -159,13 +175,17 @@ def _flow(view: ReportView) -> Table:
     heads = ("Decision", "Reason", "Reports")
     rows = [(d, r if r or d != "exclude" else None, n) for d, r, n in rows]
     shown = [(d, r if r else ("not given" if d == "exclude" else "none"), n) for d, r, n in rows]
-    return _table("Flow, counted from the decisions", heads, shown, "No screening decision in the store.", anchor="flow")
+    return _table(
+        "Flow, counted from the decisions", heads, shown, "No screening decision in the store.", anchor="flow"
+    )
 
 
 def _studies(view: ReportView) -> Table:
     reports: dict[str, list[str]] = {}
     for report in view.listed("reports"):
-        reports.setdefault(report["trial"], []).append(f"{report.get('citation') or report['report']} ({report['form']})")
+        reports.setdefault(report["trial"], []).append(
+            f"{report.get('citation') or report['report']} ({report['form']})"
+        )
     rows = [
         (
             study.get("title") or study["trial"],
@@ -179,12 +199,20 @@ def _studies(view: ReportView) -> Table:
         for study in view.listed("studies")
     ]
     heads = ("Trial", "Registration", "Design", "Randomised", "Funding", "Interests", "Reports")
-    return _table("Trials and their reports", heads, rows, "No facts about trials in the store.", anchor="studies")
+    return _table(
+        "Trials and their reports", heads, rows, "No facts about trials in the store.", anchor="studies"
+    )
 
 
 def _amendments(view: ReportView) -> Table:
     rows = [
-        (a["date"], a["author"], "; ".join(a["clauses"]), a["reason"], "after" if a["results_seen"] else "before")
+        (
+            a["date"],
+            a["author"],
+            "; ".join(a["clauses"]),
+            a["reason"],
+            "after" if a["results_seen"] else "before",
+        )
         for a in view.listed("amendments")
     ]
     heads = ("Date", "Author", "Clauses", "Reason", "Results seen")
@@ -212,12 +240,16 @@ def _living(view: ReportView) -> Table:
 
 
 def _notices(view: ReportView) -> Table:
-    rows = [(n["event"], _title(view, n["synthesis"]), n["person"], n["channel"]) for n in view.listed("notices")]
+    rows = [
+        (n["event"], _title(view, n["synthesis"]), n["person"], n["channel"]) for n in view.listed("notices")
+    ]
     heads = ("Event", "Outcome", "Person", "Channel")
     return _table("Notices to the panel for this version", heads, rows, "No notice was called for.")
 
 
 def _defects(view: ReportView) -> Table:
-    rows = [(d["id"], d["description"], ", ".join(str(v) for v in d["versions"])) for d in view.listed("defects")]
+    rows = [
+        (d["id"], d["description"], ", ".join(str(v) for v in d["versions"])) for d in view.listed("defects")
+    ]
     heads = ("Defect", "What", "Versions")
     return _table("Defects of the tool that touch published versions", heads, rows, "None known.")

@@ -69,7 +69,11 @@ def build_files(view: ReportView) -> dict[str, bytes]:
     drawn = figures(view)
     files = {"report.json": report_json(view), **tables(view)}
     page = render_page(view, drawn, list(files))
-    return {**files, "index.html": page, **{f"figures/{name}.svg": svg.encode() for name, svg in drawn.items()}}
+    return {
+        **files,
+        "index.html": page,
+        **{f"figures/{name}.svg": svg.encode() for name, svg in drawn.items()},
+    }
 
 
 def figures(view: ReportView) -> dict[str, str]:

@@ -60,7 +60,17 @@ def report_dict(view: ReportView) -> dict[str, Any]:
     }
 
 
-LISTS = ("waiting", "waivers", "notices", "integrity", "searches", "certainty", "ongoing", "amendments", "defects")
+LISTS = (
+    "waiting",
+    "waivers",
+    "notices",
+    "integrity",
+    "searches",
+    "certainty",
+    "ongoing",
+    "amendments",
+    "defects",
+)
 
 
 def _synthesis(name: str, body: Mapping[str, Any], view: ReportView) -> dict[str, Any]:
@@ -92,8 +102,8 @@ def changes_by_cause(changes: Mapping[str, Any]) -> dict[str, Any]:
     Returns
     -------
     dict
-        Cause to ``movement`` and ``movement_reversed`` (analysis scale, null when the estimate did not move by
-        it), ``entries`` and ``trials``.
+        Cause to ``movement`` and ``movement_reversed`` (analysis scale, null when the estimate
+        did not move by it), ``entries`` and ``trials``.
     """
     result: dict[str, Any] = {
         cause: {"movement": None, "movement_reversed": None, "entries": [], "trials": []}

@@ -12,13 +12,13 @@ from treering.report.view import ReportView
 Body = Mapping[str, Any]
 
 _TRIAL = (
-    "trial label published report in_main left_out estimate standard_error ci_low ci_high weight risk_of_bias basis "
-    "imputed flags"
-).split()
+    *("trial", "label", "published", "report", "in_main", "left_out", "estimate", "standard_error"),
+    *("ci_low", "ci_high", "weight", "risk_of_bias", "basis", "imputed", "flags"),
+)
 _POOLED = (
-    "estimate standard_error ci_low ci_high z p tau2 tau2_low tau2_high q q_df q_p i2 h2 d2 prediction_low "
-    "prediction_high method"
-).split()
+    *("estimate", "standard_error", "ci_low", "ci_high", "z", "p", "tau2", "tau2_low", "tau2_high"),
+    *("q", "q_df", "q_p", "i2", "h2", "d2", "prediction_low", "prediction_high", "method"),
+)
 
 
 def tables(view: ReportView) -> dict[str, bytes]:
@@ -83,7 +83,13 @@ def _syntheses(view: ReportView) -> bytes:
     for name, body in view.analyses.items():
         for analysis in ("pooled", "common"):
             pooled = body.get(analysis) or {}
-            head = [name, body["title"], body["measure"], body["scale"], "planned" if analysis == "pooled" else "common effect"]
+            head = [
+                name,
+                body["title"],
+                body["measure"],
+                body["scale"],
+                "planned" if analysis == "pooled" else "common effect",
+            ]
             rows.append([*head, body["k"], body["participants"], *(pooled.get(key) for key in _POOLED)])
     return write_csv(heads, rows)
 
@@ -95,11 +101,24 @@ def _looks(view: ReportView) -> bytes:
         for look in (body.get("monitoring") or {}).get("looks") or ()
     ]
     fields = list(dict.fromkeys(key for _, look in looks for key in look)) or ["number"]
-    return write_csv(["synthesis", *fields], ([name, *(look.get(key) for key in fields)] for name, look in looks))
+    return write_csv(
+        ["synthesis", *fields], ([name, *(look.get(key) for key in fields)] for name, look in looks)
+    )
 
 
 def _changes(view: ReportView) -> bytes:
-    heads = ["synthesis", "what", "trial", "field", "before", "after", "cause", "reason", "movement", "movement_reversed"]
+    heads = [
+        "synthesis",
+        "what",
+        "trial",
+        "field",
+        "before",
+        "after",
+        "cause",
+        "reason",
+        "movement",
+        "movement_reversed",
+    ]
     rows: list[list[Any]] = []
     for name, body in view.changes.items():
         for what in ("trials_added", "trials_removed", "trials_changed", "plan_changed"):
@@ -108,5 +127,7 @@ def _changes(view: ReportView) -> bytes:
                 rows.append([name, what.replace("_", " "), *cells, None, None])
         for part in body.get("split", ()):
             blank = [None] * 4
-            rows.append([name, "movement", *blank, part["cause"], None, part["movement"], part["movement_reversed"]])
+            rows.append(
+                [name, "movement", *blank, part["cause"], None, part["movement"], part["movement_reversed"]]
+            )
     return write_csv(heads, rows)

@@ -135,7 +135,9 @@ def build_view(
     """
     missing = [name for name in VERSION_FIELDS if version.get(name) is None]
     if missing:
-        raise ReportError("the version body lacks fields.", found=", ".join(missing), expected="a value for each")
+        raise ReportError(
+            "the version body lacks fields.", found=", ".join(missing), expected="a value for each"
+        )
     number = int(version["version"])
     if unknown := sorted(set(records) - set(RECORDS)):
         raise ReportError(

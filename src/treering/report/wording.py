@@ -16,8 +16,8 @@ from treering.terms import Better, Measure
 Body = Mapping[str, Any]
 
 INVENTED = (
-    "Invented demonstration: the question, the people, every trial and every number on this page are made up. "
-    "Nothing here says anything about care."
+    "Invented demonstration: the question, the people, every trial and every number on this page are made "
+    "up. Nothing here says anything about care."
 )
 FOOTER = (
     "This report informs a panel. It makes no treatment recommendation, and it defers to local rules and to "
@@ -70,8 +70,9 @@ def explain_interval(level: float) -> str:
     """
     share = number(100 * level, 0 if round(100 * level, 6).is_integer() else 1)
     return (
-        f"A {share}% interval comes from a procedure that covers the true value in {share}% of repetitions when "
-        "its assumptions hold; it does not say how probable it is that the true value lies in this one interval."
+        f"A {share}% interval comes from a procedure that covers the true value in {share}% of repetitions "
+        "when its assumptions hold; it does not say how probable it is that the true value lies in this one "
+        "interval."
     )
 
 
@@ -161,8 +162,8 @@ def _covers_no_effect(body: Body, low: float, high: float, size: float) -> str:
         more = f"with a difference that matters for the {'better' if better == body['better'] else 'worse'}"
     else:
         return (
-            "Compatible with no effect; every value in the interval is smaller than the smallest difference that "
-            "matters."
+            "Compatible with no effect; every value in the interval is smaller than the smallest difference "
+            "that matters."
         )
     return f"Compatible with no effect, and {more}."
 
@@ -201,7 +202,8 @@ def absolute_words(body: Body, intervention: str, comparator: str) -> str | None
     if not absolute:
         return None
     per = number(absolute["per"], 0)
-    base = f"With {comparator}, {_people(absolute['per'] * absolute['comparator_risk'])} of {per} people by the protocol"
+    without = _people(absolute["per"] * absolute["comparator_risk"])
+    base = f"With {comparator}, {without} of {per} people by the protocol"
     if absolute.get("difference") is None:
         return f"{base}; the absolute effect is {NOT_ESTIMABLE}."
     ends = " to ".join(_fewer(absolute[end]) for end in ("low", "high"))
@@ -237,6 +239,8 @@ def movement_words(value: float | None, scale: str) -> str:
     """
     if value is None:
         return "not measurable"
+    if value == 0:
+        return "none"
     if scale == "log":
         return f"\u00d7 {number(natural(value, scale), 3)}"
     return f"{'+' if value > 0 else ''}{number(value, 3)}"

@@ -30,7 +30,9 @@ class Frame:
     measure: str
 
 
-def forest_figure(body: Body, previous: Body | None, marks: Mapping[str, str], intervention: str, name: str) -> str:
+def forest_figure(
+    body: Body, previous: Body | None, marks: Mapping[str, str], intervention: str, name: str
+) -> str:
     """Draw the trials and the pooled effect of one synthesis.
 
     Parameters
@@ -53,7 +55,8 @@ def forest_figure(body: Body, previous: Body | None, marks: Mapping[str, str], i
     """
     rows = [row for row in body["trials"] if row.get("estimate") is not None]
     ghost = (previous or {}).get("pooled") if (previous or {}).get("measure") == body["measure"] else None
-    lines = len(rows) + 3.2 + (0.8 if ghost else 0)
+    predicts = (body.get("pooled") or {}).get("prediction_low") is not None
+    lines = len(rows) + 2.1 + (0.9 if ghost else 0) + (0.85 if predicts else 0)
     with style.settings():
         figure = style.new_figure(ROW * lines + 0.95)
         height = ROW * lines + 0.95
@@ -75,28 +78,23 @@ def describe(body: Body, rows: Sequence[Body]) -> str:
     ends = interval(pooled.get("ci_low"), pooled.get("ci_high"), body["scale"], body["measure"])
     return (
         f"{plural(len(rows), 'trial')} with their {measure_words(body['measure'])} and interval. Pooled: "
-        f"{effect(pooled.get('estimate'), body['scale'], body['measure'])} ({ends}). All numbers stand in the table "
-        "below the figure."
+        f"{effect(pooled.get('estimate'), body['scale'], body['measure'])} ({ends}). All numbers stand "
+        "in the table below the figure."
     )
 
 
 def _frame(body: Body, rows: Sequence[Body], ghost: Body | None) -> Frame:
-    """Cover every point and the pooled intervals; a wider trial interval ends in an arrow."""
-    values = [0.0, body["mid"], -body["mid"]]
-    values += [row["estimate"] for row in rows]
-    for pooled in (body.get("pooled"), ghost):
-        values += [pooled[k] for k in ("ci_low", "ci_high") if pooled and pooled.get(k) is not None]
-    span = max(values) - min(values)
-    low, high = min(values) - 0.8 * span, max(values) + 0.8 * span
-    ends = [row[k] for row in rows for k in ("ci_low", "ci_high")] + [
-        p for k in ("prediction_low", "prediction_high") if (p := (body.get("pooled") or {}).get(k)) is not None
-    ]
-    return Frame(
-        max(low, min([*ends, *values]) - 0.05 * span),
-        min(high, max([*ends, *values]) + 0.05 * span),
-        body["scale"],
-        body["measure"],
-    )
+    """Cover every point and what a typical trial interval needs; what is wider ends in an arrow."""
+    points = [0.0, body["mid"], -body["mid"], *(row["estimate"] for row in rows)]
+    widths = sorted(row["ci_high"] - row["ci_low"] for row in rows)
+    reach = max(max(points) - min(points), widths[len(widths) // 2])
+    ends = [row[k] for row in rows for k in ("ci_low", "ci_high")]
+    for pooled in (body.get("pooled") or {}, ghost or {}):
+        names = ("ci_low", "ci_high", "prediction_low", "prediction_high")
+        ends += [end for name in names if (end := pooled.get(name)) is not None]
+    low = max(min(points) - 0.8 * reach, min([*points, *ends]) - 0.05 * reach)
+    high = min(max(points) + 0.8 * reach, max([*points, *ends]) + 0.05 * reach)
+    return Frame(low, high, body["scale"], body["measure"])
 
 
 def _heads(axes: Axes, body: Body) -> None:
@@ -150,8 +148,12 @@ def _trial(axes: Axes, y: float, row: Body, mark: str, frame: Frame) -> None:
     colour = style.ACCENT if main else style.MUTED
     if mark:
         _text(axes, 0.0, y, mark, ha="left", fontsize=8, color=style.ACCENT, fontweight="bold")
-    _text(axes, 0.068, y, style.at_most(row["label"], 29), ha="left", color=style.INK if main else style.MUTED)
-    _line(axes, y, row["ci_low"], row["ci_high"], frame, color=colour, lw=1.3, ls="-" if main else (0, (2, 2)))
+    _text(
+        axes, 0.068, y, style.at_most(row["label"], 29), ha="left", color=style.INK if main else style.MUTED
+    )
+    _line(
+        axes, y, row["ci_low"], row["ci_high"], frame, color=colour, lw=1.3, ls="-" if main else (0, (2, 2))
+    )
     axes.plot(
         [row["estimate"]], [y], "o", ms=5, mfc=colour if main else style.PAPER, mec=colour, mew=1.2, zorder=4
     )
@@ -178,7 +180,7 @@ def _line(axes: Axes, y: float, low: float, high: float, frame: Frame, **options
 def _pooled(axes: Axes, y: float, body: Body, ghost: Body | None, frame: Frame) -> None:
     axes.plot([0, 1], [y - 0.75] * 2, color=style.FAINT, lw=0.8, transform=_across(axes), clip_on=False)
     if ghost and ghost.get("estimate") is not None:
-        _diamond(axes, y, ghost, ghosted=True)
+        _diamond(axes, y, ghost, frame, ghosted=True)
         _text(axes, 0.068, y, "Pooled, last version", ha="left", color=style.MUTED)
         values = f"{effect(ghost['estimate'], frame.scale, frame.measure)} ({_ends(ghost, frame)})"
         _text(axes, RIGHT + 0.015, y, values, ha="left", color=style.MUTED)
@@ -187,12 +189,20 @@ def _pooled(axes: Axes, y: float, body: Body, ghost: Body | None, frame: Frame) 
     if pooled.get("estimate") is None:
         _text(axes, 0.068, y, "Pooled: not estimable", ha="left")
         return
-    _diamond(axes, y, pooled, ghosted=False)
+    _diamond(axes, y, pooled, frame, ghosted=False)
     _text(axes, 0.068, y, f"Pooled, {plural(body['k'], 'trial')}", ha="left", fontweight="bold")
     values = f"{effect(pooled['estimate'], frame.scale, frame.measure)} ({_ends(pooled, frame)})"
     _text(axes, RIGHT + 0.015, y, values, ha="left", fontweight="bold")
     if pooled.get("prediction_low") is not None:
-        _line(axes, y + 0.85, pooled["prediction_low"], pooled["prediction_high"], frame, color=style.INK, lw=2.2)
+        _line(
+            axes,
+            y + 0.85,
+            pooled["prediction_low"],
+            pooled["prediction_high"],
+            frame,
+            color=style.INK,
+            lw=2.2,
+        )
         _text(axes, 0.068, y + 0.85, "Prediction, a new trial", ha="left", color=style.MUTED)
         ends = interval(pooled["prediction_low"], pooled["prediction_high"], frame.scale, frame.measure)
         _text(axes, RIGHT + 0.015, y + 0.85, ends, ha="left", color=style.MUTED)
@@ -204,9 +214,20 @@ def _across(axes: Axes) -> Any:
     return blended_transform_factory(axes.figure.transFigure, axes.transData)
 
 
-def _diamond(axes: Axes, y: float, pooled: Body, *, ghosted: bool) -> None:
+def _diamond(axes: Axes, y: float, pooled: Body, frame: Frame, *, ghosted: bool) -> None:
     from matplotlib.patches import Polygon
 
+    if pooled.get("ci_low") is None or pooled.get("ci_high") is None:
+        axes.plot(
+            [pooled["estimate"]], [y], "d", ms=6, mfc="none" if ghosted else style.ACCENT, mec=style.ACCENT
+        )
+        return
+    for outside, x, marker in (
+        (pooled["ci_low"] < frame.low, frame.low, "<"),
+        (pooled["ci_high"] > frame.high, frame.high, ">"),
+    ):
+        if outside:
+            axes.plot([x], [y], marker, ms=5, color=style.MUTED if ghosted else style.ACCENT, clip_on=False)
     points = [
         (pooled["ci_low"], y),
         (pooled["estimate"], y - 0.32),
@@ -224,6 +245,6 @@ def _diamond(axes: Axes, y: float, pooled: Body, *, ghosted: bool) -> None:
 def axis_note(body: Body) -> str:
     """Say in the caption what the shaded band and the vertical line are."""
     return (
-        f"The vertical line is no effect ({no_effect(body['scale'])}); the shaded band holds effects smaller than the "
-        "smallest difference that matters."
+        f"The vertical line is no effect ({no_effect(body['scale'])}); the shaded band holds effects smaller "
+        "than the smallest difference that matters."
     )

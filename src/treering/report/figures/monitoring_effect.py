@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from treering.report.figures import style
-from treering.report.numbers import effect, interval
+from treering.report.numbers import effect, interval, plural
 from treering.report.wording import directions, measure_words
 from treering.terms import CROSSED, Better, Verdict
 
@@ -55,10 +55,12 @@ def describe(body: Body, looks: Sequence[Body]) -> str:
         return "No look has an estimate yet."
     last = looks[-1]
     scale, measure = body["scale"], body["measure"]
+    shown = effect(last["estimate"], scale, measure)
+    ordinary = interval(last["ci_low"], last["ci_high"], scale, measure)
+    adjusted = interval(last["adjusted_low"], last["adjusted_high"], scale, measure)
     return (
-        f"{len(looks)} looks. Last: {measure_words(measure)} {effect(last['estimate'], scale, measure)}, ordinary "
-        f"interval {interval(last['ci_low'], last['ci_high'], scale, measure)}, boundary-adjusted interval "
-        f"{interval(last['adjusted_low'], last['adjusted_high'], scale, measure)}; verdict: {last['verdict']}."
+        f"{plural(len(looks), 'look')}. Last: {measure_words(measure)} {shown}, ordinary interval "
+        f"{ordinary}, boundary-adjusted interval {adjusted}; verdict: {last['verdict']}."
     )
 
 
@@ -73,9 +75,7 @@ def _range(body: Body, looks: Sequence[Body]) -> tuple[float, float]:
     return low - 0.05 * span, high + 0.05 * span
 
 
-def _scale(
-    axes: Axes, body: Body, looks: Sequence[Body], intervention: str, low: float, high: float
-) -> None:
+def _scale(axes: Axes, body: Body, looks: Sequence[Body], intervention: str, low: float, high: float) -> None:
     style.bare(axes, "left")
     marks = style.ticks(low, high, body["scale"])
     axes.set_yticks([y for y, _ in marks], [label for _, label in marks])
@@ -89,7 +89,10 @@ def _scale(
     good = body["better"] == Better.LOWER
     name = measure_words(body["measure"])
     unit = f" ({body['unit']})" if body.get("unit") else ""
-    ends = f"\u2191 {above}, {'worse' if good else 'better'}", f"\u2193 {below}, {'better' if good else 'worse'}"
+    ends = (
+        f"\u2191 {above}, {'worse' if good else 'better'}",
+        f"\u2193 {below}, {'better' if good else 'worse'}",
+    )
     style.end_words(axes, f"{name[0].upper()}{name[1:]}{unit}", *ends, below=-0.24)
 
 
@@ -97,7 +100,11 @@ def _look(axes: Axes, x: float, look: Body, low: float, high: float) -> None:
     _adjusted(axes, x, look, low, high)
     if look.get("ci_low") is not None and look.get("ci_high") is not None:
         axes.plot(
-            [x, x], [max(look["ci_low"], low), min(look["ci_high"], high)], color=style.ACCENT, lw=4.5, zorder=3
+            [x, x],
+            [max(look["ci_low"], low), min(look["ci_high"], high)],
+            color=style.ACCENT,
+            lw=4.5,
+            zorder=3,
         )
     marker, filled = verdict_marker(look["verdict"])
     axes.plot(
@@ -141,7 +148,7 @@ def verdict_marker(verdict: str) -> tuple[str, bool]:
 def _key(axes: Axes) -> None:
     from matplotlib.lines import Line2D
 
-    point = {"ls": "none", "mec": style.INK, "mew": 1.3}
+    point: Any = {"ls": "none", "mec": style.INK, "mew": 1.3}
     handles = [
         Line2D([], [], color=style.ACCENT, lw=4.5, label="ordinary interval"),
         Line2D([], [], color=style.INK, lw=1.1, label="boundary-adjusted interval"),

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 from treering.report.figures import style
 from treering.report.figures.monitoring_effect import verdict_marker
-from treering.report.numbers import number, percent
+from treering.report.numbers import number, percent, plural
 from treering.terms import Better, OutcomeRole
 
 if TYPE_CHECKING:
@@ -58,15 +58,16 @@ def describe(looks: Sequence[Body]) -> str:
     last = looks[-1]
     bound = last["boundary"] if last.get("boundary") is not None else last.get("redrawn_boundary")
     return (
-        f"{len(looks)} looks as they happened. Last: Z {number(last['z'])} at {percent(last['fraction'])} of the "
-        f"required information, boundary {number(bound)}; verdict: {last['verdict']}."
+        f"{plural(len(looks), 'look')} as they happened. Last: Z {number(last['z'])} at "
+        f"{percent(last['fraction'])} of the required information, boundary {number(bound)}; verdict: "
+        f"{last['verdict']}."
     )
 
 
 def _tall(looks: Sequence[Body], hindsight: Sequence[Body]) -> float:
     values = [abs(step["z"]) for step in [*looks, *hindsight]]
     bounds = [b for look in looks for k in ("boundary", "redrawn_boundary") if (b := look.get(k)) is not None]
-    return min(max([3.0, *values, *bounds]) * 1.15, max([TALLEST, *(1.15 * v for v in values)]))
+    return float(min(1.15 * max([3.0, *values, *bounds]), max([TALLEST, *(1.15 * v for v in values)])))
 
 
 def _scale(axes: Axes, body: Body, right: float, tall: float) -> None:
@@ -78,7 +79,9 @@ def _scale(axes: Axes, body: Body, right: float, tall: float) -> None:
     axes.tick_params(axis="both", length=3, color=style.FAINT)
     axes.axhline(0.0, color=style.INK, lw=0.9, zorder=1)
     axes.axvline(1.0, color=style.MUTED, lw=0.9, ls=(0, (5, 3)), zorder=1)
-    axes.text(1.0, -tall * 0.97, "required information ", ha="right", va="bottom", fontsize=8.5, color=style.MUTED)
+    axes.text(
+        1.0, -tall * 0.97, "required information ", ha="right", va="bottom", fontsize=8.5, color=style.MUTED
+    )
     axes.set_xlabel("share of the required information", fontsize=8.5)
     up, down = ("benefit", "harm") if body["better"] == Better.HIGHER else ("harm", "benefit")
     style.end_words(axes, "Z", f"\u2191 towards {up}", f"\u2193 towards {down}", below=-0.13)
@@ -105,13 +108,17 @@ def _bounds(axes: Axes, looks: Sequence[Body], plan: Body, body: Body, tall: flo
     redrawn = [look for look in looks if not look.get("spends") and look.get("redrawn_boundary") is not None]
     for sign in _signs(plan, body):
         x = [look["fraction"] for look in used]
-        axes.plot(x, [sign * look["boundary"] for look in used], color=style.INK, lw=1.4, ls=(0, (6, 2)), zorder=3)
+        axes.plot(
+            x, [sign * look["boundary"] for look in used], color=style.INK, lw=1.4, ls=(0, (6, 2)), zorder=3
+        )
         for look in used:
             y = sign * look["boundary"]
             if abs(y) <= tall:
                 axes.plot([look["fraction"]], [y], "_", ms=13, mew=2, color=style.INK, zorder=3)
         for look in redrawn:
-            axes.plot([look["fraction"]], [sign * look["redrawn_boundary"]], "_", ms=13, mew=1.2, color=style.MUTED)
+            axes.plot(
+                [look["fraction"]], [sign * look["redrawn_boundary"]], "_", ms=13, mew=1.2, color=style.MUTED
+            )
 
 
 def _path(axes: Axes, looks: Sequence[Body], tall: float) -> None:
@@ -145,10 +152,20 @@ def _key(axes: Axes) -> None:
     from matplotlib.lines import Line2D
 
     handles = [
-        Line2D([], [], color=style.ACCENT, lw=1.8, marker="o", mfc=style.PAPER, label="looks as they happened"),
+        Line2D(
+            [], [], color=style.ACCENT, lw=1.8, marker="o", mfc=style.PAPER, label="looks as they happened"
+        ),
         Line2D([], [], color=style.INK, lw=1.4, ls=(0, (6, 2)), label="boundary as used"),
         Line2D([], [], color=style.MUTED, ls="none", marker="_", ms=11, label="redrawn, no alpha spent"),
-        Line2D([], [], color=style.MUTED, lw=1.1, ls=(0, (1, 1.8)), marker=".", label="hindsight, by publication date"),
+        Line2D(
+            [],
+            [],
+            color=style.MUTED,
+            lw=1.1,
+            ls=(0, (1, 1.8)),
+            marker=".",
+            label="hindsight, by publication date",
+        ),
     ]
     axes.legend(
         handles=handles,

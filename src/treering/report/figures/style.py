@@ -1,8 +1,9 @@
 """One look for all figures, and SVG text that is the same bytes for the same input.
 
-Colours are written as CSS variables with a fallback, so that a figure inlined in the page follows its light,
-dark and print styles, and the same file still reads well alone. One accent (deep teal) and greys only: what
-differs is told by shape, line style and word, so colour-blind readers and black-and-white printers lose nothing.
+Colours are written as CSS variables with a fallback, so that a figure inlined in the page follows its
+light, dark and print styles, and the same file still reads well alone. One accent (deep teal) and greys
+only: what differs is told by shape, line style and word, so colour-blind readers and black-and-white
+printers lose nothing.
 """
 
 from __future__ import annotations
@@ -36,7 +37,7 @@ FONT = "system-ui, -apple-system, 'Segoe UI', 'Noto Sans', 'DejaVu Sans', Arial,
 WIDTH = 9.0
 SIZE = 9.0
 
-_SETTINGS: dict[str, Any] = {
+_SETTINGS: Any = {
     "svg.fonttype": "none",
     "font.family": "sans-serif",
     "font.sans-serif": ["DejaVu Sans"],
@@ -98,11 +99,10 @@ def to_svg(figure: Figure, name: str, title: str, description: str) -> str:
         One ``svg`` element.
     """
     import matplotlib
-    from matplotlib.backends.backend_svg import FigureCanvasSVG
 
     buffer = io.StringIO()
     with matplotlib.rc_context({**_SETTINGS, "svg.hashsalt": f"treering-{name}"}):
-        FigureCanvasSVG(figure).print_svg(buffer, metadata={"Date": None, "Creator": None})
+        figure.savefig(buffer, format="svg", metadata={"Date": None, "Creator": None})
     return _tidy(buffer.getvalue(), name, title, description)
 
 
@@ -117,10 +117,12 @@ def _tidy(svg: str, name: str, title: str, description: str) -> str:
     # A style element inside an inlined svg would reach the whole page.
     body = re.sub(r"<defs>\s*<style.*?</style>\s*</defs>\n?", "", body, flags=re.DOTALL)
     view = re.search(r'viewBox="[^"]*"', body)
+    box = view.group(0) if view else ""
     head = (
-        f'<svg xmlns="http://www.w3.org/2000/svg" xmlns:xlink="http://www.w3.org/1999/xlink" '
-        f'{view.group(0) if view else ""} role="img" aria-labelledby="{name}-title {name}-desc" style="stroke-linejoin: round">\n'
-        f'<title id="{name}-title">{escape(title)}</title>\n<desc id="{name}-desc">{escape(description)}</desc>'
+        '<svg xmlns="http://www.w3.org/2000/svg" xmlns:xlink="http://www.w3.org/1999/xlink" '
+        f'{box} role="img" aria-labelledby="{name}-title {name}-desc" style="stroke-linejoin: round">\n'
+        f'<title id="{name}-title">{escape(title)}</title>\n'
+        f'<desc id="{name}-desc">{escape(description)}</desc>'
     )
     return re.sub(r"<svg[^>]*>", lambda _: head, body, count=1).rstrip() + "\n"
 
@@ -151,7 +153,11 @@ def ticks(low: float, high: float, scale: str, *, most: int = 7) -> list[tuple[f
         chosen = sorted(v for v in values if low <= math.log(v) <= high)
         if len(chosen) <= most:
             break
-    return [(math.log(v), f"{v:.10g}") for v in chosen]
+    else:
+        # Whole powers of ten are still too many: keep every second, third ... counted from 1.
+        step = -(-len(chosen) // most)
+        chosen = [v for v in chosen if round(math.log10(v)) % step == 0]
+    return [(math.log(v), f"{v:.6f}".rstrip("0").rstrip(".")) for v in chosen]
 
 
 def _even_ticks(low: float, high: float, most: int) -> list[tuple[float, str]]:
