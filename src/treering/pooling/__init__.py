@@ -4,6 +4,7 @@ The numeric core: arrays or pandas in, frozen values out, effects on the analysi
 """
 
 from treering.pooling.absolute import AbsoluteEffect, absolute_effects
+from treering.pooling.analyse import TableAnalysis, analyse_table
 from treering.pooling.bayes import BayesianEffect, pool_bayesian
 from treering.pooling.credibility import SUBGROUP_QUESTIONS, SubgroupAnswer, SubgroupCredibility
 from treering.pooling.interaction import Interaction, interaction_test
@@ -33,7 +34,9 @@ __all__ = [
     "SubgroupAnswer",
     "SubgroupCredibility",
     "SubgroupEffect",
+    "TableAnalysis",
     "absolute_effects",
+    "analyse_table",
     "interaction_test",
     "meta_regression",
     "pool",

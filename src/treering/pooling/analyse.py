@@ -1,0 +1,339 @@
+"""Everything about one table of trials: the pure function behind ``treering pool FILE.csv``."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from scipy.stats import norm
+
+from treering.effects import LeftOut
+from treering.errors import AnalysisError
+from treering.pooling import analysis_classical as classical
+from treering.pooling import analysis_models as models
+from treering.pooling.absolute import AbsoluteEffect
+from treering.pooling.analysis_classical import Cumulative
+from treering.pooling.analysis_input import Inputs, Ledger, Plan, prepare, tuple_of
+from treering.pooling.bayes import BayesianEffect
+from treering.pooling.inverse_variance import pool
+from treering.pooling.one_stage import OneStageEffect
+from treering.pooling.plain import plain, with_natural
+from treering.pooling.priors import TauPrior
+from treering.pooling.regression import MetaRegression
+from treering.pooling.result import PooledEffect
+from treering.pooling.subgroups import SubgroupAnalysis
+from treering.terms import Measure
+
+_NATURAL = ("common", "random", "bayesian")
+
+
+@dataclass(frozen=True, slots=True)
+class TrialEffect:
+    """One trial's effect on the analysis scale, its interval and its share of both pooled effects."""
+
+    trial: str
+    estimate: float
+    variance: float
+    standard_error: float
+    ci_low: float
+    ci_high: float
+    weight_common: float
+    weight_random: float
+    corrected: bool
+    route: str
+
+
+@dataclass(frozen=True, slots=True)
+class TableAnalysis:
+    """All results of one table; a part that could not be computed is None and has its reason in ``not_done``.
+
+    Attributes
+    ----------
+    measure, scale : str
+        The measure; "log" or "natural" analysis scale.
+    level : float
+        Confidence level.
+    options : dict
+        What was asked for.
+    trials : tuple of TrialEffect
+        Trials with a usable effect.
+    left_out : tuple of LeftOut
+        The others with the reason.
+    common, random : PooledEffect or None
+        Inverse-variance results; ``random`` is the headline and holds heterogeneity and prediction.
+    estimators : dict of str to PooledEffect
+        Random effects by every estimator of tau2.
+    subgroups : SubgroupAnalysis or None
+        When the table has the subgroup column.
+    regression : MetaRegression or None
+        When covariates are named.
+    leave_one_out : DataFrame or None
+        The random-effects result without each trial.
+    cumulative : Cumulative or None
+        Pooled effect as trials are added.
+    bayesian : BayesianEffect or None
+        Posterior.
+    one_stage : dict of str to OneStageEffect
+        Rare-event models.
+    absolute : tuple of AbsoluteEffect
+        Events per 1000 people.
+    not_done : dict of str to str
+        Part and reason.
+    warnings : tuple of str
+        What a reader of the numbers must also read.
+    """
+
+    measure: str
+    scale: str
+    level: float
+    options: dict[str, Any]
+    trials: tuple[TrialEffect, ...]
+    left_out: tuple[LeftOut, ...]
+    common: PooledEffect | None
+    random: PooledEffect | None
+    estimators: dict[str, PooledEffect]
+    subgroups: SubgroupAnalysis | None
+    regression: MetaRegression | None
+    leave_one_out: pd.DataFrame | None
+    cumulative: Cumulative | None
+    bayesian: BayesianEffect | None
+    one_stage: dict[str, OneStageEffect]
+    absolute: tuple[AbsoluteEffect, ...]
+    not_done: dict[str, str]
+    warnings: tuple[str, ...]
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the analysis as plain JSON values.
+
+        Returns
+        -------
+        dict
+            Same names as the attributes; pooled effects carry ``natural`` with estimate and limits on the
+            natural scale; NaN and infinity are None.
+        """
+        whole: dict[str, Any] = plain(self)
+        ratio = self.scale == "log"
+        for name in _NATURAL:
+            if whole[name] is not None:
+                whole[name] = with_natural(whole[name], ratio=ratio)
+        for name in ("trials", "leave_one_out"):
+            whole[name] = whole[name] and [with_natural(row, ratio=ratio) for row in whole[name]]
+        if whole["cumulative"] is not None:
+            steps = whole["cumulative"]["steps"]
+            whole["cumulative"]["steps"] = [with_natural(row, ratio=ratio) for row in steps]
+        for name in ("estimators", "one_stage"):
+            logs = ratio or name == "one_stage"
+            whole[name] = {key: with_natural(block, ratio=logs) for key, block in whole[name].items()}
+        if whole["subgroups"] is not None:
+            groups = whole["subgroups"]["groups"]
+            whole["subgroups"]["groups"] = [with_natural(group, ratio=ratio) for group in groups]
+        return whole
+
+
+def analyse_table(
+    table: pd.DataFrame,
+    measure: str,
+    *,
+    tau2: str = "reml",
+    interval: str = "modified-knapp-hartung",
+    level: float = 0.95,
+    prediction_df: str = "k-2",
+    correction: str = "none",
+    amount: float = 0.5,
+    subgroup: str = "subgroup",
+    between_variance: str = "separate",
+    covariates: Sequence[str] = (),
+    order: str | None = None,
+    comparator_risk: float | Sequence[float] | None = None,
+    prior: TauPrior | str | None = None,
+    better: str | None = None,
+    mid: float | None = None,
+    one_stage: str = "rare",
+    force_small_study: bool = False,
+) -> TableAnalysis:
+    """Analyse one table of trials in every way that fits its measure.
+
+    Parameters
+    ----------
+    table : DataFrame
+        One row per trial; columns as for ``treering.effects.effect_sizes``, and optionally ``trial``, the
+        subgroup column, covariates and a column to order by.
+    measure : str
+        A ``treering.terms.Measure``.
+    tau2, interval, level, prediction_df : str, str, float, str
+        Planned random-effects analysis; see ``pool``.
+    correction, amount : str, float
+        Zero cells; see ``effect_sizes``.
+    subgroup : str
+        Column with the subgroup; used when the table has it.
+    between_variance : str
+        "separate" or "common" tau2 of the subgroups.
+    covariates : sequence of str
+        Columns for a meta-regression.
+    order : str, optional
+        Column by which trials are added up; "date" or "year" when the table has it, else the row order.
+    comparator_risk : float or sequence of float, optional
+        Risks at which absolute effects are stated.
+    prior : TauPrior or str, optional
+        Prior of tau; half-normal with scale 0.5 for ratios and standardized mean differences by default.
+    better : str, optional
+        "lower" or "higher".
+    mid : float, optional
+        Minimally important difference, a positive distance on the analysis scale.
+    one_stage : str
+        "rare" (when an arm has no event or a risk is below 5%), "always" or "never".
+    force_small_study : bool
+        Do small-study tests and trim and fill with fewer than ten trials too; they are marked.
+
+    Returns
+    -------
+    TableAnalysis
+
+    Raises
+    ------
+    AnalysisError
+        Faulty numbers (trial and field named) or an unknown option.
+    """
+    plan = Plan(
+        tau2=str(tau2),
+        interval=str(interval),
+        level=level,
+        prediction_df=prediction_df,
+        correction=str(correction),
+        amount=amount,
+        subgroup=subgroup,
+        between_variance=between_variance,
+        covariates=tuple(covariates),
+        order=order,
+        comparator_risk=tuple_of(comparator_risk),
+        prior=prior,
+        better=better,
+        mid=mid,
+        one_stage=one_stage,
+        force_small_study=force_small_study,
+    )
+    if one_stage not in ("rare", "always", "never"):
+        raise AnalysisError(
+            "one_stage is not a known word.", found=one_stage, expected="rare, always or never"
+        )
+    return _analyse(prepare(table, measure, plan))
+
+
+def _analyse(inputs: Inputs) -> TableAnalysis:
+    """Compute every part."""
+    plan, sizes, ledger = inputs.plan, inputs.sizes, Ledger()
+    k = len(sizes)
+    rare = models.one_stage(inputs, ledger)
+    empty = "" if k else "no trial has a usable effect on this measure"
+    single = empty or ("" if k > 1 else "one trial only")
+    common, random = _both_models(inputs) if k else (None, None)
+    if empty:
+        ledger.not_done |= {"common": empty, "random": empty}
+    return TableAnalysis(
+        measure=inputs.measure.value,
+        scale=str(sizes.attrs["scale"]),
+        level=plan.level,
+        options=plain(plan),
+        trials=_trials(inputs, common, random),
+        left_out=inputs.left_out,
+        common=common,
+        random=random,
+        estimators=ledger.attempt("estimators", single, lambda: models.tau2_estimators(inputs)) or {},
+        subgroups=ledger.attempt(
+            "subgroups", _why_no_subgroups(inputs) or single, lambda: models.subgroups(inputs)
+        ),
+        regression=ledger.attempt(
+            "regression",
+            empty or ("" if plan.covariates else "no covariate named"),
+            lambda: models.regression(inputs),
+        ),
+        leave_one_out=ledger.attempt("leave_one_out", single, lambda: classical.without_each(inputs)),
+        cumulative=ledger.attempt("cumulative", empty, lambda: classical.added_up(inputs)),
+        bayesian=ledger.attempt("bayesian", empty, lambda: models.bayesian(inputs)),
+        one_stage=rare,
+        absolute=_absolute(inputs, random, ledger),
+        not_done=ledger.not_done,
+        warnings=_warnings(inputs, random, rare),
+    )
+
+
+def _both_models(inputs: Inputs) -> tuple[PooledEffect, PooledEffect]:
+    """Common-effect and planned random-effects result."""
+    plan, y, v = inputs.plan, inputs.sizes["estimate"], inputs.sizes["variance"]
+    common = pool(y, v, model="common", level=plan.level)
+    random = pool(
+        y, v, tau2=plan.tau2, interval=plan.interval, level=plan.level, prediction_df=plan.prediction_df
+    )
+    return common, random
+
+
+def _trials(
+    inputs: Inputs, common: PooledEffect | None, random: PooledEffect | None
+) -> tuple[TrialEffect, ...]:
+    """Effects and shares of the usable trials."""
+    if common is None or random is None:
+        return ()
+    quantile = float(norm.ppf(0.5 + inputs.plan.level / 2))
+    attrs = inputs.sizes.attrs
+    corrected, routes = {str(t) for t in attrs["corrected"]}, {str(t): r for t, r in attrs["reported"]}
+    rows = []
+    for i, (trial, row) in enumerate(inputs.sizes.iterrows()):
+        estimate, error = float(row["estimate"]), float(np.sqrt(row["variance"]))
+        rows.append(
+            TrialEffect(
+                trial=str(trial),
+                estimate=estimate,
+                variance=float(row["variance"]),
+                standard_error=error,
+                ci_low=estimate - quantile * error,
+                ci_high=estimate + quantile * error,
+                weight_common=float(common.weights[i]),
+                weight_random=float(random.weights[i]),
+                corrected=str(trial) in corrected,
+                route=routes.get(str(trial), "as planned"),
+            )
+        )
+    return tuple(rows)
+
+
+def _why_no_subgroups(inputs: Inputs) -> str:
+    """Reason why there is no subgroup analysis, empty when there is one."""
+    column = inputs.plan.subgroup
+    if column not in inputs.table.columns:
+        return f"the table has no column {column}"
+    return ""
+
+
+def _absolute(inputs: Inputs, headline: PooledEffect | None, ledger: Ledger) -> tuple[AbsoluteEffect, ...]:
+    """Absolute effects of the random-effects result, or the reason why there are none."""
+    reason = "" if inputs.plan.comparator_risk else "no comparator risk given"
+    if headline is None:
+        ledger.not_done["absolute"] = reason or "there is no pooled effect"
+        return ()
+    return ledger.attempt("absolute", reason, lambda: models.absolute(inputs, headline)) or ()
+
+
+def _warnings(
+    inputs: Inputs, headline: PooledEffect | None, rare: dict[str, OneStageEffect]
+) -> tuple[str, ...]:
+    """Sentences that belong to the numbers."""
+    attrs, words = inputs.sizes.attrs, []
+    if inputs.left_out:
+        names = ", ".join(str(row.trial) for row in inputs.left_out)
+        words.append(f"Left out of the pooled effect, still listed: {names}.")
+    if attrs["corrected"]:
+        words.append(
+            f"Zero cells corrected ({attrs['correction']}): {', '.join(str(t) for t in attrs['corrected'])}."
+        )
+    if attrs["reported"]:
+        shown = ", ".join(f"{trial} ({route})" for trial, route in attrs["reported"])
+        words.append(f"Effect taken as reported, not computed from the arms: {shown}.")
+    words += headline.remarks if headline else ()
+    if inputs.plan.better is None:
+        words.append("No good direction was given: 'benefit' in the Bayesian part means a lower value.")
+    if rare and inputs.measure is not Measure.ODDS_RATIO:
+        words.append("The one-stage models speak of the odds ratio, whatever the measure of the table.")
+    return tuple(words + models.prior_warnings(inputs))
