@@ -15,10 +15,11 @@ from treering.monitoring.boundaries import (
     nominal_p,
 )
 from treering.monitoring.calibrate import Calibration, calibrate
-from treering.monitoring.crossing import Crossing, crossing_probabilities
+from treering.monitoring.crossing import Crossing, conditional_crossing, crossing_probabilities
 from treering.monitoring.dependence import RestsOn, rests_on
 from treering.monitoring.design import SimulationDesign
 from treering.monitoring.finding import LedgerState
+from treering.monitoring.forecast import Forecast, ForecastStep, OngoingTrial, forecast
 from treering.monitoring.futility import FutilityBoundaries, futility_boundaries, next_futility_bound
 from treering.monitoring.hindsight import HindsightCurve, hindsight
 from treering.monitoring.inference import (
@@ -38,6 +39,7 @@ from treering.monitoring.information import (
 )
 from treering.monitoring.ledger import ledger_state, next_look
 from treering.monitoring.look import Look
+from treering.monitoring.next_trial import NextTrial, next_trial
 from treering.monitoring.opinions import Opinion, OpinionStrip, second_opinions
 from treering.monitoring.participants import (
     events_for_information,
@@ -58,12 +60,16 @@ __all__ = [
     "Calibration",
     "Crossing",
     "DetectableEffect",
+    "Forecast",
+    "ForecastStep",
     "FutilityBoundaries",
     "HindsightCurve",
     "LedgerState",
     "Look",
     "MonitoringPlan",
     "NextBoundary",
+    "NextTrial",
+    "OngoingTrial",
     "Opinion",
     "OpinionStrip",
     "RestsOn",
@@ -77,10 +83,12 @@ __all__ = [
     "boundaries_for_alpha",
     "boundary_table",
     "calibrate",
+    "conditional_crossing",
     "conditional_power",
     "crossing_probabilities",
     "detection_constant",
     "events_for_information",
+    "forecast",
     "futility_boundaries",
     "hindsight",
     "information_per_participant",
@@ -95,6 +103,7 @@ __all__ = [
     "next_boundary",
     "next_futility_bound",
     "next_look",
+    "next_trial",
     "nominal_p",
     "predictive_power",
     "repeated_interval",
