@@ -8,11 +8,13 @@ same Idempotency-Key.
 from __future__ import annotations
 
 import hashlib
+import logging
 import os
 import re
 import smtplib
 import ssl
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from email.message import EmailMessage
@@ -36,6 +38,20 @@ AnswerT = TypeVar("AnswerT")
 
 class _TryAgain(Exception):
     """The network or the other side failed in a way that may pass; the text holds no secret."""
+
+
+@contextmanager
+def _hushed(*names: str) -> Iterator[None]:
+    """Keep libraries from logging an address: it may hold a token, whatever the level of logging."""
+    loggers = [logging.getLogger(name) for name in names]
+    before = [logger.disabled for logger in loggers]
+    for logger in loggers:
+        logger.disabled = True
+    try:
+        yield
+    finally:
+        for logger, disabled in zip(loggers, before, strict=True):
+            logger.disabled = disabled
 
 
 @dataclass(frozen=True)
@@ -235,13 +251,14 @@ class Webhook:
             "text": message.text,
         }
         try:
-            answer = requests.post(
-                message.address,
-                json=content,
-                headers={"Idempotency-Key": message.id, "User-Agent": "treering"},
-                timeout=self.timeout,
-                allow_redirects=False,
-            )
+            with _hushed("urllib3.connectionpool"):
+                answer = requests.post(
+                    message.address,
+                    json=content,
+                    headers={"Idempotency-Key": message.id, "User-Agent": "treering"},
+                    timeout=self.timeout,
+                    allow_redirects=False,
+                )
         except (requests.ConnectionError, requests.Timeout):
             # From None: the text of the cause holds the address, and with it perhaps a token.
             raise _TryAgain(f"{host} could not be reached") from None
@@ -263,10 +280,12 @@ class AppriseService:
         import apprise  # loaded here: it takes long, and few reviews use it
 
         service = apprise.Apprise()
-        if not service.add(message.address):
+        plain = apprise.NotifyFormat.TEXT
+        with _hushed("apprise", "urllib3.connectionpool"):
+            known = service.add(message.address)
+            taken = known and service.notify(title=message.subject, body=message.text, body_format=plain)
+        if not known:
             raise message.fails("apprise does not know this address.", "Correct it in config/panel.toml.")
-        if not service.notify(
-            title=message.subject, body=message.text, body_format=apprise.NotifyFormat.TEXT
-        ):
+        if not taken:
             raise message.fails("the service that apprise reaches did not take it.")
         return "sent"
