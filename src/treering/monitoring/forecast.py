@@ -172,14 +172,12 @@ def forecast(
         )
         for i, (trial, day, _, late) in enumerate(dated)
     )
-    first = dated[0][2] if dated else None
+    asked = next_trial(plan, looks, estimates, variances, information=dated[0][2]) if dated else None
     known = {trial for trial, *_ in dated}
     return Forecast(
         steps=steps,
         reaches=_reaches(last, steps),
-        next_trial=None
-        if first is None
-        else next_trial(plan, looks, estimates, variances, information=first),
+        next_trial=asked,
         not_dated=tuple(trial.trial for trial in ongoing if trial.trial not in known),
     )
 
