@@ -77,6 +77,29 @@ def test_outcomes_without_events_need_only_people():
     assert list(ledger.columns) == ["synthesis", "trial", "arm", "contrasts", "used", "randomised", "unused"]
 
 
+def test_split_contrasts_pass_the_ledger_and_unsplit_ones_do_not(counts):
+    contrasts = counts((3, 40, 6, 42), (4, 41, 6, 42)).assign(
+        trial="Alder", intervention_arm=["cap", "mitt"], comparator_arm="usual care"
+    )
+    split = effects.arm_uses(effects.split_shared_comparator(contrasts), "failed first attempt")
+    assert len(split) == 4
+    assert effects.arm_ledger(split, ARMS)["unused"].tolist() == [0, 0, 0]
+    with pytest.raises(
+        AnalysisError, match=r"Found: 84\.0 \(arm usual care in synthesis failed first attempt\)"
+    ):
+        effects.arm_ledger(effects.arm_uses(contrasts, "failed first attempt"), ARMS)
+
+
+def test_continuous_contrasts_are_listed_without_events(means):
+    contrasts = means((5, 2, 30, 6, 2, 33)).assign(
+        trial="Alder", intervention_arm="cap", comparator_arm="mitt"
+    )
+    uses = effects.arm_uses(contrasts, "pain")
+    assert uses.to_numpy().tolist() == [["pain", "Alder", "cap", 30.0], ["pain", "Alder", "mitt", 33.0]]
+    with pytest.raises(AnalysisError, match="intervention_arm: the column is missing"):
+        effects.arm_uses(contrasts.drop(columns="intervention_arm"), "pain")
+
+
 @given(parts=st.integers(1, 9), total=st.integers(1, 500))
 def test_equal_shares_of_an_arm_always_pass_and_one_share_more_never_does(parts, total):
     arms = pd.DataFrame({"trial": ["Birch"], "arm": ["usual care"], "randomised": [total]})

@@ -68,6 +68,34 @@ def test_a_table_mixes_clusters_and_people(counts):
     assert effective["variance"] == pytest.approx(inflated["variance"], rel=1e-12)
 
 
+def test_a_cluster_trial_with_only_a_reported_effect_is_listed_and_not_divided(counts):
+    table = counts((63, 295, 84, 330), (np.nan, 295, np.nan, 330), index=["Alder", "Birch"])
+    table["mean_cluster_size"], table["intracluster_correlation"] = 29.8, 0.02
+    found = effects.effective_table(table)
+    assert found["design_effect"].tolist() == [pytest.approx(1.576), 1]
+    assert found.loc["Birch", "intervention_total"] == 295
+    assert found.attrs["taken_as_reported"] == ("Birch",)
+
+
+def test_means_keep_their_sd_and_lose_people(means):
+    table = means((5, 2, 158, 6, 2.5, 316), index=["Alder"])
+    table["mean_cluster_size"], table["intracluster_correlation"] = 30, 0.02
+    found = effects.effective_table(table).loc["Alder"]
+    assert (found["intervention_total"], found["comparator_total"]) == (
+        pytest.approx(100),
+        pytest.approx(200),
+    )
+    assert (found["intervention_sd"], found["comparator_mean"]) == (2, 6)
+
+
+def test_varying_cluster_sizes_inflate_further(counts):
+    table = counts((63, 295, 84, 330), index=["Alder"])
+    table["mean_cluster_size"], table["intracluster_correlation"] = 30, 0.02
+    table["cluster_size_variation"] = 0.5
+    # Eldridge et al. 2006: 1 + (1.25*30 - 1)*0.02 = 1.73, by hand.
+    assert effects.effective_table(table)["design_effect"].tolist() == [pytest.approx(1.73)]
+
+
 @pytest.mark.parametrize(
     ("size", "icc", "field"),
     [(29.8, np.nan, "intracluster_correlation"), (0.5, 0.02, "mean_cluster_size"), (20, 1.2, "intracluster")],

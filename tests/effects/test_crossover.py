@@ -27,10 +27,10 @@ def test_the_paired_mean_difference_is_that_of_the_paired_t_test(pairs):
 def test_the_paired_standardized_difference_has_the_spread_it_states():
     # Seeded simulation of 6,000 crossover trials of 80 people, correlation 0.6, true difference half an SD.
     rng, r, n = np.random.default_rng(17), 0.6, 80
-    data = rng.multivariate_normal([0.5, 0], [[1, r], [r, 1]], size=(6000, n))
+    data = rng.multivariate_normal([0.5, 0], [[1, r], [r, 1]], size=(6000, n)) + 3
     means, sds = data.mean(axis=1), data.std(axis=1, ddof=1)
     observed = (means[:, 0] - means[:, 1]) / np.sqrt((sds**2).mean(axis=1))
-    stated = effects.paired_standardized_mean_difference(0.5, 1, 0, 1, n, correlation=r)
+    stated = effects.paired_standardized_mean_difference(3.5, 1, 3, 1, n, correlation=r)
     assert observed.mean() == pytest.approx(stated["estimate"], rel=0.02)
     assert observed.var() == pytest.approx(stated["variance"], rel=0.08)
 

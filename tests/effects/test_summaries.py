@@ -84,6 +84,17 @@ def test_the_skewness_check_calls_one_normal_sample_in_twenty_skewed(samples, sc
     assert calls / len(samples) == pytest.approx(0.05, abs=3 * math.sqrt(0.05 * 0.95 / len(samples)))
 
 
+def test_the_critical_values_are_those_of_the_printed_formulas():
+    # Shi et al. 2020, formulas from memory, n = 40 by hand: 1.01/ln 49 + 2.43/41, 2.66/sqrt 40 - 5.92/1600,
+    # 2.97/sqrt 40 - 39.1/64000; statistics (2 + 25 - 20)/23 and (7 + 14 - 20)/7, weight 2.65 ln 24/sqrt 40.
+    by_range, by_quartiles, by_both = (
+        effects.skewness_check(10, 40, **given) for given in (RANGE, QUARTILES, FIVE)
+    )
+    assert (by_range.statistic, by_range.critical) == pytest.approx((7 / 23, 0.3187869556), rel=1e-9)
+    assert (by_quartiles.statistic, by_quartiles.critical) == pytest.approx((1 / 7, 0.4168829288), rel=1e-9)
+    assert (by_both.statistic, by_both.critical) == pytest.approx((0.4052726828, 0.4689872950), rel=1e-9)
+
+
 def test_a_skewed_summary_is_converted_with_a_warning_in_the_record():
     found = effects.mean_and_sd_from_summary(3, 60, quartile_1=2, quartile_3=12)
     assert found["skewness"] > found["skewness_critical"]

@@ -1,6 +1,6 @@
 """One trial to an estimate and its variance on the analysis scale."""
 
-from treering.effects.arms import arm_ledger
+from treering.effects.arms import arm_ledger, arm_uses
 from treering.effects.baseline import change_from_baseline, correlation_from_change
 from treering.effects.cluster import design_effect, effective_numbers, effective_table, inflated_variance
 from treering.effects.continuous import small_sample_factor
@@ -37,6 +37,7 @@ __all__ = [
     "LeftOut",
     "Skewness",
     "arm_ledger",
+    "arm_uses",
     "change_from_baseline",
     "combine_binary",
     "combine_continuous",

@@ -67,6 +67,45 @@ def arm_ledger(uses: pd.DataFrame, arms: pd.DataFrame) -> pd.DataFrame:
     return ledger.sort_values(["synthesis", "trial", "arm"], ignore_index=True)
 
 
+def arm_uses(contrasts: pd.DataFrame, synthesis: str) -> pd.DataFrame:
+    """List what the contrasts of one synthesis use of each arm, ready for :func:`arm_ledger`.
+
+    Parameters
+    ----------
+    contrasts : DataFrame
+        One row for each contrast: ``trial``, ``intervention_arm``, ``comparator_arm``,
+        ``intervention_total``, ``comparator_total`` and, for binary outcomes, ``intervention_events`` and
+        ``comparator_events``. Where a side joins arms it bears the name under which ``arms`` lists them
+        joined.
+    synthesis : str
+        Name of the synthesis.
+
+    Returns
+    -------
+    DataFrame
+        Two rows for each contrast: ``synthesis``, ``trial``, ``arm``, ``participants`` and, if given,
+        ``events``.
+
+    Raises
+    ------
+    AnalysisError
+        If a column is missing.
+    """
+    _need(contrasts, ("trial", *(f"{side}_{field}" for side in checks.ARMS for field in ("arm", "total"))))
+    names = {"arm": "arm", "total": "participants"}
+    if {"intervention_events", "comparator_events"} <= set(contrasts.columns):
+        names["events"] = "events"
+    sides = [
+        contrasts[["trial", *(f"{side}_{field}" for field in names)]].set_axis(
+            ["trial", *names.values()], axis=1
+        )
+        for side in checks.ARMS
+    ]
+    uses = pd.concat(sides, ignore_index=True)
+    uses.insert(0, "synthesis", synthesis)
+    return uses
+
+
 def _read(table: pd.DataFrame, count: str, with_events: bool) -> pd.DataFrame:
     """Read counts as numbers from zero; participants must be there, events may be empty."""
     labels = np.asarray(table["trial"].to_numpy(), dtype=object)

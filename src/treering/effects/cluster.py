@@ -11,7 +11,7 @@ import pandas as pd
 
 from treering.effects import checks
 from treering.effects.record import NOT_STATED, Conversion, need, need_finite, need_positive, record
-from treering.effects.rows import FloatArray, TextArray, refuse
+from treering.effects.rows import BoolArray, FloatArray, TextArray, refuse
 from treering.errors import AnalysisError
 
 HANDBOOK = "Cochrane Handbook for Systematic Reviews of Interventions, version 5.1 (2011), section 16.3"
@@ -156,8 +156,10 @@ def effective_table(table: pd.DataFrame) -> pd.DataFrame:
     Returns
     -------
     DataFrame, k rows
-        The table with effective events, totals and person-time, and ``design_effect`` (1 where people were
-        randomised).
+        The table with effective events, totals and person-time, and ``design_effect``: 1 where people were
+        randomised, and where a cluster trial gives no arm-level figures to divide. The latter are listed in
+        ``attrs["taken_as_reported"]`` (labels): their reported effect is right only if the report allowed for
+        clustering; if not, its variance needs :func:`inflated_variance`.
 
     Raises
     ------
@@ -168,13 +170,27 @@ def effective_table(table: pd.DataFrame) -> pd.DataFrame:
         if field not in table.columns:
             raise AnalysisError(f"{field}: the column is missing.", expected=" ".join(COLUMNS))
     labels = checks.trial_labels(table)
-    effect = _design_effects(table, labels)
+    divisible = _has_arms(table)
+    wanted = _design_effects(table, labels)
+    effect = np.where(divisible, wanted, 1.0)
     out = table.copy()
     for field in _DIVIDED:
         if field in table.columns:
             out[field] = checks.read_numbers(table, field, labels) / effect
     out["design_effect"] = effect
+    out.attrs["taken_as_reported"] = tuple(labels[~divisible & (wanted > 1)])
     return out
+
+
+def _has_arms(table: pd.DataFrame) -> BoolArray:
+    """Tell which rows give one of the sets of arm-level figures in full."""
+    found = np.zeros(len(table), dtype=bool)
+    for second in ("events", "mean"):
+        for base in ("total", "time"):
+            fields = [f"{arm}_{field}" for arm in checks.ARMS for field in (second, base)]
+            if set(fields) <= set(table.columns):
+                found |= table[fields].notna().all(axis=1).to_numpy()
+    return found
 
 
 def _design_effects(table: pd.DataFrame, labels: TextArray) -> FloatArray:
