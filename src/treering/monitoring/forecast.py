@@ -21,7 +21,7 @@ from treering.monitoring.checks import FloatArray, check_positive
 from treering.monitoring.crossing import crossing_probabilities
 from treering.monitoring.ledger import ledger_state
 from treering.monitoring.look import Look
-from treering.monitoring.next_trial import NextTrial
+from treering.monitoring.next_trial import NextTrial, next_trial
 from treering.monitoring.plan import MonitoringPlan
 from treering.monitoring.redrawn import SAME, Used, critical_value, spent_at
 
