@@ -109,7 +109,7 @@ def check(folder: Path = Path(), /, *, json: bool = False) -> int:
     """
     from treering.update.previewing import preview
 
-    found = preview(folder, datetime.now(UTC).date().isoformat())
+    found = preview(folder, datetime.now(UTC).replace(microsecond=0).isoformat())
     if json:
         say_json(found)
     else:

@@ -64,13 +64,11 @@ def _means(means: tuple[float, float, int, float, float, int]) -> Record:
 
 def risk_of_bias(trial: InventedTrial, day: str) -> Record:
     """Return two people's agreed judgement of the trial's main result."""
-    domains = dict.fromkeys(
-        ("randomisation", "deviations", "missing_data", "measurement", "selection"), "Low"
-    )
-    support = {"overall": "invented for the demo"}
+    names = ("randomisation", "deviations", "missing_data", "measurement", "selection")
+    domains = dict.fromkeys(names, "Low")
     if trial.overall != "Low":
         domains[trial.weak_domain] = trial.overall
-        support[trial.weak_domain] = "invented for the demo"
+    support = dict.fromkeys((*names, "overall"), "invented for the demo")
     return {
         "record": "risk-of-bias judgement",
         "trial": trial.id,

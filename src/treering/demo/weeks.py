@@ -34,7 +34,7 @@ def weeks() -> tuple[Week, ...]:
         Week("2026-01-05", "base version: four trials, read by two people apart", _base("2026-01-05")),
         Week("2026-01-12", "a quiet week: searched, nothing new", (searches("2026-01-12", 14, 0),)),
         Week("2026-01-19", "two new trials; a third person settles one difference", _two_new("2026-01-19")),
-        Week("2026-01-26", "an erratum corrects one number of the Cedar trial", _correction("2026-01-26")),
+        Week("2026-01-26", "an erratum corrects one number; certainty is rated", _correction("2026-01-26")),
         Week("2026-02-02", "the large Gorse trial", _one_new(GORSE, "2026-02-02")),
         Week("2026-02-09", "the report of the Gorse trial is retracted", _retraction("2026-02-09")),
         Week("2026-02-16", "the large Hazel trial reports", _one_new(HAZEL, "2026-02-16")),
@@ -51,6 +51,8 @@ def _base(day: str) -> tuple[DemoFile, ...]:
         "expected_end": "2026-01-31",
         "status": "recruiting",
         "outcomes": ["failed-first-attempt", "pain", "skin-burns"],
+        "by": "IN",
+        "date": day,
     }
     return (*files, as_toml("hazel-ongoing.toml", ongoing), searches(day, 41, 6))
 
@@ -87,7 +89,17 @@ def _correction(day: str) -> tuple[DemoFile, ...]:
         "reason": "the journal corrected one count in table 2 (invented)",
         "seen_by": "IN",
     }
-    return (*files, as_toml("cedar-erratum.toml", erratum), searches(day, 12, 0))
+    certainty = {
+        "record": "certainty judgement",
+        "outcome": "failed-first-attempt",
+        "rating": "Moderate",
+        "reasons": {"imprecision": "the interval reaches effects too small to matter (invented)"},
+        "raters": ["TR", "SL"],
+        "version": 2,
+        "date": "2026-01-24",
+    }
+    papers = (as_toml("cedar-erratum.toml", erratum), as_toml("certainty-failed.toml", certainty))
+    return (*files, *papers, searches(day, 12, 0))
 
 
 def _one_new(trial: InventedTrial, day: str) -> tuple[DemoFile, ...]:

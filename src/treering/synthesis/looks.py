@@ -230,14 +230,7 @@ def _rests_body(rests: RestsOn, per_participant: float | None) -> dict[str, Any]
     people = None
     if rests.null_information is not None and per_participant:
         people = math.ceil(rests.null_information / per_participant)
-    return {
-        "trials": [list(group) for group in rests.sets],
-        "tau2": rests.tau2_lost,
-        "tau2_now": rests.tau2,
-        "null_information": rests.null_information,
-        "null_participants": people,
-        "text": rests.sentence,
-    }
+    return rests.to_dict() | {"null_participants": people}
 
 
 def next_tau2(plan: MonitoringPlan, estimates: Any, variances: Any) -> float:

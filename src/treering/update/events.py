@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
+from datetime import date
 from typing import Any
 
 from treering.notify import Event
+from treering.report.certainty import with_staleness
 from treering.store import Head
-from treering.terms import CROSSED, EntryKind, EventClass, Verdict
+from treering.terms import CROSSED, EntryKind, EventClass, NoticeKind, Verdict
 from treering.update.versions import Analyses, Basis
+from treering.update.views import rated
 
 
 def events_of(basis: Basis, analyses: Analyses, changes: Mapping[str, Any], head: Head) -> list[Event]:
@@ -63,12 +66,40 @@ def _classes(
         yield EventClass.CROSSING
     elif now is Verdict.NO_LONGER_SUPPORTED and was is not now:
         yield EventClass.CROSSING_LOST
-    trials = {row["trial"] for row in after["trials"]}
-    if any(e.kind is EntryKind.INTEGRITY and e.body["trial"] in trials for e in basis.fresh):
+    elif _noticed(after, basis):
         yield EventClass.INTEGRITY
-    old, new = ((body or {}).get("certainty") for body in (before, after))
-    if new and new["stale"] and not (old and old["stale"] and old["dated"] == new["dated"]):
-        yield EventClass.CERTAINTY_STALE
+    elif _stale(after, basis) and not _told_stale(after["synthesis"], basis):
+        yield EventClass.CERTAINTY_STALE  # every other notice carries the age of the rating itself
+
+
+def _noticed(body: Mapping[str, Any], basis: Basis) -> bool:
+    """Say whether a notice that bears on trust came in; an erratum is a correction like any other."""
+    trials = {row["trial"] for row in body["trials"]}
+    return any(
+        entry.kind is EntryKind.INTEGRITY
+        and entry.body["trial"] in trials
+        and entry.body["notice"] != NoticeKind.ERRATUM
+        for entry in basis.fresh
+    )
+
+
+def _stale(body: Mapping[str, Any], basis: Basis) -> bool:
+    """Say whether the certainty rating of an outcome is older than its numbers now."""
+    name = body["synthesis"]
+    day = date.fromisoformat(basis.date)
+    judgements = [judgement for judgement in rated(basis.state) if judgement["outcome"] == name]
+    reread = basis.protocol.living.certainty_reread_days
+    return any(j["stale"] for j in with_staleness(judgements, {name: body}, day=day, reread_days=reread))
+
+
+def _told_stale(synthesis: str, basis: Basis) -> bool:
+    """Say whether people were told since the rating was laid down: once for each rating is enough."""
+    rating = basis.state.get(f"certainty/{synthesis}")
+    return rating is not None and any(
+        notice.seq > rating.seq
+        for notice in basis.state.live(EntryKind.NOTICE)
+        if notice.body["synthesis"] == synthesis and notice.body["event"] == EventClass.CERTAINTY_STALE
+    )
 
 
 def _told_before(basis: Basis, synthesis: str) -> Iterable[str]:

@@ -12,15 +12,15 @@ from treering.update.taking_in import moved, read_intake, verify
 from treering.update.versions import TRIGGERS
 
 
-def preview(folder: Path, day: str) -> dict[str, Any]:
-    """Read config and intake of the review in `folder` and say what an update on `day` would do.
+def preview(folder: Path, known_at: str) -> dict[str, Any]:
+    """Read config and intake of the review in `folder` and say what an update would do.
 
     Parameters
     ----------
     folder : Path
         The review folder.
-    day : str
-        ISO date that the update would have.
+    known_at : str
+        ISO date-time that the update would have.
 
     Returns
     -------
@@ -40,8 +40,9 @@ def preview(folder: Path, day: str) -> dict[str, Any]:
         store = open_evidence(review)
         state = store.state()
         store.close()
-    taken = verify(review, state, read_intake(review, state, day))
-    fresh = [entry for entry in taken.entries if state.after([entry]) is not state]
+    taken = verify(review, state, read_intake(review, state, known_at[:10]), known_at)
+    after = state.after(taken.entries, known_at=known_at)
+    fresh = [entry for entry in after.everything() if entry.seq >= len(state)]
     return {
         "files": [dropped.shown for dropped in (*moved(taken.checked), *taken.checked.returned)],
         "returned": taken.returned,

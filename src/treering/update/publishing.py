@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import shutil
-from datetime import date, timedelta
 from pathlib import Path
 from typing import Any
 
@@ -113,10 +112,6 @@ def publish_index(store: EvidenceStore, review: Review, *, status: dict[str, Any
     return path
 
 
-def _plus(day: str, days: int) -> str:
-    return (date.fromisoformat(day) + timedelta(days=days)).isoformat()
-
-
 def status_of(state: State, context_day: str, review: Review, waiting: int) -> dict[str, Any]:
     """Say how the living review stands: last run, searches, what waits, what is due.
 
@@ -142,11 +137,7 @@ def status_of(state: State, context_day: str, review: Review, waiting: int) -> d
             source = entry.body["source"]
             searches[source] = max(searches.get(source, ""), entry.body["date"])
     runs = state.live(EntryKind.RUN)
-    searched = "; ".join(f"{source} {day}" for source, day in sorted(searches.items()))
     return {
-        "text": f"living; last run {context_day}; searched to: {searched or 'no search run is recorded'}; "
-        f"{waiting} result(s) wait for verification; next update due "
-        f"{_plus(context_day, review.protocol.living.update_every_days)}.",
         "date": context_day,
         "searches": dict(sorted(searches.items())),
         "planned_sources": dict(sorted(review.protocol.living.search_every_days.items())),

@@ -76,7 +76,7 @@ def read_intake(review: Review, state: State, day: str) -> TakenIn:
     return TakenIn(checked, (*plan, *back, *fresh))
 
 
-def verify(review: Review, state: State, read: TakenIn) -> TakenIn:
+def verify(review: Review, state: State, read: TakenIn, known_at: str) -> TakenIn:
     """Pair what was read and add the results that two people, or a third, have verified.
 
     Parameters
@@ -87,12 +87,14 @@ def verify(review: Review, state: State, read: TakenIn) -> TakenIn:
         The evidence before this run.
     read : TakenIn
         What `read_intake` gave.
+    known_at : str
+        ISO date-time of the run.
 
     Returns
     -------
     TakenIn
     """
-    settled = settle(state.after(read.entries), review.protocol)
+    settled = settle(state.after(read.entries, known_at=known_at), review.protocol)
     return TakenIn(read.checked, read.entries + settled.entries, settled.waiting)
 
 

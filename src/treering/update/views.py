@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from typing import Any
 
 from treering.errors import StoreError
 from treering.intake import settle
-from treering.report import ReportView, build_view, version_summary
+from treering.report import ReportView, build_view
 from treering.store import EvidenceStore, State, StoredEntry
 from treering.terms import EntryKind
 from treering.update.versions import Basis, analyses_of, changes_of, stored_protocol
@@ -105,7 +106,7 @@ def view_from(store: EvidenceStore, basis: Basis, analyses: Mapping[str, dict[st
         status=_status(basis),
         waiting=settle(basis.state, basis.protocol).waiting,
         notices=_notices(store, basis.version),
-        certainty=_certainty(basis.state),
+        certainty=rated(basis.state),
         **{name: _bodies(basis.state.live(kind)) for name, kind in LISTS.items()},
     )
 
@@ -114,11 +115,27 @@ def _bodies(entries: Sequence[StoredEntry]) -> list[dict[str, Any]]:
     return [{**entry.body, "true_at": entry.true_at, "known_at": entry.known_at} for entry in entries]
 
 
-def _certainty(state: State) -> list[dict[str, Any]]:
+def rated(state: State) -> list[dict[str, Any]]:
+    """Return the certainty judgements, each bound to the numbers of the version it was made on."""
     return [
-        {**entry.body, "date": entry.body.get("date") or entry.true_at}
+        {
+            **entry.body,
+            "date": entry.body.get("date") or entry.true_at,
+            "numbers": entry.body.get("numbers") or _numbers_rated(state, entry.body),
+        }
         for entry in state.live(EntryKind.CERTAINTY)
     ]
+
+
+def _numbers_rated(state: State, body: Mapping[str, Any]) -> dict[str, Any]:
+    """Return what the raters saw: the numbers of the outcome in the version they name."""
+    seen = state.get(f"analysis/{body['outcome']}/{body['version']}")
+    if seen is None or not seen.body["pooled"]:
+        return {}
+    pooled = seen.body["pooled"]
+    look = (seen.body["monitoring"] or {}).get("look") or {}
+    numbers = {name: pooled[name] for name in ("estimate", "ci_low", "ci_high", "i2")}
+    return {**numbers, "k": seen.body["k"], "fraction": look.get("fraction")}
 
 
 def _notices(store: EvidenceStore, version: int) -> list[dict[str, Any]]:
@@ -144,8 +161,14 @@ def _status(basis: Basis) -> dict[str, Any]:
 def index_rows(store: EvidenceStore) -> list[dict[str, Any]]:
     """Return one row per version for reports/index.html, oldest first."""
     whole = store.state()
+    told = Counter(int(entry.body["version"]) for entry in whole.all(EntryKind.NOTICE))
     return [
-        version_summary(body, analyses_of(whole, int(body["version"])), folder_name(body))
+        {
+            **body,
+            "folder": folder_name(body),
+            "analyses": analyses_of(whole, int(body["version"])),
+            "notices": told[int(body["version"])],
+        }
         for body in store.versions()
     ]
 

@@ -89,7 +89,7 @@ def step_read(context: RunContext) -> TakenIn:
 def step_verify(context: RunContext, read: TakenIn) -> TakenIn:
     """Pair extractions and settle what two people, or a third, agree on; writes nothing."""
     with evidence(context) as store:
-        return verify(context.review, store.state(), read)
+        return verify(context.review, store.state(), read, context.known_at)
 
 
 def step_append(context: RunContext, taken: TakenIn) -> None:
