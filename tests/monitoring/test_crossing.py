@@ -9,7 +9,7 @@ from hypothesis import strategies as st
 from scipy import stats
 
 from treering.errors import AnalysisError
-from treering.monitoring import crossing_probabilities
+from treering.monitoring import conditional_crossing, conditional_power, crossing_probabilities
 
 
 def error_of(bounds):
@@ -107,3 +107,28 @@ def test_a_look_without_bounds_changes_nothing():
 def test_bounds_that_do_not_fit_the_looks_are_refused(bounds):
     with pytest.raises(AnalysisError, match="do not fit"):
         crossing_probabilities([0.5, 1.0], bounds)
+
+
+def test_with_one_look_to_come_the_chance_is_the_published_conditional_power():
+    # Lan and Wittes 1988: 318 of 400 deaths, Z = 2.82, critical value 1.96, no further effect: 0.89.
+    found = conditional_crossing(2.82, 0.795, [1.0], [1.96], drift=0.0, sides=1)
+    assert found.upper[0] == pytest.approx(0.89, abs=0.005)
+    assert found.upper[0] == pytest.approx(conditional_power(2.82, 0.795, critical_z=1.96, drift=0.0))
+
+
+def test_chances_of_looks_to_come_are_the_shares_of_seeded_paths():
+    # 400,000 paths from Z = 1.4 at 0.4; tolerance four Monte Carlo standard errors.
+    t, bounds, drift = np.array([0.6, 0.8, 1.0]), np.array([2.68, 2.29, 2.03]), 2.5
+    found = conditional_crossing(1.4, 0.4, t, bounds, drift=drift)
+    rng, steps = np.random.default_rng(20310111), np.diff(t, prepend=0.4)
+    moves = rng.standard_normal((400_000, 3)) * np.sqrt(steps) + drift * steps
+    z = (1.4 * math.sqrt(0.4) + np.cumsum(moves, axis=1)) / np.sqrt(t)
+    first = np.where(np.any(np.abs(z) >= bounds, axis=1), np.argmax(np.abs(z) >= bounds, axis=1), 9)
+    for look in range(3):
+        share = np.mean((first == look) & (z[:, look] > 0))
+        assert found.upper[look] == pytest.approx(share, abs=0.0032)
+
+
+def test_looks_that_are_over_cannot_come():
+    with pytest.raises(AnalysisError, match="do not follow from now"):
+        conditional_crossing(1.0, 0.5, [0.5, 1.0], [2.0, 2.0], drift=0.0)

@@ -8,7 +8,7 @@ import pytest
 from scipy import stats
 
 from treering.errors import NotConvergedError
-from treering.monitoring import panels
+from treering.monitoring import panels, recursion
 from treering.monitoring.recursion import advance, density, mirrored, start, tail, tail_bound
 
 
@@ -44,6 +44,16 @@ def test_narrowing_panels_carry_the_same_density_as_equal_ones(monkeypatch, gap)
     assert density(narrowing, 1.0, scores) == pytest.approx(density(equal, 1.0, scores), abs=1e-10)
     for score in (0.4, 1.5, 4.0):
         assert tail(narrowing, 1.0, score) == pytest.approx(tail(equal, 1.0, score), rel=1e-8)
+
+
+@pytest.mark.parametrize("edge", [1.5, 3.0])
+def test_summing_near_nodes_only_leaves_nothing_out(monkeypatch, edge):
+    steps = [0.1, 0.2, 0.201, 0.2015, 1.0]
+    near = carried(steps, edge, drift=0.5)
+    assert near.nodes.size**2 > recursion._DENSE
+    monkeypatch.setattr(recursion, "_DENSE", 10**9)
+    every = carried(steps, edge, drift=0.5)
+    assert near.mass == pytest.approx(every.mass, rel=1e-9, abs=1e-30)
 
 
 def test_mirroring_turns_the_density():

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from itertools import zip_longest
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -238,7 +237,7 @@ def _bounds(t: FloatArray, steps: FloatArray, sides: int) -> FloatArray:
     z = np.full(t.size, np.inf)
     paths: Paths = start()
     spending_looks = [look for look in range(t.size) if steps[look] > 0.0]
-    for look, following in zip_longest(spending_looks, spending_looks[1:]):
+    for look, following in zip(spending_looks, [*spending_looks[1:], None], strict=False):
         score = tail_bound(paths, t[look], steps[look] / sides)
         z[look] = score / math.sqrt(t[look])
         if following is not None and math.isfinite(score):

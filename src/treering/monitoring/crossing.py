@@ -4,13 +4,12 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from itertools import zip_longest
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from treering.errors import AnalysisError
-from treering.monitoring.checks import FloatArray, checked_increasing
+from treering.monitoring.checks import FloatArray, check_positive, check_sides, checked_increasing
 from treering.monitoring.recursion import Paths, advance, mirrored, start, tail
 
 
@@ -78,7 +77,7 @@ def crossing_probabilities(
     out = Crossing(np.zeros(t.size), np.zeros(t.size), np.zeros(t.size))
     active = [k for k in range(t.size) if high[k] < np.inf or low[k] > -np.inf or half[k] > 0.0]
     paths = start()
-    for k, following in zip_longest(active, active[1:]):
+    for k, following in zip(active, [*active[1:], None], strict=False):
         root = math.sqrt(t[k])
         out.upper[k] = tail(paths, t[k], high[k] * root, drift=drift)
         out.lower[k] = tail(mirrored(paths), t[k], -low[k] * root, drift=-drift)
@@ -87,6 +86,57 @@ def crossing_probabilities(
             regions = inside(low[k] * root, high[k] * root, half[k] * root)
             paths = advance(paths, t[k], regions, t[following], drift=drift)
     return out
+
+
+def conditional_crossing(
+    z: float, information: float, informations: ArrayLike, upper: ArrayLike, *, drift: float, sides: int = 2
+) -> Crossing:
+    """Return the chance of the first crossing at each look to come, given Z now.
+
+    Parameters
+    ----------
+    z : float
+        Z now; it has not crossed, or its crossing is set aside.
+    information : float
+        Information now, above 0.
+    informations : array_like, shape (k,)
+        Information at each look to come, increasing and above `information`.
+    upper : array_like, shape (k,)
+        Bounds of these looks; infinite where there is none.
+    drift : float
+        True effect from now on: the mean of Z is `drift` times the root of the information (on
+        fractions, the mean of Z at fraction 1).
+    sides : {1, 2}
+        2 counts crossings below minus the bound as `lower`.
+
+    Returns
+    -------
+    Crossing
+
+    Raises
+    ------
+    AnalysisError
+        If the looks do not come after now or the bounds do not fit them.
+
+    References
+    ----------
+    Lan and Wittes 1988, Biometrics 44:579, for several looks.
+    """
+    check_sides(sides)
+    check_positive(information, "information now")
+    t = checked_increasing(informations, "informations to come")
+    bounds = _bounds_of(upper, t, math.inf)
+    if not math.isfinite(z) or t[0] <= information:
+        raise AnalysisError(
+            "The looks to come do not follow from now.",
+            found=f"Z {z} at information {information}, next look at {t[0]}",
+            expected="a finite Z now and a next look with more information",
+            next_step="Give only looks that are still to come.",
+        )
+    score, more = z * math.sqrt(information), t - information
+    above = (bounds * np.sqrt(t) - score) / np.sqrt(more)
+    below = (-bounds * np.sqrt(t) - score) / np.sqrt(more) if sides == 2 else None
+    return crossing_probabilities(more, above, lower=below, drift=drift)
 
 
 def between(paths: Paths, information: float, half_width: float, *, drift: float = 0.0) -> float:

@@ -24,6 +24,8 @@ _REACH = 8.5  # standard deviations beyond which paths are dropped when no bound
 _FAR = 37.0  # standard deviations at which a double still holds a normal tail
 _LEAST = 1e-300  # the least probability that can be spent
 _WINDOW = 9.0  # standard deviations of a step that a window into a wide panel takes in
+_DENSE = 40_000  # pairs of nodes up to which all are summed
+_BLOCK = 64
 _ROOT_2PI = math.sqrt(2.0 * math.pi)
 
 
@@ -141,7 +143,7 @@ def density(paths: Paths, information: float, scores: FloatArray, *, drift: floa
     step = information - paths.information
     sigma, goals = math.sqrt(step), scores - drift * step
     nodes, mass = _narrow(paths, sigma)
-    total: FloatArray = _bells((goals[:, None] - nodes) / sigma) @ mass
+    total = _smoothed(goals, nodes, mass, sigma, math.sqrt(information))
     for left, width, held in _wide(paths, sigma):
         near = (goals > left - _WINDOW * sigma) & (goals < left + width + _WINDOW * sigma)
         low = np.maximum(goals[near] - _WINDOW * sigma, left)
@@ -267,6 +269,28 @@ def _clipped(low: float, high: float, information: float, drift: float) -> tuple
     floor = mean - (_REACH if math.isinf(low) else _FAR) * spread
     ceiling = mean + (_REACH if math.isinf(high) else _FAR) * spread
     return max(low, floor), min(high, ceiling)
+
+
+def _smoothed(
+    goals: FloatArray, nodes: FloatArray, mass: FloatArray, sigma: float, spread: float
+) -> FloatArray:
+    """Sum exp(-distance^2/2) over the nodes that count, distances in units of the step.
+
+    Only nodes near a goal count: within 9 standard deviations of the step around where a path that ends
+    there came from, which for a Z of z at the goal is z sigma/spread standard deviations nearer to 0.
+    """
+    if goals.size * nodes.size <= _DENSE:
+        return _bells((goals[:, None] - nodes) / sigma) @ mass
+    total = np.empty(goals.size)
+    for first in range(0, goals.size, _BLOCK):
+        block = goals[first : first + _BLOCK]
+        low, high = float(block.min()), float(block.max())
+        reach = sigma * (_WINDOW + max(abs(low), abs(high)) * sigma / spread**2)
+        ends = [min(low, nodes[-1]) - reach, max(high, nodes[0]) + reach]
+        begin, end = np.searchsorted(nodes, ends)
+        near = slice(int(begin), int(end))
+        total[first : first + _BLOCK] = _bells((block[:, None] - nodes[near]) / sigma) @ mass[near]
+    return total
 
 
 def _bells(away: FloatArray) -> FloatArray:
