@@ -81,6 +81,10 @@ def test_a_ratio_of_means_needs_means_above_zero(second):
         ((0.8, 0.0, 1.6), "ci_low", "not above zero"),
         ((0.72, 0.51, 1.43), "ci_low, ci_high", "not symmetric"),
         ((1.0, 0.4, 1.6), "ci_low, ci_high", "not symmetric"),
+        ((2, 1, 5), "ci_low, ci_high", "not symmetric"),
+        ((2, 1, 10), "ci_low, ci_high", "not symmetric"),
+        ((0.5, 0.4, 0.9), "ci_low, ci_high", "not symmetric"),
+        ((0.99, 0.98, 0.99), "ci_low, ci_high", "not symmetric"),
         ((0.8, np.nan, 1.6), "ci_low", "is missing"),
     ],
 )
@@ -126,12 +130,19 @@ def test_printed_intervals_pass_with_their_rounding(intervals, row):
     assert np.isfinite(effects.effect_sizes(intervals(row), "hazard-ratio").to_numpy()).all()
 
 
-@settings(deadline=None, max_examples=200)
-@given(
-    centre=st.floats(-1.5, 1.5),
-    error=st.floats(0.08, 0.6),
-    decimals=st.integers(2, 4),
-)
+# Invented: a precise ratio, a ratio with one decimal, a large ratio in whole numbers.
+@pytest.mark.parametrize("row", [(0.95, 0.93, 0.98), (1.5, 1.1, 2.0), (15, 4, 60)])
+def test_coarse_but_honest_ratios_pass(intervals, row):
+    assert np.isfinite(effects.effect_sizes(intervals(row), "hazard-ratio").to_numpy()).all()
+
+
+def test_a_difference_rounded_to_one_decimal_passes(intervals):
+    assert effects.effect_sizes(intervals((0.2, 0.1, 0.4)), "mean-difference")["estimate"].tolist() == [0.2]
+
+
+# From a standard error of 0.06 on, two decimals never move the middle by half of the half-width.
+@settings(deadline=None, max_examples=100)
+@given(centre=st.floats(-1.5, 1.5), error=st.floats(0.06, 0.6), decimals=st.integers(2, 4))
 def test_an_honest_interval_rounded_to_its_printed_digits_is_never_refused(centre, error, decimals):
     limits = np.exp([centre, centre - 1.96 * error, centre + 1.96 * error]).round(decimals)
     table = pd.DataFrame([limits], columns=["estimate", "ci_low", "ci_high"])

@@ -1,6 +1,6 @@
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from treering import effects
@@ -49,6 +49,7 @@ def test_the_design_effect_matches_the_variance_of_simulated_cluster_means():
     assert means.var() * sizes.sum() == pytest.approx(factor, rel=0.03)
 
 
+@settings(deadline=None)
 @given(size=st.floats(1, 500), icc=st.floats(0, 1), variation=st.floats(0, 2))
 def test_clustering_never_adds_information(size, icc, variation):
     assert effects.design_effect(size, icc, size_variation=variation)["design_effect"] >= 1

@@ -1,7 +1,7 @@
 import numpy as np
 import pandas as pd
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from treering import effects
@@ -65,6 +65,7 @@ def test_means_and_sds_of_a_shared_comparator_stay(means):
     assert found[["comparator_mean", "comparator_sd"]].drop_duplicates().to_numpy().tolist() == [[6, 2.5]]
 
 
+@settings(deadline=None)
 @given(shared_by=st.integers(1, 7), total=st.integers(1, 999))
 def test_the_shares_never_exceed_the_arm(shared_by, total):
     table = pd.DataFrame(

@@ -7,20 +7,21 @@ import numpy as np
 from treering.effects import checks
 from treering.effects.rows import BoolArray, FloatArray, IntArray, Rows, refuse
 
-# Where rounding would have to move the middle of an interval by more than this share of its half-width,
-# the printed digits are too coarse to yield a standard error, even if rounding could explain the gap.
-COARSEST = 0.25
+# How far rounding may have moved the middle of an interval, as a share of its half-width (own rule). Beyond
+# half of it the printed digits are too coarse to yield a standard error. Ratios are customarily printed with
+# two decimals (common practice, no source); with fewer, a fault is likelier than such a chance of rounding.
+COARSEST, COARSEST_RATIO = 0.5, 0.25
 _FLOAT_NOISE = 1e-6
 _MOST_DECIMALS = 12
 
 
 def check_interval(rows: Rows, *, log_scale: bool) -> None:
-    """Refuse an interval unless it has a width, holds its estimate and is symmetric on the analysis scale.
+    """Refuse an interval that has no width, misses its estimate or is lopsided where it is analysed.
 
     An interval taken as the estimate plus and minus a multiple of its standard error is symmetric on the
     scale of the analysis. Printed figures are rounded, so a gap between the estimate and the middle of the
-    limits is accepted if rounding of the printed digits can explain it and it stays within a quarter of the
-    half-width (own rule; beyond that the digits are too coarse to yield a standard error).
+    limits is accepted if rounding of the printed digits can explain it and it stays within half of the
+    half-width, or a quarter for a ratio printed with fewer than two decimals.
 
     Parameters
     ----------
@@ -65,10 +66,8 @@ def _symmetric(estimate: FloatArray, low: FloatArray, high: FloatArray, *, log_s
         return np.log(x) if log_scale else x
 
     decimals = np.maximum(printed_decimals(low), printed_decimals(high))
-    if (
-        log_scale
-    ):  # ratios below 10 are printed with a decimal at least; 2 (1 to 5) is no rounding to integers
-        decimals = np.maximum(decimals, np.where(high < 10, 1, 0))
+    if log_scale:  # a ratio below 10 has a decimal at least; 2 (1 to 5) is no rounding to integers
+        decimals = np.maximum(decimals, np.where(estimate < 10, 1, 0))
     half = _half_unit(decimals)
     half_estimate = _half_unit(np.maximum(decimals, printed_decimals(estimate)))
     middle_low = (scale(low - half) + scale(high - half)) / 2
@@ -78,7 +77,8 @@ def _symmetric(estimate: FloatArray, low: FloatArray, high: FloatArray, *, log_s
     )
     gap = np.abs(scale(estimate) - (scale(low) + scale(high)) / 2)
     width = (scale(high) - scale(low)) / 2
-    return (gap <= _FLOAT_NOISE * width) | (explained & (gap <= COARSEST * width))
+    coarsest = np.where((decimals < 2) & log_scale, COARSEST_RATIO, COARSEST)
+    return (gap <= _FLOAT_NOISE * width) | (explained & (gap <= coarsest * width))
 
 
 def printed_decimals(values: FloatArray) -> IntArray:

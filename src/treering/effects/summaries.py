@@ -13,7 +13,7 @@ import math
 from dataclasses import dataclass
 
 from scipy.integrate import quad
-from scipy.stats import norm
+from scipy.special import log_ndtr, ndtri
 
 from treering.effects.record import NOT_STATED, Conversion, need, need_finite, need_people, record
 
@@ -195,7 +195,7 @@ def expected_range(total: int) -> float:
     need_people(total=float(total))
 
     def missed(x: float) -> float:
-        return float(-math.expm1(total * norm.logcdf(x)) - math.exp(total * norm.logsf(x)))
+        return float(-math.expm1(total * log_ndtr(x)) - math.exp(total * log_ndtr(-x)))
 
     half, _ = quad(missed, 0, 40, points=[2, 5, 10], epsabs=1e-13, epsrel=1e-12, limit=200)
     return 2 * half
@@ -267,9 +267,9 @@ def _wan_sd(summary: _Summary) -> float:
     """Equations 9 (S1), 13 (S2) and 16 (S3) of Wan et al. 2014."""
     n, parts = summary.total, []
     if summary.has_range:
-        parts.append(summary.range[0] / (2 * norm.ppf((n - 0.375) / (n + 0.25))))
+        parts.append(summary.range[0] / (2 * ndtri((n - 0.375) / (n + 0.25))))
     if summary.has_quartiles:
-        parts.append(summary.quartiles[0] / (2 * norm.ppf((0.75 * n - 0.125) / (n + 0.25))))
+        parts.append(summary.quartiles[0] / (2 * ndtri((0.75 * n - 0.125) / (n + 0.25))))
     return float(sum(parts) / len(parts))
 
 
