@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 
-from treering.intake.check_alone import faults_alone, remarks_alone
+from treering.intake.check_alone import faults_alone, faults_of_effects, remarks_alone
 from treering.intake.check_together import faults_together, remarks_together
 from treering.intake.scene import Scene
 from treering.intake.values import Checked, Dropped, Fault, Located, Parsed, Remark
@@ -39,6 +39,8 @@ def check(parsed: Parsed, protocol: Protocol, view: StateView, *, known_date: st
     records = _standing(records, faults)
     scene = Scene(protocol, view, records, known_date)
     faults += [fault for item in records for fault in faults_alone(item, scene)]
+    records = _standing(records, faults)
+    faults += faults_of_effects(Scene(protocol, view, records, known_date))
     records = _standing(records, faults)
     records = _settle_links(records, faults, protocol, view, known_date)
     faults += _faults_of_copies(copies, faults)

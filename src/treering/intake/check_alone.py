@@ -5,7 +5,13 @@ from __future__ import annotations
 from collections.abc import Iterator
 from datetime import date
 
-from treering.intake.numbers import Finding, impossible_numbers, number_faults, number_remarks
+from treering.intake.numbers import (
+    Finding,
+    effect_faults,
+    impossible_numbers,
+    number_faults,
+    number_remarks,
+)
 from treering.intake.scene import Scene
 from treering.intake.sentences import closest
 from treering.intake.values import Fault, Located, Remark
@@ -53,6 +59,23 @@ def faults_alone(located: Located, scene: Scene) -> Iterator[Fault]:
             yield located.fault("outcome", _unknown_outcome(outcome, scene.protocol))
     if isinstance(record, Adjudication):
         yield from _adjudicated_numbers(located, record, scene.protocol)
+
+
+def faults_of_effects(scene: Scene) -> list[Fault]:
+    """Find the readings of the drop that the analysis could compute no effect from."""
+    usable = [
+        (located, number, result.numbers(), outcome.measure)
+        for located, record, number, result in scene.readings()
+        if result.not_usable is None
+        and not record.third_reading
+        and (outcome := scene.protocol.outcome(result.outcome)) is not None
+    ]
+    found = effect_faults([(numbers, measure) for _, _, numbers, measure in usable])
+    return [
+        located.fault(located.path(number, finding.field), finding.sentence)
+        for (located, number, _, _), finding in zip(usable, found, strict=True)
+        if finding is not None
+    ]
 
 
 def remarks_alone(located: Located, scene: Scene) -> Iterator[Remark]:

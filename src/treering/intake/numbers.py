@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from statistics import median
 from typing import NamedTuple
 
@@ -13,7 +13,7 @@ from treering.effects import effect_sizes
 from treering.effects.table import ROUTES
 from treering.errors import AnalysisError
 from treering.protocol import Outcome
-from treering.terms import RATIO_MEASURES
+from treering.terms import RATIO_MEASURES, Measure
 
 ARMS = ("intervention", "comparator")
 Numbers = Mapping[str, float | int]
@@ -48,14 +48,13 @@ def number_faults(values: Numbers, outcome: Outcome, *, randomised: int | None =
     Returns
     -------
     list of Finding
-        Empty if the numbers give an effect.
+        Empty if nothing stands against them; :func:`effect_faults` then lets the analysis try them.
     """
-    faults = [
+    return [
         *impossible_numbers(values, is_ratio=outcome.measure in RATIO_MEASURES),
         *_more_than_randomised(values, randomised),
         *_not_enough(values, outcome),
     ]
-    return faults or _gives_no_effect(values, outcome)
 
 
 def impossible_numbers(values: Numbers, *, is_ratio: bool) -> list[Finding]:
@@ -140,13 +139,41 @@ def _not_enough(values: Numbers, outcome: Outcome) -> list[Finding]:
     return [Finding(missing[0], sentence)]
 
 
-def _gives_no_effect(values: Numbers, outcome: Outcome) -> list[Finding]:
-    """Let the analysis itself try the numbers: what it would refuse later is refused now."""
+def effect_faults(results: Sequence[tuple[Numbers, Measure]]) -> list[Finding | None]:
+    """Let the analysis itself try many results: what it would refuse later is refused now.
+
+    Parameters
+    ----------
+    results : sequence of (numbers, measure)
+        Results that :func:`number_faults` found nothing wrong with.
+
+    Returns
+    -------
+    list of Finding or None
+        One for each result, None where an effect can be computed.
+    """
+    found: list[Finding | None] = [None] * len(results)
+    for measure in dict.fromkeys(measure for _, measure in results):
+        places = [at for at, (_, of) in enumerate(results) if of == measure]
+        for at, finding in _refused([(at, results[at][0]) for at in places], measure):
+            found[at] = finding
+    return found
+
+
+def _refused(rows: list[tuple[int, Numbers]], measure: Measure) -> Iterator[tuple[int, Finding]]:
+    """Find the rows that the analysis refuses, by halves: it takes a table whole and names one fault."""
     try:
-        effect_sizes(pd.DataFrame([dict(values)], index=["this trial"]), outcome.measure)
+        effect_sizes(
+            pd.DataFrame([dict(values) for _, values in rows], index=[at for at, _ in rows]), measure
+        )
     except AnalysisError as error:
-        return [_as_finding(error, values)]
-    return []
+        if len(rows) == 1:
+            ((at, values),) = rows
+            yield at, _as_finding(error, values)
+            return
+        middle = len(rows) // 2
+        yield from _refused(rows[:middle], measure)
+        yield from _refused(rows[middle:], measure)
 
 
 def _as_finding(error: AnalysisError, values: Numbers) -> Finding:

@@ -6,8 +6,8 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
-from treering.intake.numbers import number_faults
-from treering.intake.pair import Case, Final, Waiting, judge
+from treering.intake.numbers import Finding, effect_faults, number_faults
+from treering.intake.pair import Case, Final, Need, Waiting, judge
 from treering.intake.reread import drawn_fields, third_readings
 from treering.intake.verified import final_entries
 from treering.intake.view import StateView, StoredView
@@ -53,11 +53,10 @@ def settle(view: StateView, protocol: Protocol) -> Settled:
     """
     entries: dict[str, NewEntry] = {}
     waiting: list[Waiting] = []
-    for case in _cases(view):
-        answer = _answer(case, protocol)
+    for answer in _answers(view, protocol):
         if isinstance(answer, Waiting):
             waiting.append(answer)
-        elif answer is not None:
+        else:
             entries.update((entry.key, entry) for entry in final_entries(answer, view, entries))
     tasks: list[dict[str, Any]] = []
     for key in [key for key in entries if key.startswith("verification/")]:
@@ -91,25 +90,47 @@ def _cases(view: StateView) -> Iterator[Case]:
         )
 
 
-def _answer(case: Case, protocol: Protocol) -> Final | Waiting | None:
-    """Judge a case and let no impossible combination of settled numbers through."""
-    answer = judge(case, tolerance=protocol.verification.relative_tolerance)
-    if not isinstance(answer, Final):
-        return answer
-    since = max(entry.known_at for entry in answer.inputs)[:10]
-    outcome = protocol.outcome(case.outcome)
+def _answers(view: StateView, protocol: Protocol) -> list[Final | Waiting]:
+    """Judge every case and let no impossible combination of settled numbers through."""
+    tolerance = protocol.verification.relative_tolerance
+    judged = [judge(case, tolerance=tolerance) for case in _cases(view)]
+    answers = [
+        _held(answer, protocol) if isinstance(answer, Final) else answer for answer in judged if answer
+    ]
+    usable = [(at, a) for at, a in enumerate(answers) if isinstance(a, Final) and _is_usable(a)]
+    measures = {outcome.id: outcome.measure for outcome in protocol.outcomes}
+    found = effect_faults([(a.reading["values"], measures[a.case.outcome]) for _, a in usable])
+    for (at, final), finding in zip(usable, found, strict=True):
+        if finding is not None:
+            answers[at] = _unsound(final, [finding])
+    return answers
+
+
+def _is_usable(final: Final) -> bool:
+    return final.reading["not_usable"] is None
+
+
+def _held(final: Final, protocol: Protocol) -> Final | Waiting:
+    """Hold a verified reading against the protocol as it is now."""
+    outcome = protocol.outcome(final.case.outcome)
     if outcome is None:
-        why = "the outcome no longer stands in the protocol."
-        return Waiting(case.trial, case.outcome, "protocol", why, since)
-    if answer.reading["not_usable"] is not None:
-        return answer
-    randomised = answer.reading["study"].get("randomised")
-    faults = number_faults(answer.reading["values"], outcome, randomised=randomised)
-    if not faults:
-        return answer
+        return _held_back(final, "protocol", "the outcome no longer stands in the protocol.")
+    if not _is_usable(final):
+        return final
+    randomised = final.reading["study"].get("randomised")
+    faults = number_faults(final.reading["values"], outcome, randomised=randomised)
+    return _unsound(final, faults) if faults else final
+
+
+def _unsound(final: Final, faults: Sequence[Finding]) -> Waiting:
     why = "; ".join(f"{fault.field}: {fault.sentence}" for fault in faults)
-    readers = tuple(str(entry.body["extractor"]) for entry in answer.readings)
-    return Waiting(case.trial, case.outcome, "sound numbers", why, since, readers)
+    return _held_back(final, "sound numbers", why)
+
+
+def _held_back(final: Final, needs: Need, why: str) -> Waiting:
+    since = max(entry.known_at for entry in final.inputs)[:10]
+    readers = tuple(str(entry.body["extractor"]) for entry in final.readings)
+    return Waiting(final.case.trial, final.case.outcome, needs, why, since, readers)
 
 
 def _draw(
