@@ -10,8 +10,8 @@ from treering.intake.numbers import (
     effect_faults,
     impossible_numbers,
     number_faults,
-    number_remarks,
 )
+from treering.intake.oddities import number_remarks
 from treering.intake.scene import Scene
 from treering.intake.sentences import closest
 from treering.intake.values import Fault, Located, Remark

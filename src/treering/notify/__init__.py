@@ -1,16 +1,12 @@
 """From events of a version to people told of them, each once, with what was said kept in the store."""
 
 from treering.notify.build import build_notices, is_recused
-from treering.notify.channels import (
-    AppriseService,
-    Channel,
-    Email,
-    FileOutbox,
-    Message,
-    Webhook,
-)
 from treering.notify.deliver import Delivered, Sent, deliver, deliver_pending, pending
 from treering.notify.event import Event
+from treering.notify.mail import Email
+from treering.notify.message import Channel, Message
+from treering.notify.outbox import FileOutbox
+from treering.notify.web import AppriseService, Webhook
 
 __all__ = [
     "AppriseService",

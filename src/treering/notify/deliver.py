@@ -10,7 +10,10 @@ from pathlib import Path
 from treering.errors import NoticeError
 from treering.intake.view import StateView, StoredView
 from treering.notify.build import ENVIRONMENT
-from treering.notify.channels import AppriseService, Channel, Email, FileOutbox, Message, Webhook
+from treering.notify.mail import Email
+from treering.notify.message import Channel, Message
+from treering.notify.outbox import FileOutbox
+from treering.notify.web import AppriseService, Webhook
 from treering.protocol import Delivery, Panel
 from treering.records import NewEntry
 from treering.terms import EntryKind
