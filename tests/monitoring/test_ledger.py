@@ -8,7 +8,7 @@ import pytest
 from scipy.stats import multivariate_normal, norm, t
 
 from treering.errors import AmendmentError, AnalysisError
-from treering.monitoring.ledger import ledger_state, next_look
+from treering.monitoring.ledger import holds_new_data, ledger_state, next_look
 from treering.monitoring.look import Look
 from treering.monitoring.plan import MonitoringPlan
 
@@ -250,6 +250,19 @@ def test_h22_a_quiet_week_is_no_look(review):
         r.look()
     with pytest.raises(AnalysisError, match="no look"):
         r.look(version=7, date="2031-06-01")
+
+
+def test_h22_what_is_new_does_not_hang_on_the_order_of_the_trials_or_the_last_digits():
+    plan = MonitoringPlan(effect=0.3, better="higher")
+    y, v = np.array([0.2, 0.3, 0.5]), np.array([0.04, 0.05, 0.03])
+    data = {"trials": "ABC", "estimates": y, "variances": v}
+    assert holds_new_data(plan, [], **data)
+    assert not holds_new_data(plan, [], trials=[])
+    look = next_look(plan, [], date="2031-01-01", version=1, **data)
+    turned = {"trials": "CBA", "estimates": y[::-1] * (1 + 1e-12), "variances": v[::-1]}
+    assert not holds_new_data(plan, [look], **turned)
+    assert holds_new_data(plan, [look], trials="ABC", estimates=y + [0, 0, 0.001], variances=v)
+    assert holds_new_data(plan, [look], trials="ABD", estimates=y, variances=v)
 
 
 def test_past_the_required_information_all_alpha_is_spent_once(review):

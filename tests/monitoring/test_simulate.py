@@ -8,18 +8,18 @@ import pytest
 from scipy.stats import norm, t
 
 from treering.errors import AnalysisError
-from treering.monitoring.design import SimulationDesign
+from treering.monitoring.design import BinaryTrials, SimulationDesign
 from treering.monitoring.ledger import next_look
 from treering.monitoring.plan import MonitoringPlan
 from treering.monitoring.simulate import simulate
-from treering.monitoring.simulate_kernel import (
+from treering.monitoring.simulate_kernel import Pooled, draw_counts, pool_chunk
+from treering.monitoring.simulate_rules import (
     MIXTURE,
     ORDINARY,
     ORDINARY_PLANNED,
     OTHER_TEST,
     PLAN,
-    Pooled,
-    pool_chunk,
+    on_own_scale,
     rules_of,
     spending_rule,
     tally,
@@ -55,7 +55,8 @@ def test_simulated_critical_values_are_those_of_the_ledger(review):
     rule = spending_rule(plan, design, PLAN, "hartung")
     looks = []
     y, v = rng.normal(0.1, 0.3, 12), 1 / np.array(design.information)
-    for k, critical in zip(design.looks, rule.critical, strict=True):
+    scaled = on_own_scale("hartung", rule.critical, np.array(design.looks, dtype=float)[:, None])[:, 0]
+    for k, critical in zip(design.looks, scaled, strict=True):
         given = {"trials": [str(i) for i in range(k)], "estimates": y[:k], "variances": v[:k]}
         looks.append(next_look(plan, looks, date="2031-01-01", version=k, **given))
         expected = t.isf(norm.sf(looks[-1].boundary), k - 1)
@@ -79,7 +80,9 @@ def test_tally_counts_crossings_losses_and_bias_by_hand():
     error = 1 / np.sqrt(design.accrued)[:, None]
     z = np.array([[3.5, 1.0, -3.5, 3.5, 0.0], [3.0, 2.5, -3.0, 0.5, 0.0]])
     common = z * error
-    found = tally(plan, design, rule, Pooled(common, common, common, common, error), 0.1)
+    found = tally(
+        plan, design, rule, Pooled(common, common, common, common, error, np.array([[1.0], [2.0]])), 0.1
+    )
     first = [common[0, 0], common[1, 1], -common[0, 2], common[0, 3]]
     beyond = [first[0] - 0.1, first[1] - 0.1, first[2] + 0.1, first[3] - 0.1]
     assert found[[0, 1, 2, 5, 8]].tolist() == [5, 4, 3, 1, 1]
@@ -157,6 +160,75 @@ def test_sizes_and_risk_give_information():
     # 1/(p(1-p)) per arm and event-scale variance of a log odds ratio: 4 people bring p(1-p).
     design = SimulationDesign.from_sizes([100, 300], measure="odds-ratio", comparator_risk=0.2)
     assert design.information == pytest.approx((100 * 0.16 / 4, 300 * 0.16 / 4))
+
+
+def binary(risk, measure="odds-ratio", sizes=(40, 60, 100), **more):
+    return SimulationDesign.from_sizes(sizes, measure=measure, comparator_risk=risk, **more)
+
+
+@pytest.mark.parametrize("measure", ["risk-ratio", "odds-ratio"])
+def test_drawn_counts_have_the_true_ratio_and_the_large_sample_variance(measure):
+    counts = binary(0.3, measure, sizes=(4000,)).counts
+    y, v = draw_counts(counts, tau2=0.0, effect=-0.2, reviews=20_000, rng=np.random.default_rng(2))
+    odds = 0.3 / 0.7 * math.exp(-0.2)
+    p1 = odds / (1 + odds) if measure == "odds-ratio" else 0.3 * math.exp(-0.2)
+    terms = [1 / p1, 1 / 0.3] + ([1 / (1 - p1), 1 / 0.7] if measure == "odds-ratio" else [-1, -1])
+    expected = sum(terms) / 2000
+    assert y.mean() == pytest.approx(-0.2, abs=0.004)
+    assert y.var() == pytest.approx(expected, rel=0.05)
+    assert v.mean() == pytest.approx(expected, rel=0.02)
+
+
+def test_drawn_counts_are_pooled_as_the_ledger_pools_and_leave_empty_cells_out():
+    plan = MonitoringPlan(effect=0.5)
+    design = binary(0.05, looks=(1, 2, 3))
+    draws = {"tau2": 0.1, "effect": 0.0, "reviews": 40}
+    pooled = pool_chunk(plan, design, **draws, rng=np.random.default_rng(7))
+    y, v = draw_counts(design.counts, **draws, rng=np.random.default_rng(7))
+    used = np.isfinite(v).cumsum(axis=0)
+    assert set(used[-1]) == {0, 1, 2, 3}, "some reviews lose one, two or all trials"
+    for look in range(3):
+        for review in range(40):
+            keep = np.isfinite(v[: look + 1, review])
+            if keep.sum() == 0:
+                assert math.isinf(pooled.wald[look, review])
+                continue
+            planned = pool(y[: look + 1, review][keep], v[: look + 1, review][keep])
+            assert pooled.mean[look, review] == pytest.approx(planned.estimate, abs=1e-8)
+            if keep.sum() > 1:
+                assert pooled.hartung[look, review] == pytest.approx(planned.standard_error, rel=1e-6)
+
+
+def test_counts_of_common_events_err_about_as_the_normal_draws_do():
+    plan = MonitoringPlan(effect=0.4, model="common", spending="pocock")
+    need = plan.required_information
+    design = binary(0.3, sizes=[int(need / 0.21 * 4 / 5)] * 5)
+    assert design.accrued[-1] == pytest.approx(need, rel=0.01)
+    row = simulate(plan, design, reviews=10_000, effects=(0.0,), workers=1).row(PLAN, tau2=0.0)
+    assert row.alarm == pytest.approx(0.05, abs=0.01)
+
+
+def test_rare_events_without_a_correction_raise_fewer_alarms_than_alpha():
+    plan = MonitoringPlan(effect=0.7, model="common", spending="pocock")
+    result = simulate(plan, binary(0.01, sizes=[100] * 6), reviews=4_000, effects=(0.0,), workers=1)
+    assert result.row(PLAN, tau2=0.0).alarm < 0.01
+
+
+@pytest.mark.parametrize(
+    "bad",
+    [
+        {"measure": "risk-difference"},
+        {"comparator_risk": 0.0},
+        {"comparator_risk": 1.5},
+        {"comparator_total": (0, 5)},
+        {"comparator_total": (5,)},
+    ],
+)
+def test_counts_that_cannot_be_drawn_are_refused(bad):
+    good = {"intervention_total": (5, 5), "comparator_total": (5, 5), "comparator_risk": 0.2}
+    with pytest.raises(AnalysisError) as caught:
+        BinaryTrials(**(good | {"measure": "odds-ratio"} | bad))
+    assert caught.value.next_step
 
 
 @pytest.mark.parametrize(

@@ -15,9 +15,10 @@ from treering.monitoring.boundaries import (
     nominal_p,
 )
 from treering.monitoring.calibrate import Calibration, calibrate
+from treering.monitoring.calibrate import continued as continued_design
 from treering.monitoring.crossing import Crossing, conditional_crossing, crossing_probabilities
 from treering.monitoring.dependence import RestsOn, rests_on
-from treering.monitoring.design import SimulationDesign
+from treering.monitoring.design import BinaryTrials, SimulationDesign
 from treering.monitoring.finding import LedgerState
 from treering.monitoring.forecast import Forecast, ForecastStep, OngoingTrial, forecast
 from treering.monitoring.futility import FutilityBoundaries, futility_boundaries, next_futility_bound
@@ -37,7 +38,7 @@ from treering.monitoring.information import (
     required_events,
     required_information,
 )
-from treering.monitoring.ledger import ledger_state, next_look
+from treering.monitoring.ledger import holds_new_data, ledger_state, next_look
 from treering.monitoring.look import Look
 from treering.monitoring.next_trial import NextTrial, next_trial
 from treering.monitoring.opinions import Opinion, OpinionStrip, second_opinions
@@ -55,6 +56,7 @@ from treering.monitoring.table import BoundaryTable, DetectableEffect, boundary_
 
 __all__ = [
     "PER_TAIL_CONVENTION",
+    "BinaryTrials",
     "Boundaries",
     "BoundaryTable",
     "Calibration",
@@ -85,12 +87,14 @@ __all__ = [
     "calibrate",
     "conditional_crossing",
     "conditional_power",
+    "continued_design",
     "crossing_probabilities",
     "detection_constant",
     "events_for_information",
     "forecast",
     "futility_boundaries",
     "hindsight",
+    "holds_new_data",
     "information_per_participant",
     "intervention_risk",
     "iterated_logarithm_z",

@@ -2,23 +2,28 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass, replace
 from functools import partial
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
+from scipy.special import ndtri, stdtr
 
 from treering.errors import AnalysisError
 from treering.monitoring.checks import FloatArray
 from treering.monitoring.design import SimulationDesign
 from treering.monitoring.plan import MonitoringPlan
+from treering.monitoring.redrawn import SAME
 from treering.monitoring.simulate import Progress, Task, chunked, run_chunks
-from treering.monitoring.simulate_kernel import PLAN, planned_kind, spending_rule
+from treering.monitoring.simulate_rules import PLAN, planned_kind, spending_rule
 from treering.monitoring.simulation_result import share_error
 
 _LEAST_SHARE = 1.0 / 50.0  # smallest part of the plan's alpha that is tried
 _HALVINGS = 24
+_LONGEST = 200  # times that a design is repeated at most
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -139,23 +144,27 @@ def continued(design: SimulationDesign, required: float) -> SimulationDesign:
     SimulationDesign
         The same design when it reaches the required information already.
     """
-    information, looks = list(design.information), list(design.looks)
-    trials = len(information)
-    while sum(information) < required:
-        start = len(information)
-        information.extend(design.information)
-        looks.extend(start + look for look in design.looks if start + look > looks[-1])
-        if len(information) > 200 * trials:
-            raise AnalysisError(
-                "The design is far too small to reach the required information.",
-                found=f"{sum(design.information):.3g} of {required:.3g}",
-                next_step="Give more or larger trials.",
-            )
-    return SimulationDesign(information=tuple(information), looks=tuple(looks), tau2=design.tau2)
+    trials = len(design.information)
+    times = max(math.ceil(required * (1.0 - SAME) / sum(design.information)), 1)
+    if times > _LONGEST:
+        raise AnalysisError(
+            "The design is far too small to reach the required information.",
+            found=f"{sum(design.information):.3g} of {required:.3g}",
+            next_step="Give more or larger trials.",
+        )
+    looks = [round_ * trials + look for round_ in range(times) for look in design.looks]
+    counts = design.counts
+    if counts is not None:
+        counts = replace(
+            counts,
+            intervention_total=counts.intervention_total * times,
+            comparator_total=counts.comparator_total * times,
+        )
+    return replace(design, information=design.information * times, looks=tuple(looks), counts=counts)
 
 
 def _statistics(kind: str, task: Task) -> FloatArray:
-    """Return the planned statistic of a chunk, so that a large value crosses."""
+    """Return the planned Z of a chunk, so that a large value crosses."""
     pooled = task.pooled()
     if kind == "common":
         statistic = pooled.common_mean / pooled.common_error
@@ -163,7 +172,10 @@ def _statistics(kind: str, task: Task) -> FloatArray:
         statistic = pooled.mean / (pooled.wald if kind == "wald" else pooled.hartung)
     plan = task.plan
     oriented: FloatArray = statistic * plan.tested_direction if plan.sides == 1 else np.abs(statistic)
-    return oriented
+    if kind != "hartung":
+        return oriented
+    z: FloatArray = -ndtri(stdtr(np.maximum(pooled.k - 1.0, 1.0), -oriented))
+    return np.where(pooled.k < 2.0, -np.inf, z)
 
 
 def _rates(
@@ -171,7 +183,14 @@ def _rates(
 ) -> tuple[float, ...]:
     """Return the share of reviews that cross at any look, for each tau2, at a given alpha."""
     rule = spending_rule(replace(plan, alpha=alpha), design, PLAN, planned_kind(plan))
-    return tuple(float((path >= rule.critical[:, None]).any(axis=0).mean()) for path in paths)
+    return tuple(float(_crosses(path, rule.critical).mean()) for path in paths)
+
+
+def _crosses(path: FloatArray, critical: FloatArray) -> NDArray[np.bool_]:
+    """Return which reviews cross at a look that has a boundary."""
+    drawn = np.isfinite(critical)
+    crossed: NDArray[np.bool_] = np.any(path[drawn] >= critical[drawn, None], axis=0)
+    return crossed
 
 
 def _largest_alpha(plan: MonitoringPlan, design: SimulationDesign, paths: Sequence[FloatArray]) -> float:

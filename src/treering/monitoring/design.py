@@ -11,6 +11,54 @@ import numpy as np
 from treering.errors import AnalysisError
 from treering.monitoring.checks import FloatArray
 from treering.monitoring.participants import information_per_participant
+from treering.terms import Measure
+
+#: Measures whose counts can be drawn.
+COUNTED = (Measure.RISK_RATIO, Measure.ODDS_RATIO)
+
+
+@dataclass(frozen=True, kw_only=True)
+class BinaryTrials:
+    """Trials whose counts are drawn, so that sparse events and empty cells are in the simulation.
+
+    Parameters
+    ----------
+    intervention_total, comparator_total : tuple of int
+        People in each arm of each trial.
+    comparator_risk : float
+        Risk in the comparator arm, in (0, 1).
+    measure : str
+        "risk-ratio" or "odds-ratio". A trial with an empty cell that leaves no estimate is left out of
+        the pooling, as without a zero-cell correction.
+
+    Raises
+    ------
+    AnalysisError
+        When a figure cannot be used.
+    """
+
+    intervention_total: tuple[int, ...]
+    comparator_total: tuple[int, ...]
+    comparator_risk: float
+    measure: str
+
+    def __post_init__(self) -> None:
+        """Refuse what cannot be drawn."""
+        if self.measure not in COUNTED or not 0.0 < self.comparator_risk < 1.0:
+            raise AnalysisError(
+                "Counts cannot be drawn for this measure and risk.",
+                found=f"{self.measure}, comparator risk {self.comparator_risk}",
+                expected=f"{' or '.join(COUNTED)}, comparator risk in (0, 1)",
+                next_step="Give the comparator risk as a proportion, or simulate from information.",
+            )
+        sizes = (*self.intervention_total, *self.comparator_total)
+        if len(self.intervention_total) != len(self.comparator_total) or min(sizes, default=0) < 1:
+            raise AnalysisError(
+                "A simulated trial has an empty or missing arm.",
+                found=f"{self.intervention_total} and {self.comparator_total}",
+                expected="one person or more in each arm",
+                next_step="Give the planned size of each trial, both arms together, from 2 on.",
+            )
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -25,6 +73,8 @@ class SimulationDesign:
         Number of trials in at each look, increasing; the last is the number of trials.
     tau2 : tuple of float
         Between-trial variances to simulate, on the squared analysis scale.
+    counts : BinaryTrials, optional
+        Draw counts of a binary outcome. The boundary is then still that of the expected information.
 
     Raises
     ------
@@ -35,6 +85,7 @@ class SimulationDesign:
     information: tuple[float, ...]
     looks: tuple[int, ...] = ()
     tau2: tuple[float, ...] = (0.0,)
+    counts: BinaryTrials | None = None
 
     def __post_init__(self) -> None:
         """Take a look after each trial when no looks are given, and refuse what cannot be simulated."""
@@ -57,6 +108,13 @@ class SimulationDesign:
                 expected=f"increasing numbers of trials from 1 or more to {trials}",
                 next_step="Say how many trials are in at each look; the last look has them all.",
             )
+        if self.counts is not None and len(self.counts.intervention_total) != trials:
+            raise AnalysisError(
+                "Counts and information differ in the number of trials.",
+                found=f"{len(self.counts.intervention_total)} and {trials}",
+                expected="as many as there are trials",
+                next_step="Give sizes and information of the same trials.",
+            )
         if not self.tau2 or not all(np.isfinite(value) and value >= 0.0 for value in self.tau2):
             raise AnalysisError(
                 "A between-trial variance to simulate cannot be used.",
@@ -77,7 +135,7 @@ class SimulationDesign:
         looks: Sequence[int] = (),
         tau2: Sequence[float] = (0.0,),
     ) -> SimulationDesign:
-        """Take trial sizes instead of information.
+        """Take trial sizes instead of information; for risk and odds ratios the counts are drawn.
 
         Parameters
         ----------
@@ -101,7 +159,17 @@ class SimulationDesign:
             measure, comparator_risk=comparator_risk, intervention_risk=other, sd=sd
         )
         information = tuple(float(size) * each for size in participants)
-        return cls(information=information, looks=tuple(looks), tau2=tuple(tau2))
+        counts = None
+        if measure in COUNTED and comparator_risk is not None:
+            half = tuple(int(size) // 2 for size in participants)
+            rest = tuple(int(size) - int(size) // 2 for size in participants)
+            counts = BinaryTrials(
+                intervention_total=half,
+                comparator_total=rest,
+                comparator_risk=comparator_risk,
+                measure=measure,
+            )
+        return cls(information=information, looks=tuple(looks), tau2=tuple(tau2), counts=counts)
 
     @property
     def accrued(self) -> FloatArray:
@@ -116,4 +184,13 @@ class SimulationDesign:
         -------
         dict
         """
-        return {name: list(values) for name, values in asdict(self).items()}
+        return {
+            "information": list(self.information),
+            "looks": list(self.looks),
+            "tau2": list(self.tau2),
+            "counts": None if self.counts is None else _plain(self.counts),
+        }
+
+
+def _plain(counts: BinaryTrials) -> dict[str, Any]:
+    return {n: list(v) if isinstance(v, tuple) else v for n, v in asdict(counts).items()}

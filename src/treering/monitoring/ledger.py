@@ -137,6 +137,39 @@ def next_look(
     )
 
 
+def holds_new_data(
+    plan: MonitoringPlan,
+    earlier: Sequence[Look],
+    *,
+    trials: Sequence[str],
+    estimates: ArrayLike = (),
+    variances: ArrayLike = (),
+    pooled: PooledEffect | None = None,
+) -> bool:
+    """Return whether the evidence differs from that of the last look; without it there is no look.
+
+    Parameters
+    ----------
+    plan, earlier, trials, estimates, variances, pooled
+        As in `next_look`.
+
+    Returns
+    -------
+    bool
+        False for the data of the last look, in any order of the trials and to ten significant digits; and
+        False before the first look while there is no trial.
+
+    Raises
+    ------
+    AnalysisError
+        When the trials cannot be analysed.
+    """
+    test = _test(plan, trials, estimates, variances, pooled)
+    if not earlier:
+        return test is not None
+    return not _same_data(earlier[-1], trials, test)
+
+
 def _check_order(earlier: Sequence[Look], date: str, version: int) -> None:
     """Refuse a look that is not after the last one."""
     try:

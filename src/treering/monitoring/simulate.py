@@ -1,8 +1,8 @@
 """What the plan's boundary is worth for this very review: seeded simulation of whole reviews.
 
-Effects are drawn as normal with the design's information; counts are not simulated, so sparse binary
-outcomes are outside its reach. Results do not depend on the number of cores: every chunk of reviews has
-its own stream, and sums are taken in the order of the chunks.
+Effects are drawn as normal with the design's information, or as counts of a binary outcome. Results do not
+depend on the number of cores: every chunk of reviews has its own stream, and sums are taken in the order of
+the chunks.
 """
 
 from __future__ import annotations
@@ -21,7 +21,8 @@ from treering.errors import AnalysisError
 from treering.monitoring.checks import FloatArray
 from treering.monitoring.design import SimulationDesign
 from treering.monitoring.plan import MonitoringPlan
-from treering.monitoring.simulate_kernel import Pooled, Rule, pool_chunk, rules_of, tally
+from treering.monitoring.simulate_kernel import Pooled, pool_chunk
+from treering.monitoring.simulate_rules import Rule, rules_of, tally
 from treering.monitoring.simulation_result import SimulationResult, rule_row
 
 CHUNK = 2000  # reviews with a stream of their own; about a second-level cache of numbers

@@ -10,7 +10,7 @@ from treering.monitoring.checks import FloatArray
 from treering.monitoring.design import SimulationDesign
 from treering.monitoring.plan import MonitoringPlan
 from treering.monitoring.redrawn import SAME
-from treering.monitoring.simulate_kernel import PLAN
+from treering.monitoring.simulate_rules import PLAN
 
 _ERRORS = 1.96  # Monte Carlo errors within which a rate counts as held
 
