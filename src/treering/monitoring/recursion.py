@@ -113,13 +113,21 @@ def tail(paths: Paths, information: float, score: float, *, drift: float = 0.0) 
     sigma, goal = math.sqrt(step), score - drift * step
     nodes, mass = _narrow(paths, sigma)
     total = float(mass @ special.ndtr((nodes - goal) / sigma))
+    low, high = goal - _WINDOW * sigma, goal + _WINDOW * sigma
     for left, width, held in _wide(paths, sigma):
-        ends = np.clip([goal - _WINDOW * sigma, goal + _WINDOW * sigma, math.inf], left, left + width)
-        for part in (0, 1):
-            if ends[part] < ends[part + 1]:
-                nodes, mass = window(left, width, held, ends[part : part + 1], ends[part + 1 : part + 2])
-                total += float(np.sum(mass * special.ndtr((nodes - goal) / sigma)))
+        right = left + width
+        if left >= high:
+            total += float(held.sum())
+        elif right > low:
+            total += _straddling(left, width, held, goal, sigma)
     return total
+
+
+def _straddling(left: float, width: float, held: FloatArray, goal: float, sigma: float) -> float:
+    """Chance to end above the goal from a wide panel that the goal is in or next to."""
+    ends = np.clip(goal + _WINDOW * sigma * np.array([-1.0, 1.0]), left, left + width)
+    nodes, mass = window(left, width, held, ends, np.array([ends[1], left + width]))
+    return float(np.sum(mass * special.ndtr((nodes - goal) / sigma)))
 
 
 def density(paths: Paths, information: float, scores: FloatArray, *, drift: float = 0.0) -> FloatArray:
