@@ -24,7 +24,7 @@ def correlation(fractions):
     return np.sqrt(np.minimum.outer(t, t) / np.maximum.outer(t, t))
 
 
-def crossed_by_multivariate_normal(fractions, z, points=1_000_000):
+def crossed_by_multivariate_normal(fractions, z, points=200_000):
     inside = stats.multivariate_normal.cdf(
         z,
         np.zeros(len(z)),
