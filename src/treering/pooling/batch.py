@@ -41,6 +41,10 @@ class Batch:
         """Take the syntheses at these positions."""
         return Batch(self.y[:, which], self.v[:, which], self.k[which])
 
+    def repeated(self, times: int) -> Batch:
+        """Lay the whole batch side by side several times."""
+        return Batch(np.tile(self.y, times), np.tile(self.v, times), np.tile(self.k, times))
+
 
 def single(y: FloatArray, v: FloatArray) -> Batch:
     """One synthesis as a rectangle of one column."""

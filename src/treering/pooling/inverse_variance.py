@@ -166,6 +166,10 @@ def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd
             found=f"{len(values)} groups and {count} estimates",
             expected="one group for each estimate",
         )
+    if isinstance(values, np.ndarray) and values.dtype.kind in "iu" and (values[1:] >= values[:-1]).all():
+        # Sorted whole numbers, the usual case in bulk, need no hashing.
+        fresh = np.concatenate([[True], values[1:] != values[:-1]])
+        return np.cumsum(fresh) - 1, pd.Index(values[fresh], name="group")
     codes, names = pd.factorize(values, sort=True)
     if (codes < 0).any():
         raise AnalysisError("group is missing.", trial=str(int(np.argmax(codes < 0)) + 1))
@@ -189,18 +193,18 @@ def _pool_runs(
 
 def split_weights(weights: FloatArray, counts: IntArray) -> npt.NDArray[np.object_]:
     """One array of weights for each synthesis, without the padding."""
-    out = np.empty(counts.size, dtype=object)
     rows = np.ascontiguousarray(weights.T)
-    for at, (row, count) in enumerate(zip(rows, counts.tolist(), strict=True)):
-        out[at] = row[:count]
-    return out
+    if (counts == rows.shape[1]).all():
+        return np.fromiter(rows, dtype=object, count=counts.size)
+    cut = (row[:count] for row, count in zip(rows, counts.tolist(), strict=True))
+    return np.fromiter(cut, dtype=object, count=counts.size)
 
 
 def _frame(parts: list[Columns], names: pd.Index) -> pd.DataFrame:
     joined = {
         name: np.concatenate([part[name] for part in parts])
-        if isinstance(parts[0][name], np.ndarray)
+        if len(parts) > 1 and isinstance(parts[0][name], np.ndarray)
         else parts[0][name]
         for name in FIELDS
     }
-    return pd.DataFrame(joined, index=names)
+    return pd.DataFrame(joined, index=names, copy=False)

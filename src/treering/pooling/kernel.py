@@ -90,8 +90,9 @@ def pool_batch(batch: Batch, options: Options) -> Columns:
     centred, centre = _centre(batch)
     common = fit(centred, np.zeros(batch.k.size))
     lone = batch.k < 2.0
-    tau2, tau2_low, tau2_high = _between_trials(centred, common, lone, options)
+    tau2 = _between_trials(centred, common, lone, options)
     chosen = fit(centred, tau2) if tau2.any() else common
+    tau2_low, tau2_high = _q_profile(centred, common, tau2, chosen, options.level)
     estimate = centre + chosen.mean
     error, test = _test(estimate, chosen, batch.k, options)
     columns: Columns = {"estimate": estimate, "standard_error": error}
@@ -110,24 +111,28 @@ def _centre(batch: Batch) -> tuple[Batch, FloatArray]:
     return Batch(np.where(w > 0.0, batch.y - centre, 0.0), batch.v, batch.k), centre
 
 
-def _between_trials(
-    batch: Batch, common: Fit, lone: BoolArray, options: Options
-) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Tau2 (zero where it has no meaning) and its Q-profile interval (Viechtbauer 2007, Stat Med 26:37)."""
-    if lone.any():
-        tau2, low, high = np.zeros(lone.size), np.full(lone.size, np.nan), np.full(lone.size, np.nan)
-        several = np.flatnonzero(~lone)
-        if several.size:
-            part = Fit(*(field[..., several] for field in common))
-            found = _between_trials(batch.columns(several), part, lone[several], options)
-            tau2[several], low[several], high[several] = found
-        return tau2, low, high
-    estimated = options.model is PoolingModel.RANDOM
-    tau2 = estimate_tau2(batch, common, options.tau2) if estimated else np.zeros(lone.size)
-    outside, df = (1.0 - options.level) / 2.0, batch.k - 1.0
-    low = solve_q(batch, chi2_quantile(df, outside), common, tau2)
-    high = solve_q(batch, chi2_quantile(df, 1.0 - outside), common, tau2)
-    return tau2, low, high
+def _between_trials(batch: Batch, common: Fit, lone: BoolArray, options: Options) -> FloatArray:
+    """Tau2; zero where it has no meaning."""
+    tau2 = np.zeros(lone.size)
+    if options.model is PoolingModel.COMMON or lone.all():
+        return tau2
+    if not lone.any():
+        return estimate_tau2(batch, common, options.tau2)
+    several = np.flatnonzero(~lone)
+    tau2[several] = estimate_tau2(batch.columns(several), common.columns(several), options.tau2)
+    return tau2
+
+
+def _q_profile(
+    batch: Batch, common: Fit, tau2: FloatArray, chosen: Fit, level: float
+) -> tuple[FloatArray, FloatArray]:
+    """Interval of tau2 by Q-profile (Viechtbauer 2007, Stat Med 26:37); NaN for one trial."""
+    outside, df = (1.0 - level) / 2.0, np.maximum(batch.k - 1.0, 1.0)
+    limits = (
+        solve_q(batch, chi2_quantile(df, tail), common, tau2, chosen) for tail in (outside, 1.0 - outside)
+    )
+    low, high = (np.where(batch.k < 2.0, np.nan, limit) for limit in limits)
+    return low, high
 
 
 def _test(estimate: FloatArray, chosen: Fit, k: FloatArray, options: Options) -> tuple[FloatArray, Inference]:

@@ -10,7 +10,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from treering.pooling.batch import Batch
+from treering.pooling.batch import Batch, IntArray
 from treering.pooling.result import FloatArray
 
 
@@ -36,6 +36,10 @@ class Fit(NamedTuple):
     mean: FloatArray
     pull: FloatArray
     q: FloatArray
+
+    def columns(self, which: IntArray) -> Fit:
+        """Take the syntheses at these positions."""
+        return Fit(*(field[..., which] for field in self))
 
 
 def dot(a: FloatArray, b: FloatArray) -> FloatArray:

@@ -16,11 +16,11 @@ from treering.pooling.moments import Fit, dot, fit
 from treering.pooling.result import FloatArray
 
 MAX_STEPS = 100
-RELATIVE_STEP = 1e-8
-"""Last step as a fraction of v + tau2. Newton squares the error: the root itself is good to about 1e-15."""
+RELATIVE_STEP = 1e-7
+"""Last step as a fraction of v + tau2. Newton squares the error: the root itself is good to about 1e-13."""
 
 
-def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, start: FloatArray | None = None) -> FloatArray:
+def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, t: FloatArray, at_t: Fit) -> FloatArray:
     """Between-trial variance at which the generalised Q equals its target.
 
     Parameters
@@ -31,8 +31,10 @@ def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, start: FloatArray | 
         Wanted value of Q, above zero.
     at_zero : Fit
         Sums at tau2 = 0.
-    start : ndarray, shape (g,), optional
-        First guess; zero if not given.
+    t : ndarray, shape (g,)
+        First guess.
+    at_t : Fit
+        Sums at the first guess; known already, so the first step costs no new sums.
 
     Returns
     -------
@@ -44,30 +46,53 @@ def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, start: FloatArray | 
     NotConvergedError
         The iteration did not settle (not expected: see the module's proof).
     """
-    root = np.zeros(batch.k.size)
     active = np.flatnonzero(at_zero.q > target)
-    if active.size == 0:
-        return root
-    whole = active.size == root.size
-    part = batch if whole else batch.columns(active)
-    goal = target if whole else target[active]
-    guess = root if start is None else start
-    root[active] = _newton(part, goal, guess[active])
+    if 2 * active.size > batch.k.size:
+        # Syntheses without a root settle on zero by themselves; copying the others would cost more.
+        return _newton(batch, target, newton_step(at_t, target, t)[0])
+    root = np.zeros(batch.k.size)
+    if active.size:
+        first, _ = newton_step(at_t.columns(active), target[active], t[active])
+        root[active] = _newton(batch.columns(active), target[active], first)
     return root
+
+
+def newton_step(now: Fit, target: FloatArray, t: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """One step towards the root.
+
+    Parameters
+    ----------
+    now : Fit
+        Sums at t.
+    target : ndarray, shape (g,)
+        Wanted value of Q.
+    t : ndarray, shape (g,)
+        Where to step from.
+
+    Returns
+    -------
+    tuple of ndarray
+        New place (never below zero, and left of the root if there is one), and the scale Q / |Q'| of
+        v + tau2 at the old place; t itself may be near zero and is no measure of precision.
+    """
+    slope = np.maximum(dot(now.pull, now.pull), np.finfo(np.float64).tiny)
+    scale = now.q / slope
+    return np.maximum(t + scale * (now.q / target - 1.0), 0.0), scale
 
 
 def _newton(batch: Batch, target: FloatArray, t: FloatArray) -> FloatArray:
     for _ in range(MAX_STEPS):
-        now = fit(batch, t)
-        slope = dot(now.pull, now.pull)
-        moved = np.maximum(t + now.q * (now.q / target - 1.0) / slope, 0.0)
-        # Q / |Q'| is the scale of v + t; t itself may be near zero and is no measure of precision.
-        settled = np.abs(moved - t) <= RELATIVE_STEP * (now.q / slope)
+        moved, scale = newton_step(fit(batch, t), target, t)
+        unsettled = np.flatnonzero(np.abs(moved - t) > RELATIVE_STEP * scale)
         t = moved
-        if settled.all():
+        if unsettled.size == 0:
+            return t
+        if 4 * unsettled.size < t.size:
+            # The few slow ones go on alone.
+            t[unsettled] = _newton(batch.columns(unsettled), target[unsettled], t[unsettled])
             return t
     raise NotConvergedError(
         "The equation for the between-trial variance did not settle.",
-        found=f"{int((~settled).sum())} syntheses open after {MAX_STEPS} steps",
+        found=f"{unsettled.size} syntheses open after {MAX_STEPS} steps",
         next_step="Check the units of estimates and variances.",
     )

@@ -1,8 +1,9 @@
 """Seven estimators of the between-trial variance tau2, each over a whole batch of syntheses.
 
 DerSimonian and Laird 1986 (Control Clin Trials 7:177), Paule and Mandel 1982 (J Res Natl Bur Stand 87:377),
-restricted and full maximum likelihood (see `likelihood`), Hedges 1983 (Psychol Bull 93:388), Sidik and
-Jonkman 2005 (Appl Stat 54:367), Hunter and Schmidt 1990. Cited from memory. A negative moment estimate is cut off at zero.
+restricted and full maximum likelihood (see `maximum`), Hedges 1983 (Psychol Bull 93:388), Sidik and
+Jonkman 2005 (Appl Stat 54:367), Hunter and Schmidt 1990. Cited from memory. A negative moment
+estimate is cut off at zero.
 """
 
 from __future__ import annotations
@@ -12,7 +13,7 @@ from collections.abc import Callable, Mapping
 import numpy as np
 
 from treering.pooling.batch import Batch
-from treering.pooling.likelihood import maximise
+from treering.pooling.maximum import maximise
 from treering.pooling.moments import Fit, dot, fit
 from treering.pooling.qroot import solve_q
 from treering.pooling.result import FloatArray
@@ -27,16 +28,15 @@ def _dersimonian_laird(batch: Batch, common: Fit) -> FloatArray:
 
 
 def _paule_mandel(batch: Batch, common: Fit) -> FloatArray:
-    start = np.maximum(_dersimonian_laird(batch, common), 0.0)
-    return solve_q(batch, batch.k - 1.0, common, start)
+    return solve_q(batch, batch.k - 1.0, common, np.zeros(batch.k.size), common)
 
 
 def _reml(batch: Batch, common: Fit) -> FloatArray:
-    return maximise(batch, restricted=True)
+    return maximise(batch, common, restricted=True)
 
 
 def _ml(batch: Batch, common: Fit) -> FloatArray:
-    return maximise(batch, restricted=False)
+    return maximise(batch, common, restricted=False)
 
 
 def _plain_squares(batch: Batch) -> FloatArray:
