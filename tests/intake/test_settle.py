@@ -4,6 +4,11 @@ from __future__ import annotations
 
 import json
 
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
+
+from treering import intake
+from treering.intake import compare_readings
 from treering.intake.reread import is_drawn
 from treering.terms import Cause
 
@@ -263,3 +268,87 @@ def test_a_third_reading_that_differs_holds_nothing_back_and_asks_for_a_correcti
 def test_the_drawn_share_is_about_the_planned_one() -> None:
     drawn = sum(is_drawn(f"HW-{n}/pain/r/intervention_mean/3.1", 0.10) for n in range(4000))
     assert 330 < drawn < 470  # 400 expected, 3.7 standard deviations of a binomial draw
+
+
+def test_a_year_and_a_day_of_that_year_do_not_contradict(review, reading) -> None:
+    files = {"a.toml": reading("MV", published="2025"), "b.toml": reading("OK", published="2025-03-14")}
+    assert review.update(files).waiting == ()
+    assert review.ledger.get("report/HW-01-a").body["published"] == "2025-03-14"
+    other = {"c.toml": reading("MV", "skin-burns", published="2024"), "d.toml": reading("OK", "skin-burns")}
+    (item,) = review.update(other).waiting
+    assert item["differences"][0]["field"] == "study.published"
+
+
+def test_trials_that_a_crossing_rests_on_are_read_again_whole(review, reading) -> None:
+    review.verification(reread_share=0.0)
+    review.update({"a.toml": reading("MV"), "b.toml": reading("OK")})
+    assert intake.settle(review.ledger, review.protocol).third_readings == ()
+    (task,) = intake.settle(review.ledger, review.protocol, read_again={"HW-01"}).third_readings
+    assert task["fields"] == [
+        "intervention_events",
+        "intervention_total",
+        "comparator_events",
+        "comparator_total",
+    ]
+
+
+def test_agreement_is_counted_by_field_and_pair(review, reading, adjudication) -> None:
+    other = reading("OK", values=counts(42))
+    review.update({"a.toml": reading("MV"), "b.toml": other, "c.toml": adjudication()})
+    files = {n: reading(w, trial="HW-02", report="HW-02-a") for n, w in (("d.toml", "MV"), ("e.toml", "OK"))}
+    review.update(files)
+    found = intake.agreement(review.ledger)
+    assert found["fields"][0] == {"field": "intervention_events", "compared": 2, "differed": 1}
+    assert found["pairs"] == [{"first": "MV", "second": "OK", "compared": 8, "differed": 1}]
+
+
+# --- rules ---
+
+NUMBERS = st.dictionaries(
+    st.sampled_from(["intervention_events", "comparator_events", "intervention_mean", "estimate"]),
+    st.integers(0, 4) | st.sampled_from([0.5, 1.5, 1.505]),
+)
+
+
+def body(values: dict) -> dict:
+    """Shape numbers as a reading's body."""
+    return {"values": values, "locators": {}, "not_usable": None, "subgroup": {}, "study": {}, "arms": []}
+
+
+@given(first=NUMBERS, second=NUMBERS, tolerance=st.sampled_from([0.0, 0.01]))
+def test_a_comparison_does_not_depend_on_who_is_first(first, second, tolerance) -> None:
+    one = compare_readings(body(first), body(second), tolerance=tolerance)
+    other = compare_readings(body(second), body(first), tolerance=tolerance)
+    assert one.agreed == other.agreed
+    assert [(d.field, d.first, d.second) for d in one.differences] == [
+        (d.field, d.second, d.first) for d in other.differences
+    ]
+
+
+@given(first=NUMBERS, second=NUMBERS)
+def test_without_tolerance_only_equal_readings_agree(first, second) -> None:
+    found = compare_readings(body(first), body(second))
+    assert (first == second) == (not found.differences)
+    assert set(found.agreed) | {d.field for d in found.differences} == set(first) | set(second)
+
+
+@given(order=st.permutations(["MV", "OK", "adjudication", "bias"]), cut=st.integers(1, 3))
+@settings(max_examples=40, suppress_health_check=[HealthCheck.function_scoped_fixture], deadline=None)
+def test_the_verified_result_is_the_same_in_one_drop_or_two(
+    demo_protocol, review, reading, adjudication, order, cut
+) -> None:
+    files = {
+        "MV": reading("MV"),
+        "OK": reading("OK", values=counts(42)),
+        "adjudication": adjudication(),
+        "bias": reading("MV", "skin-burns"),
+    }
+    once, twice = type(review)(demo_protocol), type(review)(demo_protocol)
+    once.update({f"{at}.toml": files[name] for at, name in enumerate(order)})
+    parts = [order[:cut], order[cut:]]
+    for part in parts:
+        twice.update({f"{at}.toml": files[name] for at, name in enumerate(part)})
+    # Readings that came after an adjudication sent it back; dropped again, it counts.
+    twice.update({"again.toml": files["adjudication"]})
+    key = f"result/HW-01/{FFA}"
+    assert once.ledger.get(key).body == twice.ledger.get(key).body

@@ -5,6 +5,7 @@ store appends them, :func:`settle` on the new state, the store appends again, th
 :func:`give_back`.
 """
 
+from treering.intake.agreement import agreement
 from treering.intake.check import check
 from treering.intake.compare import Comparison, Difference, compare_readings
 from treering.intake.entries import entries_for
@@ -27,6 +28,7 @@ __all__ = [
     "Settled",
     "StateView",
     "StoredView",
+    "agreement",
     "check",
     "compare_readings",
     "entries_for",

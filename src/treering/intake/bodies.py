@@ -80,6 +80,7 @@ def adjudication_body(record: Adjudication) -> Body:
         "reason_class": record.reason_class,
         "reason": record.reason,
         "unresolved": record.unresolved,
+        "minutes": record.minutes,
     }
 
 

@@ -93,6 +93,8 @@ def remarks_alone(located: Located, scene: Scene) -> Iterator[Remark]:
             if unplaced:
                 sentence = f"no place in the report is given for {', '.join(unplaced)}."
                 yield located.remark(located.path(number, "locator"), sentence)
+    if isinstance(record, Adjudication) and record.reason_class == "rule gap":
+        yield located.remark("reason_class", "a rule gap: the protocol needs a clause for such cases.")
     if isinstance(record, RiskOfBias):
         missing = sorted(set(type(record.domains).model_fields) - set(record.support))
         if missing:

@@ -84,12 +84,21 @@ def _numbers(first: Reading, second: Reading, tolerance: float) -> Comparison:
     return Comparison(tuple(agreed), tuple(differences), tuple(tolerated))
 
 
+def same_fact(name: str, first: Any, second: Any) -> bool:
+    """Say whether two readers wrote the same of a fact; "2025" and "2025-03-14" do not contradict."""
+    one, other = _plain(first), _plain(second)
+    if name == "published":
+        short, long = sorted((str(one), str(other)), key=len)
+        return long == short or long.startswith(f"{short}-")
+    return bool(one == other)
+
+
 def _facts(first: Reading, second: Reading) -> list[Difference]:
     """Find facts about the trial that both give and give differently; one may leave a fact out."""
     found = []
     for name in SHARED_FACTS:
         one, other = first["study"].get(name), second["study"].get(name)
-        if one is not None and other is not None and _plain(one) != _plain(other):
+        if one is not None and other is not None and not same_fact(name, one, other):
             found.append(Difference(f"study.{name}", one, other))
     return found
 

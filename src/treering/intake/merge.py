@@ -41,7 +41,7 @@ def merged(first: Mapping[str, Any], second: Mapping[str, Any], settled: Mapping
         "origins": _merged_origins(first, second, values),
         "not_usable": not_usable,
         "subgroup": {**first["subgroup"], **settled.get("subgroup", {})},
-        "study": _filled(settled.get("study", {}), first["study"], second["study"]),
+        "study": _study(settled.get("study", {}), first["study"], second["study"]),
         "document": _filled(first["document"], second["document"]),
         "arms": settled.get("arms") or first["arms"] or second["arms"],
         "correction": _joined(first["correction"], second["correction"]),
@@ -59,6 +59,15 @@ def _merged_origins(
         if named:
             origins[name] = max(named, key=rank.index)
     return origins
+
+
+def _study(settled: Mapping[str, Any], first: Mapping[str, Any], second: Mapping[str, Any]) -> dict[str, Any]:
+    """Take each fact from who gives it, and the date from who gives it more precisely."""
+    study = _filled(settled, first, second)
+    dates = [str(source["published"]) for source in (first, second) if source.get("published")]
+    if dates and settled.get("published") is None:
+        study["published"] = max(dates, key=len)
+    return study
 
 
 def _filled(*sources: Mapping[str, Any]) -> dict[str, Any]:

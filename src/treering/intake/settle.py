@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Collection, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -36,7 +36,7 @@ class Settled:
     third_readings: tuple[dict[str, Any], ...]
 
 
-def settle(view: StateView, protocol: Protocol) -> Settled:
+def settle(view: StateView, protocol: Protocol, *, read_again: Collection[str] = frozenset()) -> Settled:
     """Verify what two readings, an adjudication or a waiver allow, and list what waits.
 
     Parameters
@@ -45,6 +45,9 @@ def settle(view: StateView, protocol: Protocol) -> Settled:
         The state of the store after the dropped records were appended.
     protocol : Protocol
         Verification rule and outcomes.
+    read_again : collection of str
+        Trials of which every agreed number is read a third time, whatever the draw says: those whose
+        removal would make or undo a crossing.
 
     Returns
     -------
@@ -60,10 +63,13 @@ def settle(view: StateView, protocol: Protocol) -> Settled:
             entries.update((entry.key, entry) for entry in final_entries(answer, view, entries))
     tasks: list[dict[str, Any]] = []
     for key in [key for key in entries if key.startswith("verification/")]:
-        _draw(entries[key].body, view, protocol, tasks, entries)
+        verified = entries[key].body
+        share = _share(verified, protocol, read_again)
+        _draw(verified, view, share, tasks, entries)
     for verification in view.live(EntryKind.VERIFICATION):
         if verification.key not in entries:
-            _reread(verification, view, protocol, tasks, waiting, entries)
+            share = _share(verification.body, protocol, read_again)
+            _reread(verification, view, protocol, share, tasks, waiting, entries)
     tasks.sort(key=lambda task: (task["trial"], task["outcome"]))
     waiting.sort(key=lambda item: (item.trial, item.outcome))
     return Settled(tuple(entries.values()), tuple(item.to_dict() for item in waiting), tuple(tasks))
@@ -133,10 +139,14 @@ def _held_back(final: Final, needs: Need, why: str) -> Waiting:
     return Waiting(final.case.trial, final.case.outcome, needs, why, since, readers)
 
 
+def _share(verification: Mapping[str, Any], protocol: Protocol, read_again: Collection[str]) -> float:
+    return 1.0 if verification["trial"] in read_again else protocol.verification.reread_share
+
+
 def _draw(
     verification: Mapping[str, Any],
     view: StateView,
-    protocol: Protocol,
+    share: float,
     tasks: list[dict[str, Any]],
     entries: Mapping[str, NewEntry],
 ) -> None:
@@ -146,7 +156,7 @@ def _draw(
     result = entries[key].body if key in entries else live.body if live else None
     if result is None:
         return
-    drawn = drawn_fields(result, verification["agreed"], protocol.verification.reread_share)
+    drawn = drawn_fields(result, verification["agreed"], share)
     if drawn:
         tasks.append(_task(result, drawn))
 
@@ -160,6 +170,7 @@ def _reread(
     verification: StoredView,
     view: StateView,
     protocol: Protocol,
+    share: float,
     tasks: list[dict[str, Any]],
     waiting: list[Waiting],
     entries: dict[str, NewEntry],
@@ -169,7 +180,7 @@ def _reread(
     result = view.get(f"result/{trial}/{outcome}")
     if result is None:
         return
-    drawn = drawn_fields(result.body, verification.body["agreed"], protocol.verification.reread_share)
+    drawn = drawn_fields(result.body, verification.body["agreed"], share)
     readings = [
         entry
         for entry in view.live(EntryKind.EXTRACTION)

@@ -13,6 +13,7 @@ from treering.records.base import (
     Positive,
     Record,
     Text,
+    Whole,
     WrittenDate,
     written_text,
 )
@@ -52,6 +53,7 @@ class Adjudication(Record):
     reason_class: ReasonClass
     reason: Text
     unresolved: bool = False
+    minutes: Whole = None
     date: OptionalDay = None
 
     @model_validator(mode="after")
