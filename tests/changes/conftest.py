@@ -45,14 +45,13 @@ def body(rows: Sequence[dict[str, Any]], estimate: float | None = None, **other:
     return {**base, "monitoring": None, **other}
 
 
-@dataclass
 class Kit:
     """The builders above, for tests."""
 
-    entry: Any = StoredEntry
-    row: Any = staticmethod(row)
-    body: Any = staticmethod(body)
-    mean: Any = staticmethod(mean)
+    entry = StoredEntry
+    row = staticmethod(row)
+    body = staticmethod(body)
+    mean = staticmethod(mean)
 
 
 @pytest.fixture(scope="session")

@@ -70,7 +70,9 @@ def test_a_corrected_number_is_told_with_both_values_and_its_reason(kit):
         ("erratum", "correction"),
     ],
 )
-def test_a_trial_that_leaves_by_a_notice_is_listed_as_removed_with_the_cause_of_the_notice(kit, notice, cause):
+def test_a_trial_that_leaves_by_a_notice_is_listed_as_removed_with_the_cause_of_the_notice(
+    kit, notice, cause
+):
     before = kit.body([kit.row("alder", 0.0), kit.row("brook", 0.4)])
     out = kit.row("brook", 0.4, in_main=False, left_out="by a notice")
     entry = kit.entry("integrity notice", "integrity/brook/2031/n", 5, {"trial": "brook", "notice": notice})
@@ -96,7 +98,9 @@ def test_a_reinstated_trial_comes_back_under_the_integrity_notice(kit):
 def test_a_new_judgement_is_a_change_that_moves_nothing(kit):
     before = kit.body([kit.row("alder", 0.1, risk_of_bias="Low")])
     after = kit.body([kit.row("alder", 0.1, risk_of_bias="High")])
-    entry = kit.entry("risk-of-bias judgement", "bias/alder/failed", 4, {"trial": "alder", "outcome": "failed"})
+    entry = kit.entry(
+        "risk-of-bias judgement", "bias/alder/failed", 4, {"trial": "alder", "outcome": "failed"}
+    )
     found = run(kit, before, after, [entry])
     assert found["causes"] == ["risk-of-bias judgement"]
     assert [p["movement"] for p in found["split"]] == [0.0]

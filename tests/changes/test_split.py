@@ -49,9 +49,7 @@ def test_a_comparison_does_not_depend_on_the_order_of_the_entries(kit, drawn):
     before, after, entries = two_versions(kit, drawn)
 
     def run(listed):
-        return compare(
-            {"f": before}, {"f": after}, listed, ("1", "1"), repool=lambda n, rows: kit.mean(rows)
-        )
+        return compare({"f": before}, {"f": after}, listed, ("1", "1"), repool=lambda n, rows: kit.mean(rows))
 
     assert run(entries) == run(entries[::-1])
 

@@ -146,6 +146,10 @@ def ticks(low: float, high: float, scale: str, *, most: int = 7) -> list[tuple[f
     """
     if scale != "log":
         return _even_ticks(low, high, most)
+    if high - low < math.log(2):  # so narrow that even steps of the ratio itself read best
+        return [
+            (math.log(float(label)), label) for _, label in _even_ticks(math.exp(low), math.exp(high), most)
+        ]
     digits = ((1, 1.25, 1.5, 2, 2.5, 3, 4, 5, 6, 8), (1, 1.5, 2, 3, 5, 7), (1, 2, 5), (1, 3), (1,))
     for mantissas in digits:
         values = {m * 10.0**e for e in range(-6, 7) for m in mantissas}
