@@ -16,8 +16,8 @@ LARGEST = 1e12
 LONGEST = 20_000
 """Most characters of one text."""
 
-_PLAIN = re.compile(r"[+-]?\d+(\.\d+)?([eE][+-]?\d{1,3})?")
-_REDUCED_DATE = re.compile(r"(\d{4})(?:-(\d{2})(?:-(\d{2}))?)?")
+_PLAIN = re.compile(r"[+-]?[0-9]+(\.[0-9]+)?([eE][+-]?[0-9]{1,3})?")
+_REDUCED_DATE = re.compile(r"([0-9]{4})(?:-([0-9]{2})(?:-([0-9]{2}))?)?")
 _ABSENT_WORDS = frozenset(
     {"na", "n/a", "nr", "nd", "-", "--", ".", "not reported", "none", "null", "nan", "?"}
 )
@@ -33,7 +33,7 @@ def _text_to_number(text: str) -> float | int:
     """Read a plain decimal number; anything that needs a guess is refused."""
     stripped = text.strip().replace("\u2212", "-")
     if _PLAIN.fullmatch(stripped):
-        return int(stripped) if re.fullmatch(r"[+-]?\d{1,15}", stripped) else float(stripped)
+        return int(stripped) if re.fullmatch(r"[+-]?[0-9]{1,15}", stripped) else float(stripped)
     if stripped.lower() in _ABSENT_WORDS:
         raise ValueError("leave the field empty when the report gives no number; 0 means zero was reported")
     if "," in stripped and re.fullmatch(r"[+-]?[\d.,\s]+", stripped):
@@ -104,7 +104,7 @@ def iso_day(value: Any) -> Any:
         raise ValueError("write a date alone, YYYY-MM-DD, without a time")
     if isinstance(value, date):
         return value
-    if isinstance(value, str) and re.fullmatch(r"\d{4}-\d{2}-\d{2}", value.strip()):
+    if isinstance(value, str) and re.fullmatch(r"[0-9]{4}-[0-9]{2}-[0-9]{2}", value.strip()):
         try:
             return date.fromisoformat(value.strip())
         except ValueError as error:
