@@ -261,7 +261,7 @@ def test_h22_what_is_new_does_not_hang_on_the_order_of_the_trials_or_the_last_di
     look = next_look(plan, [], date="2031-01-01", version=1, **data)
     turned = {"trials": "CBA", "estimates": y[::-1] * (1 + 1e-12), "variances": v[::-1]}
     assert not holds_new_data(plan, [look], **turned)
-    assert holds_new_data(plan, [look], trials="ABC", estimates=y + [0, 0, 0.001], variances=v)
+    assert holds_new_data(plan, [look], trials="ABC", estimates=y + 0.001 * np.eye(3)[2], variances=v)
     assert holds_new_data(plan, [look], trials="ABD", estimates=y, variances=v)
 
 
@@ -271,7 +271,9 @@ def test_past_the_required_information_all_alpha_is_spent_once(review):
     last = r.add("B", 0.6, 1.5)
     later = r.add("C", 0.2, 5.0)
     assert (last.alpha_spent, last.verdict) == (pytest.approx(0.05), REACHED)
+    assert last.adjusted_low < 0 < last.adjusted_high
     assert (later.boundary, later.spends, later.verdict) == (None, False, REACHED)
+    assert (later.redrawn_boundary, later.adjusted_low) == (None, None)
     assert later.mixture_low > 0, "the anytime-valid interval goes on"
 
 

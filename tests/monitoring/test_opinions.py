@@ -62,6 +62,25 @@ def test_more_diversity_than_planned_raises_the_bound():
     assert opinion.threshold > look.boundary
 
 
+def test_one_sided_rules_all_look_to_the_tested_side():
+    y, v = np.full(8, 0.6) + 0.01 * np.arange(8), np.full(8, 0.02)
+    strip, _ = strip_of(y, v, sides=1, role="harm")
+    assert {opinion.crossed for opinion in strip.opinions} == {False}
+    strip, _ = strip_of(y, v, sides=1)
+    assert {opinion.crossed for opinion in strip.opinions} == {True}
+
+
+def test_a_look_without_alpha_has_no_boundary_for_any_spending_rule(review):
+    r = review()
+    r.add("A", 0.4, 1.0)
+    r.add("B", 0.3, 1.5)
+    look = r.remove("A")
+    strip = second_opinions(r.plan, r.looks, [look.estimate], [look.standard_error**2])
+    assert look.redrawn_boundary is None
+    assert [opinion.threshold for opinion in strip.opinions[:4]] == [None] * 4
+    assert not any(opinion.crossed for opinion in strip.opinions[:4])
+
+
 def test_the_iterated_logarithm_waits_for_information():
     strip, _ = strip_of(np.array([0.5, 0.2]), np.full(2, 2.0))
     opinion = next(o for o in strip.opinions if o.name == "law of the iterated logarithm")

@@ -133,7 +133,7 @@ def next_look(
         plan_digest=plan.digest(),
         remarks=why + _ledger_remarks(state, amendment if amended else None, new_data=new_data),
         **effect_fields(plan, test),
-        **adjusted_fields(plan, found, test),
+        **adjusted_fields(plan, found, test, verdict),
     )
 
 

@@ -131,11 +131,11 @@ def second_opinions(
         opinions=(
             _main(plan, last, critical),
             _other_test(plan, y, v, critical),
-            _other_diversity(plan, looks, last),
+            _other_diversity(plan, looks, last, critical),
             _informative_prior(plan, y, v, critical, prior),
             _iterated_logarithm(plan, last),
             _mixture(plan, last),
-            _product(plan, y, v),
+            _product(plan, last, y, v),
             _plain(plan, last),
         )
     )
@@ -166,19 +166,23 @@ def _other_test(plan: MonitoringPlan, y: FloatArray, v: FloatArray, critical: fl
     return _against(plan, name, None if test is None else test.z, critical, note)
 
 
-def _other_diversity(plan: MonitoringPlan, looks: Sequence[Look], last: Look) -> Opinion:
+def _other_diversity(
+    plan: MonitoringPlan, looks: Sequence[Look], last: Look, critical: float | None
+) -> Opinion:
     """Redraw the boundary with the required information under the re-estimated D2."""
     name = "re-estimated diversity"
     note = "The planned Z against a boundary redrawn for the D2 of the present trials."
     if last.required_reestimated is None:
         return _against(plan, name, None, None, note + " D2 cannot be estimated yet.")
+    if critical is None:
+        return _against(plan, name, last.z, None, note + " No alpha is available at this look.")
     redrawn: list[Used] = []
     required = last.required_reestimated
     for information, _ in ledger_state(plan, looks).used:
         if information < min(last.information, required) * (1.0 - SAME):
             redrawn.append((information, redrawn_value(plan, redrawn, information, required, plan.alpha)))
-    critical = redrawn_value(plan, redrawn, last.information, required, plan.alpha)
-    return _against(plan, name, last.z, critical, note)
+    own = redrawn_value(plan, redrawn, last.information, required, plan.alpha)
+    return _against(plan, name, last.z, own, note)
 
 
 def _informative_prior(
@@ -215,20 +219,23 @@ def _mixture(plan: MonitoringPlan, last: Look) -> Opinion:
     if last.estimate is None or last.standard_error is None:
         return _against(plan, name, None, None, note)
     value = log_e_value(last.estimate, last.standard_error, prior_sd=plan.mixture_prior_sd)
-    return _evidence(plan, name, value, note)
+    return _evidence(plan, last, name, value, note)
 
 
-def _product(plan: MonitoringPlan, y: FloatArray, v: FloatArray) -> Opinion:
+def _product(plan: MonitoringPlan, last: Look, y: FloatArray, v: FloatArray) -> Opinion:
     name = "product of e-values over trials"
     note = "Log product of one e-value per trial (ter Schure 2022), against no effect in any trial."
     value = log_e_product(y, np.sqrt(v), prior_sd=plan.mixture_prior_sd)[-1]
-    return _evidence(plan, name, float(value), note)
+    return _evidence(plan, last, name, float(value), note)
 
 
-def _evidence(plan: MonitoringPlan, name: str, value: float, note: str) -> Opinion:
-    """Compare a log e-value with log(1/alpha)."""
+def _evidence(plan: MonitoringPlan, last: Look, name: str, value: float, note: str) -> Opinion:
+    """Compare a log e-value with log(1/alpha); with one side only in the tested direction."""
     threshold = -math.log(plan.alpha)
-    return Opinion(name=name, statistic=value, threshold=threshold, crossed=value >= threshold, note=note)
+    crossed = value >= threshold
+    if plan.sides == 1 and last.estimate is not None:
+        crossed = crossed and last.estimate * plan.tested_direction > 0
+    return Opinion(name=name, statistic=value, threshold=threshold, crossed=crossed, note=note)
 
 
 def _plain(plan: MonitoringPlan, last: Look) -> Opinion:

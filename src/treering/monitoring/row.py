@@ -9,6 +9,7 @@ from treering.monitoring.anytime import mixture_interval
 from treering.monitoring.plan import MonitoringPlan
 from treering.monitoring.planned import PlannedTest
 from treering.monitoring.verdict import Finding
+from treering.terms import Verdict
 
 
 def effect_fields(plan: MonitoringPlan, test: PlannedTest | None) -> dict[str, Any]:
@@ -52,8 +53,13 @@ def _reestimated(plan: MonitoringPlan, test: PlannedTest) -> dict[str, float | N
     }
 
 
-def adjusted_fields(plan: MonitoringPlan, found: Finding, test: PlannedTest | None) -> dict[str, Any]:
+def adjusted_fields(
+    plan: MonitoringPlan, found: Finding, test: PlannedTest | None, verdict: Verdict
+) -> dict[str, Any]:
     """Return fraction, critical values and the repeated interval by field name.
+
+    A look that cannot spend shows a redrawn boundary only when a crossing was compared with it: anything
+    else would draw a line that judges nothing.
 
     Parameters
     ----------
@@ -63,6 +69,8 @@ def adjusted_fields(plan: MonitoringPlan, found: Finding, test: PlannedTest | No
         What the look found.
     test : PlannedTest or None
         The planned test; None without a usable trial.
+    verdict : Verdict
+        What the look was judged.
 
     Returns
     -------
@@ -70,14 +78,16 @@ def adjusted_fields(plan: MonitoringPlan, found: Finding, test: PlannedTest | No
         Fields of `Look`.
     """
     required = plan.required_information
-    low, high = _repeated(plan, found.boundary if found.spends else found.redrawn, test)
+    compared = verdict not in (Verdict.CANNOT_BE_JUDGED, Verdict.REACHED_WITHOUT_CROSSING)
+    redrawn = found.redrawn if compared and not found.spends else None
+    low, high = _repeated(plan, found.boundary if found.spends else redrawn, test)
     return {
         "required": required,
         "required_inflated": None if found.inflation is None else required * found.inflation,
         "fraction": found.fraction,
         "z": found.z,
         "boundary": found.boundary,
-        "redrawn_boundary": found.redrawn,
+        "redrawn_boundary": redrawn,
         "futility": found.futility if found.spends else found.redrawn_futility,
         "adjusted_low": low,
         "adjusted_high": high,
