@@ -129,6 +129,12 @@ class ReviewFolder:
         return open_evidence(read_review(self.folder))
 
 
+@pytest.fixture(scope="session")
+def review_class() -> type[ReviewFolder]:
+    """Return the class that lays out a review folder, for fixtures that share one review."""
+    return ReviewFolder
+
+
 @pytest.fixture
 def make_review(tmp_path: Path) -> Iterator[Callable[..., ReviewFolder]]:
     """Make review folders."""

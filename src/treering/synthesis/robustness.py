@@ -40,6 +40,7 @@ def _short(pooled: PooledEffect, name: str, note: str = "") -> dict[str, Any]:
         "name": name,
         "k": pooled.k,
         "estimate": pooled.estimate,
+        "standard_error": pooled.standard_error,
         "ci_low": pooled.ci_low,
         "ci_high": pooled.ci_high,
         "tau2": pooled.tau2,
