@@ -77,7 +77,7 @@ def test_any_changed_byte_is_found(which, draw):
     place = draw.draw(st.integers(0, len(canonical) - 1))
     byte = draw.draw(st.integers(0, 255).filter(lambda value: value != canonical[place]))
     rows[which] = (seq, canonical[:place] + bytes([byte]) + canonical[place + 1 :], digest)
-    with pytest.raises((EntryHashError, EntryGapError), match=f"ntry {which}"):
+    with pytest.raises((EntryHashError, EntryGapError, BrokenLinkError), match=f"ntry {which}"):
         check_links(rows)
 
 
@@ -94,6 +94,20 @@ def test_entry_without_a_link_is_broken():
     stray = ledger(1, start=1)
     with pytest.raises(BrokenLinkError, match="Found: no hash"):
         check_links([rows[0], *stray])
+
+
+@pytest.mark.parametrize("change", [{"reason": "corrected"}, {"replaces": 1}], ids=str)
+def test_entries_with_a_reason_or_a_replacement_are_checked_as_well(change):
+    rows = ledger(2)
+    entry = NewEntry(EntryKind.STUDY, "study/T9", {"trial": "T9"}, "2021-03-01", **change)
+    known = "2026-05-04T06:00:00Z"
+    value = entry_value(entry, seq=2, known_at=known, previous=rows[1][2].hex())
+    good = library_bytes(value)
+    check_links([*rows, (2, good, sha256(good).digest())])
+    for wrong, error in (({"seq": 3}, EntryGapError), ({"previous": "00" * 32}, BrokenLinkError)):
+        bad = library_bytes(value | wrong)
+        with pytest.raises(error):
+            check_links([*rows, (2, bad, sha256(bad).digest())])
 
 
 def test_cut_tail_shows_only_against_a_known_size():

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -58,14 +59,15 @@ class StoredEntry:
     replaces: int | None
     hash: str
     canonical: bytes = field(repr=False)
-    _body: list[dict[str, Any]] = field(default_factory=list, init=False, repr=False, compare=False)
+    _body: dict[str, Any] | None = field(default=None, init=False, repr=False, compare=False)
 
     @property
     def body(self) -> dict[str, Any]:
         """The content as plain JSON values, read from the canonical bytes; not to be changed."""
-        if not self._body:
-            self._body.append(parse(self.canonical)["body"])
-        return self._body[0]
+        if self._body is None:
+            object.__setattr__(self, "_body", parse(self.canonical)["body"])
+        body: dict[str, Any] = self._body  # type: ignore[assignment]
+        return body
 
 
 LedgerRow = tuple[int, str, str, str, str, str, str | None, str | None, int | None, bytes, bytes]
@@ -209,22 +211,26 @@ def entry_value(entry: NewEntry, *, seq: int, known_at: str, previous: str) -> d
     }
 
 
-def read_row(canonical: bytes, digest: bytes) -> LedgerRow:
-    """Return the ledger row that canonical bytes ask for, as an import or the audit needs it.
+def row_of(value: Mapping[str, Any], canonical: bytes, digest: bytes) -> LedgerRow:
+    """Return the ledger row that canonical bytes ask for.
 
     Parameters
     ----------
-    canonical : bytes
-        Canonical bytes of an entry.
-    digest : bytes
-        Their SHA-256.
+    value : mapping
+        The JSON value of the bytes.
+    canonical, digest : bytes
+        The bytes and their SHA-256.
 
     Returns
     -------
     LedgerRow
-        All columns read from the bytes.
+        All columns as the value states them.
+
+    Raises
+    ------
+    KeyError
+        When the value is no entry.
     """
-    value = parse(canonical)
     return (
         value["seq"],
         value["kind"],

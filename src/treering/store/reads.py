@@ -9,8 +9,9 @@ from typing import Any, Self
 from sqlalchemy import Engine
 
 from treering.errors import StoreError
-from treering.store import merkle, reader
+from treering.store import comparing, merkle, reader
 from treering.store.chain import ChainRow, known_time, true_date
+from treering.store.comparing import Difference
 from treering.store.connection import place_of, reading
 from treering.store.entries import Head, StoredEntry, stored
 from treering.store.state import State
@@ -225,6 +226,21 @@ class StoreReader:
             Column to value; what :func:`treering.store.projection.typed_values` gives for a sound store.
         """
         yield from reader.typed_rows(self._engine, kind, since, self._end(until))
+
+    def differences(self, *, since: int = 0, until: int | None = None) -> Iterator[Difference]:
+        """Yield where columns and typed tables do not say what the canonical bytes say.
+
+        Parameters
+        ----------
+        since, until
+            As for :meth:`entries`.
+
+        Yields
+        ------
+        Difference
+            None for a sound store.
+        """
+        yield from comparing.differences(self._engine, since, self._end(until))
 
     def _end(self, until: int | None) -> int:
         with reading(self._engine) as connection:

@@ -1,0 +1,128 @@
+"""Columns and typed tables compared with the canonical bytes they repeat; the bytes are the evidence."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import Any
+
+from sqlalchemy import JSON, Engine
+
+from treering.errors import StoreError
+from treering.store import reader
+from treering.store.canonical import parse, parse_canonical
+from treering.store.connection import reading
+from treering.store.entries import ROW_FIELDS, LedgerRow, row_of
+from treering.store.models import METADATA, TABLES
+from treering.store.projection import project, typed_values
+from treering.terms import EntryKind
+
+_CHUNK = 5000
+
+
+@dataclass(frozen=True, slots=True)
+class Difference:
+    """One place where the database does not say what the canonical bytes say.
+
+    Parameters
+    ----------
+    seq : int
+        Entry.
+    table, column : str
+        Where it differs; column is "row" for a missing or surplus row and "canonical" for bytes that are not
+        the canonical form of what they hold.
+    found, expected : object
+        What is stored, and what the bytes ask for.
+    """
+
+    seq: int
+    table: str
+    column: str
+    found: object
+    expected: object
+
+
+def differences(engine: Engine, since: int, until: int) -> Iterator[Difference]:
+    """Compare entries with their canonical bytes.
+
+    Parameters
+    ----------
+    engine : Engine
+        Engine of the store.
+    since, until : int
+        First sequence number, and the one after the last.
+
+    Yields
+    ------
+    Difference
+        None for a sound store.
+    """
+    queries = {kind: _typed_query(engine.dialect.name, kind) for kind in EntryKind}
+    for start in range(since, until, _CHUNK):
+        stop = min(start + _CHUNK, until)
+        rows = list(reader.ledger_rows(engine, start, stop))
+        with reading(engine) as connection:
+            typed = {
+                kind: {row[0]: tuple(row) for row in reader.fetch(connection, query, start, stop)}
+                for kind, query in queries.items()
+            }
+        for row in rows:
+            yield from _entry_differences(row, typed)
+        for kind, left in typed.items():
+            for seq in left:
+                yield Difference(seq, str(TABLES[kind].__tablename__), "row", "a row", "no row")
+
+
+def _typed_query(dialect: str, kind: EntryKind) -> str:
+    """Return the query for typed rows as the driver took them; lists and tables as their text."""
+    table = METADATA.tables[str(TABLES[kind].__tablename__)]
+    columns = []
+    for column in table.columns:
+        text = isinstance(column.type, JSON) and dialect == "postgresql"
+        columns.append(f'CAST("{column.name}" AS TEXT)' if text else f'"{column.name}"')
+    return f'SELECT {", ".join(columns)} FROM "{table.name}" WHERE entry >= ? AND entry < ?'
+
+
+_Typed = dict[EntryKind, dict[int, tuple[Any, ...]]]
+
+
+def _entry_differences(row: LedgerRow, typed: _Typed) -> Iterator[Difference]:
+    """Yield the differences of one entry, and take its typed row out of those left over."""
+    seq, canonical = row[0], bytes(row[-1])
+    try:
+        value = parse_canonical(canonical)
+        expected = row_of(value, canonical, row[9])
+        kind, body = EntryKind(expected[1]), value["body"]
+        wanted = project(kind, seq, body, key=expected[2])
+    except (KeyError, TypeError, ValueError, AttributeError, StoreError) as error:
+        yield Difference(seq, "entry", "canonical", canonical[:80], f"an entry in canonical form ({error})")
+        return
+    if row[:-2] != expected[:-2]:
+        for name, found, right in zip(ROW_FIELDS, row, expected, strict=True):
+            if found != right:
+                yield Difference(seq, "entry", name, found, right)
+    found_row = typed[kind].pop(seq, None)
+    if found_row != wanted:
+        yield from _typed_differences(typed_values(kind, seq, body, key=expected[2]), kind, found_row)
+
+
+def _typed_differences(
+    wanted: dict[str, Any], kind: EntryKind, found: tuple[Any, ...] | None
+) -> Iterator[Difference]:
+    """Compare a typed row value by value: equal lists and tables may be written differently."""
+    table, seq = str(TABLES[kind].__tablename__), wanted["entry"]
+    if found is None:
+        yield Difference(seq, table, "row", "no row", "a row")
+        return
+    columns = METADATA.tables[table].columns
+    for (name, right), stored in zip(wanted.items(), found, strict=True):
+        value = _plain(stored) if isinstance(columns[name].type, JSON) else stored
+        if value != right:
+            yield Difference(seq, table, name, value, right)
+
+
+def _plain(stored: Any) -> Any:
+    try:
+        return parse(stored.encode()) if isinstance(stored, str) else stored
+    except ValueError:
+        return stored
