@@ -125,3 +125,23 @@ def pack(y: FloatArray, v: FloatArray, counts: IntArray) -> Batch:
     return Batch(
         np.ascontiguousarray(padded_y.T), np.ascontiguousarray(padded_v.T), counts.astype(np.float64)
     )
+
+
+def spans(count: int, tall: int) -> Iterator[slice]:
+    """Cut `count` syntheses of equal height into slices that each fill about one rectangle.
+
+    Parameters
+    ----------
+    count : int
+        Number of syntheses.
+    tall : int
+        Trials in each.
+
+    Yields
+    ------
+    slice
+        Consecutive syntheses.
+    """
+    wide = max(1, CHUNK_NUMBERS // tall)
+    for start in range(0, count, wide):
+        yield slice(start, min(start + wide, count))

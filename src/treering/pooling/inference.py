@@ -123,7 +123,7 @@ def i2_interval(q: FloatArray, df: FloatArray, level: float) -> tuple[FloatArray
     two_off = np.where(k > 2.0, k - 2.0, np.nan)
     error_small = np.sqrt((1.0 - 1.0 / (3.0 * two_off * two_off)) / (2.0 * two_off))
     half = special.ndtri(0.5 + level / 2.0) * np.where(large, error_large, error_small)
-    log_h = 0.5 * np.log(np.maximum(q, df) / np.maximum(df, 1.0))
+    log_h = 0.5 * np.log(np.where(df > 0.0, np.maximum(q, df) / np.maximum(df, 1.0), 1.0))
     low, high = (1.0 - np.exp(-2.0 * np.maximum(log_h + side, 0.0)) for side in (-half, half))
     return np.where(df > 0.0, low, np.nan), np.where(df > 0.0, high, np.nan)
 
