@@ -78,6 +78,9 @@ class Ledger:
     def get(self, key: str) -> Stored | None:
         return self.live_keys.get(key)
 
+    def all(self, kind: EntryKind) -> list[Stored]:
+        return [entry for entry in self.entries if entry.kind is kind]
+
 
 @dataclass
 class Review:

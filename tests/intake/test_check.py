@@ -9,6 +9,12 @@ import pytest
 from treering.terms import Cause, EntryKind
 
 FFA = "failed-first-attempt"
+COUNTS = {
+    "intervention_events": 24,
+    "intervention_total": 120,
+    "comparator_events": 36,
+    "comparator_total": 119,
+}
 
 
 def record(kind: str, **fields) -> str:
@@ -138,6 +144,31 @@ def test_an_extractor_changes_an_open_reading_only_with_a_reason(review, reading
 def test_a_correction_of_nothing_is_a_fault(review, reading) -> None:
     (fault,) = review.faults({"a.toml": reading("MV", correction="erratum")})
     assert "there is nothing to correct" in fault
+
+
+def test_a_reader_corrects_only_their_own_open_reading(review, reading) -> None:
+    review.people(SL={"roles": ("extractor",)})
+    review.update(
+        {"a.toml": reading("MV"), "b.toml": reading("OK", values={**COUNTS, "intervention_events": 42})}
+    )
+    faults = review.faults({"c.toml": reading("SL", correction="I see it otherwise")})
+    assert "SL has not read trial HW-01" in faults[0]
+    found = remarks(review, {"c.toml": reading("OK", correction="wrong line")})
+    assert "settled by the adjudicator, at the source" in found
+
+
+def test_an_older_report_or_a_preprint_takes_no_place_unasked(review, reading) -> None:
+    review.update({"a.toml": reading("MV"), "b.toml": reading("OK")})
+    older = {"report": "HW-01-0", "published": "2024-01-31"}
+    (fault,) = review.faults({"c.toml": reading("MV", **older)})
+    assert "appeared before HW-01-a, from which the result comes" in fault
+    assert (
+        review.faults({"c.toml": reading("MV", **older, correction="the later report has a typing error")})
+        == []
+    )
+    preprint = reading("MV", report="HW-01-p", published="2025-06-01").replace('"article"', '"preprint"')
+    (fault,) = review.faults({"c.toml": preprint})
+    assert "is a preprint, unlike HW-01-a" in fault
 
 
 def test_a_reading_dropped_twice_is_only_remarked_on(review, reading) -> None:

@@ -168,6 +168,18 @@ def test_a_correction_by_one_extractor_waits_for_the_other(review, reading) -> N
     assert result.replaces is not None
 
 
+def test_a_reading_that_was_used_once_never_makes_a_pair_again(review, reading) -> None:
+    review.people(SL={"roles": ("extractor",)})
+    review.update({"a.toml": reading("MV"), "b.toml": reading("OK")})
+    new = {"values": counts(26), "correction": "erratum"}
+    assert review.update({"c.toml": reading("MV", **new), "d.toml": reading("SL", **new)}).waiting == ()
+    assert review.update({}).waiting == ()
+    back = reading("MV", correction="the erratum was withdrawn")
+    (item,) = review.update({"e.toml": back}).waiting
+    assert item["needs"] == "second reading"
+    assert review.result("HW-01", FFA).body["values"]["intervention_events"] == 26
+
+
 def test_a_new_report_replaces_the_result_and_says_so(review, reading) -> None:
     review.update({"a.toml": reading("MV"), "b.toml": reading("OK")}, "2026-01-05")
     later = {"report": "HW-01-b", "published": "2025-12-01"}

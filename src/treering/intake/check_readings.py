@@ -8,7 +8,7 @@ from treering.intake.bodies import extraction_body
 from treering.intake.compare import compare_readings
 from treering.intake.scene import Scene
 from treering.intake.values import Fault, Located
-from treering.records import Adjudication, Extraction, Result
+from treering.records import Adjudication, Extraction, Result, last_day
 
 
 def is_repeat(scene: Scene, record: Extraction, result: Result) -> bool:
@@ -23,37 +23,69 @@ def reading_faults(
     """Check that a reading has a place: first, second, third, or with a reason why it changes."""
     if is_repeat(scene, record, result):
         return
-    trial, outcome, who = record.trial, result.outcome, record.extractor
+    if record.third_reading:
+        yield from _third_reading(scene, located, record, result.outcome)
+        return
+    if record.correction:
+        yield from _correction(scene, located, record, result.outcome)
+    else:
+        yield from _unexplained(scene, located, record, number, result.outcome)
+    group = scene.open_readings.get((record.trial, result.outcome), {})
+    readers = sorted(reader for report, reader in group if report == record.report.id)
+    if len(readers) > 2:
+        names = ", ".join(readers)
+        sentence = f"trial {record.trial}, {result.outcome} has more than two readers ({names})."
+        yield located.fault("extractor", sentence)
+
+
+def _correction(scene: Scene, located: Located, record: Extraction, outcome: str) -> Iterator[Fault]:
+    trial, who = record.trial, record.extractor
+    if (trial, outcome) not in scene.known_cases:
+        sentence = f"the store has no reading of trial {trial}, {outcome}: there is nothing to correct."
+        yield located.fault("correction", sentence)
+        return
+    verified = scene.view.get(f"verification/{trial}/{outcome}") is not None
+    if not verified and scene.view.get(f"extraction/{trial}/{outcome}/{who}") is None:
+        sentence = f"{who} has not read trial {trial}, {outcome}: there is nothing of theirs to correct."
+        yield located.fault("correction", sentence)
+
+
+def _unexplained(
+    scene: Scene, located: Located, record: Extraction, number: int, outcome: str
+) -> Iterator[Fault]:
+    """Refuse a reading that would change what is there without saying why."""
+    trial, who = record.trial, record.extractor
     path = located.path(number, "outcome")
     live = scene.view.get(f"result/{trial}/{outcome}")
     own = scene.view.get(f"extraction/{trial}/{outcome}/{who}")
-    if record.third_reading:
-        yield from _third_reading(scene, located, record, outcome)
-        return
-    if record.correction:
-        if (trial, outcome) not in scene.known_cases:
-            sentence = f"the store has no reading of trial {trial}, {outcome}: there is nothing to correct."
-            yield located.fault("correction", sentence)
-        return
     if own is not None and own.body["report"] == record.report.id:
         known = "is verified" if live is not None else f"was read by {who}"
         sentence = f"trial {trial}, {outcome} {known} already: say why it changes with correction."
         yield located.fault(path, sentence)
-    elif (
-        live is not None
-        and live.body["report"] == record.report.id
-        and not _is_waived(scene, record, outcome)
-    ):
+    elif live is not None and live.body["report"] != record.report.id:
+        yield from _older_source(scene, located, record, str(live.body["report"]))
+    elif live is not None and not _is_waived(scene, record, outcome):
         sentence = (
             f"trial {trial}, {outcome} is verified already: say why it changes with correction, "
             "or mark a check of agreed numbers with third_reading = true."
         )
         yield located.fault(path, sentence)
-    group = scene.open_readings.get((trial, outcome), {})
-    readers = sorted(reader for report, reader in group if report == record.report.id)
-    if len(readers) > 2 and (own is None or own.body["report"] != record.report.id):
-        sentence = f"trial {trial}, {outcome} has more than two readers ({', '.join(readers)})."
-        yield located.fault("extractor", sentence)
+
+
+def _older_source(scene: Scene, located: Located, record: Extraction, present: str) -> Iterator[Fault]:
+    """Let no older report, and no preprint of an article, take the place of a result unasked."""
+    report = scene.view.get(f"report/{present}")
+    appeared = record.appeared()
+    if report is None or appeared is None:
+        return
+    older = last_day(appeared).isoformat() < report.body["published"]
+    if older or (record.report.form, report.body["form"]) == ("preprint", "article"):
+        what = "appeared before" if older else "is a preprint, unlike"
+        sentence = (
+            f"report {record.report.id} {what} {present}, from which the result comes: "
+            "say why it should take its place with correction."
+        )
+        yield located.fault("report", sentence)
 
 
 def _is_waived(scene: Scene, record: Extraction, outcome: str) -> bool:

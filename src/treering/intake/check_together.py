@@ -41,6 +41,10 @@ def remarks_together(scene: Scene) -> Iterator[Remark]:
         if is_repeat(scene, record, result):
             path = located.path(number, "outcome")
             yield located.remark(path, "this reading is in the store already; nothing changes.")
+        case = scene.known_cases.get((record.trial, result.outcome))
+        if record.correction and case and case.verification is None and len(case.readings) > 1:
+            sentence = "two readings are in: a difference is settled by the adjudicator, at the source."
+            yield located.remark("correction", sentence)
     readers: dict[tuple[str, str], set[str]] = {}
     for located, extraction in scene.of(Extraction):
         readers.setdefault((located.place.file, extraction.trial), set()).add(extraction.extractor)

@@ -18,7 +18,8 @@ Need = Literal["second reading", "adjudication", "unresolved", "correction", "so
 class Case:
     """All that is live about one trial and outcome.
 
-    ``readings`` are the extractions that count as one of the two; third readings stand apart.
+    ``readings`` are the live extractions that count as one of the two (third readings stand apart);
+    ``used`` are the places of those that some verification, also a replaced one, was made from.
     """
 
     trial: str
@@ -27,6 +28,7 @@ class Case:
     verification: StoredView | None = None
     adjudication: StoredView | None = None
     waiver: StoredView | None = None
+    used: frozenset[int] = frozenset()
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,14 +87,10 @@ def pending_readings(case: Case) -> tuple[StoredView, ...]:
 
     A result that was let in by a waiver takes its one reading along when a second one comes.
     """
-    if case.verification is None:
-        fresh = case.readings
-    else:
-        used = set(case.verification.body["extractions"])
-        fresh = tuple(entry for entry in case.readings if entry.seq not in used)
-        if fresh and case.verification.body["basis"] == "waiver":
-            reports = {entry.body["report"] for entry in fresh}
-            fresh = tuple(entry for entry in case.readings if entry.body["report"] in reports)
+    fresh = tuple(entry for entry in case.readings if entry.seq not in case.used)
+    if fresh and case.verification is not None and case.verification.body["basis"] == "waiver":
+        reports = {entry.body["report"] for entry in fresh}
+        fresh = tuple(entry for entry in case.readings if entry.body["report"] in reports)
     return tuple(sorted(fresh, key=lambda entry: (str(entry.body["extractor"]), entry.seq)))
 
 

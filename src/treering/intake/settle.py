@@ -85,6 +85,10 @@ def _cases(view: StateView) -> Iterator[Case]:
     for entry in view.live(EntryKind.EXTRACTION):
         if not entry.body["third_reading"]:
             groups.setdefault((entry.body["trial"], entry.body["outcome"]), []).append(entry)
+    used: dict[tuple[str, str], set[int]] = {}
+    for verification in view.all(EntryKind.VERIFICATION):
+        body = verification.body
+        used.setdefault((body["trial"], body["outcome"]), set()).update(body["extractions"])
     for (trial, outcome), readings in sorted(groups.items()):
         yield Case(
             trial,
@@ -93,6 +97,7 @@ def _cases(view: StateView) -> Iterator[Case]:
             verification=view.get(f"verification/{trial}/{outcome}"),
             adjudication=view.get(f"adjudication/{trial}/{outcome}"),
             waiver=view.get(f"waiver/{trial}/{outcome}"),
+            used=frozenset(used.get((trial, outcome), ())),
         )
 
 

@@ -67,3 +67,7 @@ class StateView(Protocol):
     def get(self, key: str) -> StoredView | None:
         """Return the live entry with this key, or None."""
         ...
+
+    def all(self, kind: EntryKind) -> Sequence[StoredView]:
+        """Return every entry of one kind, replaced ones too, by place in the ledger."""
+        ...
