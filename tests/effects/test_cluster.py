@@ -111,6 +111,8 @@ def test_faulty_cluster_figures_are_refused(counts, size, icc, field):
 def test_faulty_single_figures_are_refused():
     with pytest.raises(AnalysisError, match="trial Alder: intracluster_correlation"):
         effects.design_effect(20, -0.1, trial="Alder")
+    with pytest.raises(AnalysisError, match="trial Alder: intracluster_correlation"):
+        effects.design_effect(20, 1.1, trial="Alder")
     with pytest.raises(AnalysisError, match="trial Alder: factor"):
         effects.effective_numbers(100, 0.9, trial="Alder")
     with pytest.raises(AnalysisError, match="trial Alder: variance"):

@@ -147,6 +147,7 @@ def test_a_record_keeps_formula_inputs_origin_and_source():
         (lambda: effects.log_odds_ratio_from_smd(1, -0.1, trial="Alder"), "variance"),
         (lambda: effects.change_from_baseline(1, 2, 3, 4, correlation=1.2, trial="Alder"), "correlation"),
         (lambda: effects.correlation_from_change(2, 3, 9, trial="Alder"), "change_sd"),
+        (lambda: effects.correlation_from_change(2, 3, 0.5, trial="Alder"), "change_sd"),
     ],
 )
 def test_a_faulty_input_is_refused_by_trial_and_field(call, field):

@@ -84,6 +84,15 @@ def test_the_skewness_check_calls_one_normal_sample_in_twenty_skewed(samples, sc
     assert calls / len(samples) == pytest.approx(0.05, abs=3 * math.sqrt(0.05 * 0.95 / len(samples)))
 
 
+@pytest.mark.parametrize(
+    ("given", "mean"), [(RANGE, 10.703326220462), (FIVE, 10.727953544287), (QUARTILES, 10.354875000000)]
+)
+def test_luos_means_are_those_of_the_printed_formulas(given, mean):
+    # Luo et al. 2018, from memory, n = 40 by hand: weights 4/(4 + 40^0.75) of the middle of the range,
+    # 0.7 + 0.39/40 of the middle of the quartiles, and 2.2/(2.2 + 40^0.75) with 0.7 - 0.72/40^0.55 for both.
+    assert effects.mean_and_sd_from_summary(10, 40, **given)["mean"] == pytest.approx(mean, rel=1e-11)
+
+
 def test_the_critical_values_are_those_of_the_printed_formulas():
     # Shi et al. 2020, formulas from memory, n = 40 by hand: 1.01/ln 49 + 2.43/41, 2.66/sqrt 40 - 5.92/1600,
     # 2.97/sqrt 40 - 39.1/64000; statistics (2 + 25 - 20)/23 and (7 + 14 - 20)/7, weight 2.65 ln 24/sqrt 40.

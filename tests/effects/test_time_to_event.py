@@ -62,6 +62,13 @@ def test_the_log_rank_route_comes_close_to_a_regression_on_the_individual_data(s
     assert found["variance"] ** 0.5 == pytest.approx(fit.bse[0], rel=0.03)
 
 
+def test_one_event_in_an_arm_is_enough_for_the_log_rank_route():
+    columns = {"p_value": [0.5], "intervention_events": [1], "comparator_events": [1]}
+    table = pd.DataFrame(columns).assign(lower_hazard="comparator")
+    # V = 1*1/2 (by hand).
+    assert effects.effect_sizes(table, "hazard-ratio")["variance"].tolist() == [2.0]
+
+
 def test_both_variance_formulas_agree_where_events_follow_the_allocation():
     by_events = effects.log_rank_variance(np.array([40.0]), np.array([20.0]))
     by_people = effects.log_rank_variance_by_allocation(
