@@ -10,8 +10,9 @@ from scipy.stats import norm, t
 
 from treering.errors import AnalysisError
 from treering.monitoring.dependence import rests_on, z_at
-from treering.monitoring.ledger import next_look
+from treering.monitoring.ledger import ledger_state, next_look
 from treering.monitoring.plan import MonitoringPlan
+from treering.monitoring.redrawn import redrawn_value, surely_beyond_redrawn
 from treering.pooling import pool
 
 
@@ -96,6 +97,22 @@ def test_a_futility_crossing_rests_on_trials_too(review):
     assert rests.sets == (("B",),)
     assert rests.sentence == "Rests on B: without it the boundary is not crossed."
     assert rests.tau2_lost is None
+
+
+def test_the_short_way_to_a_redrawn_boundary_never_contradicts_the_integration(review):
+    r = review(spending="pocock")
+    for number, z in enumerate((0.5, 1.0, 1.5, 2.0)):
+        r.add(f"T{number}", 0.2, z)
+    state, need = ledger_state(r.plan, r.looks), r.plan.required_information
+    told = 0
+    for share in (0.05, 0.2, 0.3, 0.55, 0.79):
+        where = (r.plan, state.used, share * need, need, state.available)
+        bound = redrawn_value(*where)
+        for z in np.linspace(0.0, 4.0, 41):
+            sure = surely_beyond_redrawn(*where, z=z)
+            told += sure is not None
+            assert sure is None or sure == (z >= bound)
+    assert told > 150
 
 
 def test_what_is_not_crossed_rests_on_nothing(review):

@@ -301,6 +301,32 @@ def test_a_crossing_to_the_other_side_says_that_the_first_is_gone(review):
     assert "no longer supported" in look.remarks[0]
 
 
+def test_h23_a_recomputation_after_a_defect_of_the_tool_is_judged_like_a_correction(review):
+    # The same trials give other numbers: the earlier row stays, no alpha comes back, and a crossing that
+    # the right numbers do not support is lost.
+    r = review()
+    wrong = r.add("A", 0.6, 2.8)
+    r.trials["A"] = (0.55, 1.9)
+    right = r.look()
+    assert r.looks[0] == wrong
+    assert (right.spends, right.alpha_spent, right.verdict) == (False, wrong.alpha_spent, LOST)
+
+
+def test_a_sum_that_meets_the_required_information_up_to_rounding_has_met_it(review):
+    r = review()
+    r.add("A", 0.7, 1.0)
+    look = r.add("B", 0.3 - 1e-12, 1.0)
+    assert (look.fraction, look.alpha_spent, look.verdict) == (1.0, pytest.approx(0.05), REACHED)
+
+
+def test_equal_estimates_have_no_plain_knapp_hartung_test():
+    plan = MonitoringPlan(effect=0.3, better="higher", interval="knapp-hartung")
+    data = {"trials": "AB", "estimates": [0.5, 0.5], "variances": [0.01, 0.01]}
+    look = next_look(plan, [], date="2031-01-01", version=1, **data)
+    assert (look.z, look.mixture_low, look.spends, look.verdict) == (None, None, False, CANNOT)
+    assert json.dumps(look.to_dict(), allow_nan=False)
+
+
 def test_no_usable_trial_cannot_be_judged(review):
     look = review().look()
     assert (look.estimate, look.z, look.information, look.verdict) == (None, None, 0.0, CANNOT)

@@ -24,7 +24,8 @@ from treering.monitoring.ledger import ledger_state
 from treering.monitoring.look import Look
 from treering.monitoring.plan import MonitoringPlan
 from treering.monitoring.planned import PlannedTest, check_trials, planned_test
-from treering.monitoring.verdict import crossing, within_futility
+from treering.monitoring.redrawn import surely_beyond_redrawn
+from treering.monitoring.verdict import EFFICACY, crossing, within_futility
 from treering.terms import CROSSED, IntervalMethod, Verdict
 
 MOST_SETS = 2000  # sets of trials tried before the search gives up
@@ -147,10 +148,19 @@ def _rule(
 ) -> Callable[[PlannedTest | None], bool]:
     """Return whether the crossing would stand if the next look found this test."""
     state = ledger_state(plan, looks)
+    least = state.highest * plan.required_information  # up to here a look cannot spend
+    side = plan.benefit_direction if verdict is Verdict.BENEFIT_CROSSED else -plan.benefit_direction
 
     def stands(test: PlannedTest | None) -> bool:
         if test is None or test.z is None:
             return False
+        if verdict in EFFICACY and (state.finished or test.information <= least):
+            oriented = test.z * side
+            sure = surely_beyond_redrawn(
+                plan, state.used, test.information, plan.required_information, state.available, z=oriented
+            )
+            if sure is not None:
+                return sure
         found = find(plan, state, test, new_data=True)
         if verdict is Verdict.FUTILITY_CROSSED:
             bound = found.futility if found.spends else found.redrawn_futility

@@ -63,6 +63,8 @@ def find(plan: MonitoringPlan, state: LedgerState, test: PlannedTest | None, *, 
     """
     information = test.information if test else 0.0
     fraction = information / plan.required_information
+    if abs(fraction - 1.0) < SAME:
+        fraction = 1.0  # a sum of trials that meets the required information up to rounding has met it
     left = state.available > LEAST_ALPHA
     testable = test is not None and test.z is not None
     room = new_data and left and not state.finished and fraction > state.highest * (1.0 + SAME)

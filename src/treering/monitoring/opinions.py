@@ -216,7 +216,7 @@ def _mixture(plan: MonitoringPlan, last: Look) -> Opinion:
     """Ask the anytime-valid mixture; its log e-value passes log(1/alpha) when the interval leaves out 0."""
     name = "anytime-valid mixture"
     note = f"Log e-value of the planned estimate, normal mixture with SD {plan.mixture_prior_sd:.3g}."
-    if last.estimate is None or last.standard_error is None:
+    if last.estimate is None or not last.standard_error:
         return _against(plan, name, None, None, note)
     value = log_e_value(last.estimate, last.standard_error, prior_sd=plan.mixture_prior_sd)
     return _evidence(plan, last, name, value, note)

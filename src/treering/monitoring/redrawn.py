@@ -9,6 +9,8 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
+from scipy.special import ndtr
+
 from treering.monitoring.boundaries import next_boundary
 from treering.monitoring.plan import MonitoringPlan
 from treering.monitoring.spending import alpha_spent
@@ -37,7 +39,7 @@ def spent_at(plan: MonitoringPlan, fraction: float, available: float) -> float:
     float
     """
     spent = alpha_spent(
-        [fraction],
+        [1.0 if fraction >= 1.0 - SAME else fraction],
         alpha=available,
         sides=plan.sides,
         spending=plan.spending,
@@ -101,14 +103,58 @@ def redrawn_value(
     float or None
         None when no Z could be beyond it.
     """
+    before, increment = _redrawn_increment(plan, used, information, required, available)
+    return critical_value(before, information, increment, sides=plan.sides)
+
+
+def _redrawn_increment(
+    plan: MonitoringPlan, used: Sequence[Used], information: float, required: float, available: float
+) -> tuple[list[Used], float]:
+    """Return the looks that stay before the redrawn one, and the alpha it would spend."""
     before = [
         (info, bound)
         for info, bound in used
         if info < information * (1 - SAME) and info < required * (1 - SAME)
     ]
     already = spent_at(plan, before[-1][0] / required, available) if before else 0.0
-    increment = spent_at(plan, information / required, available) - already
-    return critical_value(before, information, increment, sides=plan.sides)
+    return before, spent_at(plan, information / required, available) - already
+
+
+def surely_beyond_redrawn(
+    plan: MonitoringPlan,
+    used: Sequence[Used],
+    information: float,
+    required: float,
+    available: float,
+    *,
+    z: float,
+) -> bool | None:
+    """Say without integration whether a magnitude of Z is beyond the redrawn boundary, where that is sure.
+
+    The chance to be beyond the boundary now is at least what this look spends and at most all that is
+    spent up to it, so the boundary lies between the quantiles of the two.
+
+    Parameters
+    ----------
+    plan, used, information, required, available
+        As in `redrawn_value`.
+    z : float
+        Magnitude of Z (one-sided: Z in the tested direction).
+
+    Returns
+    -------
+    bool or None
+        None when only the integration can tell.
+    """
+    _, increment = _redrawn_increment(plan, used, information, required, available)
+    if increment <= 0.0:
+        return False
+    tail = float(ndtr(-z))
+    if tail * plan.sides <= increment:
+        return True
+    if tail * plan.sides > spent_at(plan, information / required, available):
+        return False
+    return None
 
 
 def fresh_values(

@@ -32,10 +32,12 @@ def effect_fields(plan: MonitoringPlan, test: PlannedTest | None) -> dict[str, A
         sizes = ("required_reestimated", "fraction_reestimated", "diversity_reestimated")
         return dict.fromkeys(names + sizes) | {"information": 0.0}
     pooled = test.pooled
-    low, high = mixture_interval(
-        pooled.estimate, pooled.standard_error, prior_sd=plan.mixture_prior_sd, alpha=plan.alpha
-    )
-    values = (pooled.estimate, pooled.standard_error, pooled.ci_low, pooled.ci_high, float(low), float(high))
+    low = high = None
+    if pooled.standard_error > 0.0:  # zero for a plain Knapp-Hartung test of equal estimates
+        low, high = mixture_interval(
+            pooled.estimate, pooled.standard_error, prior_sd=plan.mixture_prior_sd, alpha=plan.alpha
+        )
+    values = (pooled.estimate, pooled.standard_error, pooled.ci_low, pooled.ci_high, low, high)
     return dict(zip(names, (*values, test.p), strict=True)) | _reestimated(plan, test)
 
 
