@@ -16,12 +16,11 @@ from treering.effects.crossover import (
     paired_mean_difference,
     paired_standardized_mean_difference,
 )
-from treering.effects.deviations import (
+from treering.effects.deviations import sd_from_interval, sd_from_standard_error
+from treering.effects.difference_deviations import (
     sd_from_difference_interval,
     sd_from_difference_standard_error,
-    sd_from_interval,
     sd_from_p,
-    sd_from_standard_error,
     sd_from_t,
 )
 from treering.effects.multiarm import combine_binary, combine_continuous, split_shared_comparator

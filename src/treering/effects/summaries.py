@@ -153,7 +153,7 @@ def skewness_check(
 
     Parameters
     ----------
-    median, total, minimum, maximum, quartile_1, quartile_3, trial
+    median, total, minimum, maximum, quartile_1, quartile_3, trial : float or str
         As for :func:`mean_and_sd_from_summary`.
 
     Returns

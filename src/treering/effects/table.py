@@ -21,7 +21,17 @@ INTERVAL = ("estimate", "ci_low", "ci_high")
 
 @dataclass(frozen=True)
 class Route:
-    """One way from reported columns to an effect."""
+    """One way from reported columns to an effect.
+
+    Parameters
+    ----------
+    name : str
+        What the route starts from, in words.
+    columns : tuple of str
+        Columns that a trial must report in full.
+    compute : callable
+        From complete rows to effects.
+    """
 
     name: str
     columns: tuple[str, ...]
@@ -147,7 +157,7 @@ def usable(
 
     Parameters
     ----------
-    table, measure, correction, amount
+    table, measure, correction, amount : DataFrame, str, str, float
         As for :func:`effect_sizes`.
 
     Returns
