@@ -45,7 +45,12 @@ def test_one_trial_to_the_required_information_gives_conditional_power(review):
 def test_chances_over_several_looks_are_those_of_simulated_paths(review):
     r = review(diversity=0.2)
     r.add("A", 0.3, 1.2)
-    steps = forecast(r.plan, r.looks, *numbers(r), ongoing(r, 0.2, 0.3, 0.3), today="2031-02-01").steps
+    trials = [
+        OngoingTrial(trial=f"N{year}", information=share * r.plan.required_information, end=f"{year}-01-01")
+        for year, share in ((2032, 0.2), (2033, 0.1), (2033, 0.2), (2034, 0.3))
+    ]
+    steps = forecast(r.plan, r.looks, *numbers(r), trials, today="2031-02-01").steps
+    assert [len(step.trials) for step in steps] == [1, 2, 1], "trials due on one day make one look"
     left = r.plan.required_information * 0.8
     t = np.array([0.3, 0.5, 0.8, 1.1]) * left
     rng = np.random.default_rng(8)
@@ -68,8 +73,8 @@ def test_the_day_at_which_the_fraction_reaches_one(review):
         OngoingTrial(trial="unknown", information=None, end="2031-03-01"),
     ]
     found = forecast(r.plan, r.looks, *numbers(r), trials, today="2031-02-01", lag_days=100)
-    assert [step.trial for step in found.steps] == ["overdue", "early", "late"]
-    assert [step.overdue for step in found.steps] == [True, False, False]
+    assert [step.trials for step in found.steps] == [("overdue",), ("early",), ("late",)]
+    assert [step.overdue for step in found.steps] == [("overdue",), (), ()]
     assert found.steps[0].date == "2031-02-01"
     assert found.reaches == found.steps[2].date == "2032-06-09"
     assert found.not_dated == ("unknown",)

@@ -50,18 +50,18 @@ class OngoingTrial:
 
 @dataclass(frozen=True, kw_only=True)
 class ForecastStep:
-    """The look that one ongoing trial is likely to bring.
+    """The look that ongoing trials expected on one day are likely to bring.
 
     Parameters
     ----------
-    trial : str
-        The trial.
+    trials : tuple of str
+        The trials.
     date : str
-        Expected day of its result: its end and the lag; the day asked when that is past.
-    overdue : bool
-        Whether the expected day is past.
+        Expected day of the result: the end and the lag; the day asked when that is past.
+    overdue : tuple of str
+        Those whose expected day is past.
     fraction : float
-        Information fraction with it and all earlier ones.
+        Information fraction with them and all earlier ones.
     boundary : float or None
         Critical Z at that look; None where no alpha is available.
     benefit, harm : dict of str to float
@@ -69,9 +69,9 @@ class ForecastStep:
         there is no effect, the effect to detect, or the present estimate.
     """
 
-    trial: str
+    trials: tuple[str, ...]
     date: str
-    overdue: bool
+    overdue: tuple[str, ...]
     fraction: float
     boundary: float | None
     benefit: dict[str, float]
@@ -89,7 +89,7 @@ class Forecast:
     reaches : str or None
         Day at which the fraction is expected to reach 1; None when the known trials do not bring it there.
     next_trial : NextTrial or None
-        What the first expected trial must show; None without one.
+        What the first expected trial must show, on its own; None without one.
     not_dated : tuple of str
         Ongoing trials without a known size or end; they are in none of the figures.
     """
@@ -107,7 +107,10 @@ class Forecast:
         dict
         """
         return {
-            "steps": [asdict(step) for step in self.steps],
+            "steps": [
+                asdict(step) | {"trials": list(step.trials), "overdue": list(step.overdue)}
+                for step in self.steps
+            ],
             "reaches": self.reaches,
             "next_trial": None if self.next_trial is None else asdict(self.next_trial),
             "not_dated": list(self.not_dated),
@@ -157,23 +160,24 @@ def forecast(
             next_step="Ask again after the first look.",
         )
     dated = _expected(ongoing, today, lag_days)
-    gathered = last.information + np.cumsum([information for _, _, information, _ in dated])
+    gathered = last.information + np.cumsum([sum(t.information or 0.0 for t in group) for _, group in dated])
     bounds = _bounds_to_come(plan, looks, gathered)
     chances = {name: _chances(plan, last, gathered, bounds, drift) for name, drift in _drifts(plan, last)}
     steps = tuple(
         ForecastStep(
-            trial=trial,
+            trials=tuple(trial.trial for trial in group),
             date=day,
-            overdue=late,
+            overdue=tuple(trial.trial for trial in group if _due(trial, lag_days) < _day(today)),
             fraction=float(gathered[i]) / plan.required_information,
             boundary=bounds[i],
             benefit={name: float(benefit[i]) for name, (benefit, _) in chances.items()},
             harm={name: float(harm[i]) for name, (_, harm) in chances.items()},
         )
-        for i, (trial, day, _, late) in enumerate(dated)
+        for i, (day, group) in enumerate(dated)
     )
-    asked = next_trial(plan, looks, estimates, variances, information=dated[0][2]) if dated else None
-    known = {trial for trial, *_ in dated}
+    first = dated[0][1][0].information if dated else None
+    asked = None if first is None else next_trial(plan, looks, estimates, variances, information=first)
+    known = {trial.trial for _, group in dated for trial in group}
     return Forecast(
         steps=steps,
         reaches=_reaches(last, steps),
@@ -184,17 +188,20 @@ def forecast(
 
 def _expected(
     ongoing: Sequence[OngoingTrial], today: str, lag_days: int
-) -> list[tuple[str, str, float, bool]]:
-    """Return trial, expected day, information and whether it is overdue, in order of day."""
-    now = _day(today)
-    rows = []
+) -> list[tuple[str, list[OngoingTrial]]]:
+    """Return the trials with a known size and end by expected day, in order; late ones may come today."""
+    days: dict[str, list[OngoingTrial]] = {}
     for trial in ongoing:
         if trial.information is None or trial.end is None:
             continue
         check_positive(trial.information, f"expected information of {trial.trial}")
-        due = _day(trial.end) + timedelta(days=lag_days)
-        rows.append((max(due, now).isoformat(), trial.trial, trial.information, due < now))
-    return [(name, day, information, late) for day, name, information, late in sorted(rows)]
+        days.setdefault(max(_due(trial, lag_days), _day(today)).isoformat(), []).append(trial)
+    return sorted(days.items())
+
+
+def _due(trial: OngoingTrial, lag_days: int) -> calendar_date:
+    """Return the day on which the result is expected."""
+    return _day(trial.end or "") + timedelta(days=lag_days)
 
 
 def _day(text: str) -> calendar_date:

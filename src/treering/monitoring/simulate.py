@@ -179,7 +179,7 @@ def run_chunks(
     object
         What `work` returns.
     """
-    count = len(os.sched_getaffinity(0)) if workers is None else workers
+    count = _cores() if workers is None else workers
     if count <= 1 or len(tasks) == 1:
         yield from _told(map(work, tasks), len(tasks), progress)
         return
@@ -187,6 +187,13 @@ def run_chunks(
     context = multiprocessing.get_context("spawn")
     with ProcessPoolExecutor(max_workers=min(count, len(tasks)), mp_context=context) as pool:
         yield from _told(pool.map(work, tasks), len(tasks), progress)
+
+
+def _cores() -> int:
+    """Return the cores this process may use; not every system tells more than how many there are."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
 
 
 def _told(found: Iterator[_Found], total: int, progress: Progress | None) -> Iterator[_Found]:
