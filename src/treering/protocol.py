@@ -78,6 +78,7 @@ class Monitoring(Part):
     diversity: Annotated[float, Field(ge=0, lt=1)] = 0.0
     diversity_reason: str
     futility: bool = False
+    tau2_range: tuple[Annotated[float, Field(ge=0)], ...] = (0.0,)
     prior_sd: Annotated[float, Field(gt=0)] | None = None
 
 
@@ -144,6 +145,7 @@ class Living(Part):
     update_every_days: Annotated[int, Field(ge=1)] = 7
     search_every_days: dict[str, Annotated[int, Field(ge=1)]] = {}
     certainty_reread_days: Annotated[int, Field(ge=1)] = 183
+    report_lag_days: Annotated[int, Field(ge=0)] = 365
     retirement_rule: str = ""
 
 

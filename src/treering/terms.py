@@ -184,6 +184,7 @@ class EntryKind(StrEnum):
     PANEL_DECISION = "panel decision"
     WITHDRAWAL = "withdrawal"
     DEFECT = "defect"
+    SIMULATION = "simulation"
 
 
 class NoticeKind(StrEnum):

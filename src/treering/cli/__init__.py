@@ -44,7 +44,7 @@ GROUPS = {
     "Calculators": {
         "pool": "calculating:pool",
         "boundaries": "calculating:boundaries",
-        "simulate": "calculating:simulate",
+        "simulate": "simulating:simulate",
     },
 }
 

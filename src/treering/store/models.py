@@ -44,6 +44,7 @@ from treering.store.models_work import (
     Protocol,
     Release,
     Run,
+    Simulation,
     Version,
     Withdrawal,
 )
@@ -122,6 +123,7 @@ TABLES: dict[EntryKind, type[Body]] = {
     EntryKind.PANEL_DECISION: PanelDecision,
     EntryKind.WITHDRAWAL: Withdrawal,
     EntryKind.DEFECT: Defect,
+    EntryKind.SIMULATION: Simulation,
 }
 """Kind of entry to the typed table that repeats its body; every kind has one."""
 
@@ -155,5 +157,6 @@ KEY_PREFIXES: dict[EntryKind, str] = {
     EntryKind.PANEL_DECISION: "decision/",
     EntryKind.WITHDRAWAL: "",
     EntryKind.DEFECT: "defect/",
+    EntryKind.SIMULATION: "simulation/",
 }
 """How the keys of each kind begin."""

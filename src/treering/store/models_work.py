@@ -152,3 +152,13 @@ class Defect(Body, table=True):
     id: str
     description: str | None = None
     versions: Any = json_column()
+
+
+class Simulation(Body, table=True):
+    """What simulating the plan of one outcome found."""
+
+    outcome: str
+    plan_digest: str
+    reviews: int | None = whole_column()
+    seed: int | None = whole_column()
+    exceeds: bool | None = None

@@ -81,7 +81,7 @@ def analyse(
         "subgroups": subgroup_blocks(estimated, outcome),
         "small_study": small_study(estimated),
         "monitoring": monitoring_block(
-            estimated, outcome, protocol, earlier=earlier, version=version, date=date
+            estimated, outcome, protocol, state=state, earlier=earlier, version=version, date=date
         ),
         "warnings": list(planned.remarks) if planned else ["no trial with a usable result"],
     }

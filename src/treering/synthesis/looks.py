@@ -21,6 +21,8 @@ from treering.monitoring import (
 )
 from treering.protocol import Outcome, Protocol
 from treering.synthesis.estimates import Estimated
+from treering.synthesis.outlook import ongoing_trials, outlook
+from treering.synthesis.trials import StateView
 from treering.terms import CROSSED, Measure
 
 #: Looks are stored with 10 significant digits; data that differ by less have not changed.
@@ -57,6 +59,7 @@ def monitoring_block(
     outcome: Outcome,
     protocol: Protocol,
     *,
+    state: StateView,
     earlier: Sequence[Look],
     version: int,
     date: str,
@@ -70,7 +73,9 @@ def monitoring_block(
     outcome : Outcome
         With its monitoring plan.
     protocol : Protocol
-        For the amendments and the sum of alpha.
+        For the amendments, the sum of alpha and the lag of reports.
+    state : StateView
+        For the ongoing trials.
     earlier : sequence of Look
         The ledger so far.
     version, date
@@ -87,6 +92,7 @@ def monitoring_block(
     estimates, variances = estimated.numbers(estimated.main)
     trials = [row.trial for row in estimated.main]
     ledger = list(earlier)
+    per_participant = _per_participant(outcome, estimated)
     fresh = not _unchanged(plan, ledger, trials, estimates, variances)
     if fresh:
         amendment = protocol.amendments[-1].date.isoformat() if protocol.amendments else None
@@ -110,7 +116,16 @@ def monitoring_block(
         "look": ledger[-1].to_dict() if ledger else None,
         "looks": [look.to_dict() for look in ledger],
         "hindsight": _hindsight(plan, estimated),
-        **_beside(plan, ledger, trials, estimates, variances, _per_participant(outcome, estimated)),
+        "outlook": outlook(
+            plan,
+            ledger,
+            estimates,
+            variances,
+            ongoing_trials(state, outcome, [row.trial for row in estimated.rows], per_participant),
+            today=date,
+            lag_days=protocol.living.report_lag_days,
+        ),
+        **_beside(plan, ledger, trials, estimates, variances, per_participant),
     }
 
 

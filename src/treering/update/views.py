@@ -107,6 +107,7 @@ def view_from(store: EvidenceStore, basis: Basis, analyses: Mapping[str, dict[st
         waiting=settle(basis.state, basis.protocol).waiting,
         notices=_notices(store, basis.version),
         certainty=rated(basis.state),
+        simulation=_simulations(basis.state, ordered),
         **{name: _bodies(basis.state.live(kind)) for name, kind in LISTS.items()},
     )
 
@@ -125,6 +126,17 @@ def rated(state: State) -> list[dict[str, Any]]:
         }
         for entry in state.live(EntryKind.CERTAINTY)
     ]
+
+
+def _simulations(state: State, analyses: Mapping[str, Any]) -> dict[str, Any] | None:
+    """Return the simulations of the plans in force, by synthesis; None when nobody simulated them."""
+    found = {}
+    for synthesis, body in analyses.items():
+        kept = state.get(f"simulation/{synthesis}")
+        look = (body["monitoring"] or {}).get("look")
+        if kept is not None and look and kept.body["plan_digest"] == look["plan_digest"]:
+            found[synthesis] = kept.body
+    return found or None
 
 
 def _numbers_rated(state: State, body: Mapping[str, Any]) -> dict[str, Any]:

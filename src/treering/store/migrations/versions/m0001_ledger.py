@@ -90,6 +90,7 @@ TYPED = {
     ),
     "withdrawal": "reason text!",
     "defect": "id text!, description text, versions json",
+    "simulation": "outcome text!, plan_digest text!, reviews whole, seed whole, exceeds truth",
 }
 
 
