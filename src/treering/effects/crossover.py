@@ -86,7 +86,9 @@ def paired_standardized_mean_difference(
 
     Parameters
     ----------
-    intervention_mean, intervention_sd, comparator_mean, comparator_sd, total, correlation, trial, origin : float or str
+    intervention_mean, intervention_sd, comparator_mean, comparator_sd, total : float
+        As for :func:`paired_mean_difference`.
+    correlation, trial, origin : float or str
         As for :func:`paired_mean_difference`.
 
     Returns
