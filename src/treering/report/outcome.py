@@ -98,6 +98,7 @@ def _change_words(body: Body, before: Body | None, changes: Body) -> dict[str, A
         "before": short_estimate(before, before.get("pooled")) if before else "none",
         "moved": "" if before is None else wording.movement_words(changes.get("movement"), body["scale"]),
         "change_lines": change_lines(changes),
+        "moved_at_all": any(p["movement"] or p["movement_reversed"] for p in changes.get("split", ())),
         "order_matters": effect_of_order is not None and effect_of_order > ORDER_TOLERANCE,
     }
 
@@ -121,12 +122,16 @@ def change_lines(changes: Body) -> list[str]:
     for item in changes.get("trials_removed", ()):
         lines.append(f"{item['label']}: left the main analysis: {item['left_out']}{_why(item)}")
     told = {"left_out", "status", "flags", *(("in_main",) if changes.get("trials_removed") else ())}
+    moved_in_or_out = {i["trial"] for i in changes.get("trials_changed", ()) if i["field"] == "in_main"}
     numbers = {i["trial"] for i in changes.get("trials_changed", ()) if i["field"].startswith("values.")}
     for item in changes.get("trials_changed", ()):
         follows = item["trial"] in numbers and item["field"] in ("estimate", "standard_error")
         if item["field"] not in told and not follows:
             moved = f"{_shown(item['before'])} became {_shown(item['after'])}"
             lines.append(f"{item['label']}: {field_words(item['field'])} {moved}{_why(item)}")
+        if item["field"] == "flags" and item["trial"] not in moved_in_or_out:
+            fresh = [flag for flag in item["after"] or () if flag not in (item["before"] or ())]
+            lines.append(f"{item['label']}: flagged {'; '.join(fresh) or 'no longer'}{_why(item)}")
     for item in changes.get("plan_changed", ()):
         moved = f"{_shown(item['before'])} became {_shown(item['after'])}"
         lines.append(f"Plan: {field_words(item['field'])} {moved}{_why(item)}")
@@ -178,7 +183,7 @@ def _monitoring_words(
 ) -> dict[str, Any]:
     block = body.get("monitoring")
     if not block:
-        return {"verdict_line": "not monitored"}
+        return {"verdict_line": "not monitored", "simulation": None}
     look = block.get("look")
     verdict = look["verdict"] if look else "no look yet"
     last = (((before or {}).get("monitoring") or {}).get("look") or {}).get("verdict")
@@ -190,7 +195,16 @@ def _monitoring_words(
         "inputs": monitoring_inputs(view, outcome, body),
         "bound_line": bound_words(look, block["plan"]),
         "rests": rests_on_pairs(body),
+        "simulation": _simulation((view.simulation or {}).get(body["synthesis"]), look),
     }
+
+
+def _simulation(kept: Body | None, look: Body | None) -> dict[str, Any] | None:
+    """Return a kept simulation, marked when it was made for another plan than the one of the last look."""
+    if not kept:
+        return None
+    other = look is not None and kept.get("plan_digest") != look["plan_digest"]
+    return {**kept, "other_plan": other}
 
 
 def bound_words(look: Body | None, plan: Body) -> str:

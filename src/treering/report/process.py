@@ -26,7 +26,8 @@ def process_tables(view: ReportView) -> list[Table]:
     Returns
     -------
     list of dict
-        ``title``, ``heads``, ``rows`` of text, ``none`` (said when empty), ``anchor``, ``after``.
+        ``title``, ``heads``, ``rows`` of text, ``none`` (said when empty), ``caption``, ``anchor`` and
+        ``after``.
     """
     return [
         _waiting(view),
@@ -50,12 +51,21 @@ def _table(
     heads: Sequence[str],
     rows: Iterable[Sequence[Any]],
     none: str,
+    caption: str,
     *,
     anchor: str = "",
     after: str = "",
 ) -> Table:
     texts = [[_cell(cell) for cell in row] for row in rows]
-    return {"title": title, "heads": heads, "rows": texts, "none": none, "anchor": anchor, "after": after}
+    return {
+        "title": title,
+        "heads": heads,
+        "rows": texts,
+        "none": none,
+        "caption": caption,
+        "anchor": anchor,
+        "after": after,
+    }
 
 
 def _cell(value: Any) -> str:
@@ -69,7 +79,13 @@ def _title(view: ReportView, outcome: str | None) -> str:
 
 def _waiting(view: ReportView) -> Table:
     rows = [(w["trial"], _title(view, w.get("outcome")), w["why"]) for w in view.listed("waiting")]
-    return _table("Waiting items", ("Trial", "Outcome", "Waits because"), rows, "Nothing waits.")
+    return _table(
+        "Waiting items",
+        ("Trial", "Outcome", "Waits because"),
+        rows,
+        "Nothing waits.",
+        "Results that are not verified yet stand in no analysis.",
+    )
 
 
 def _waivers(view: ReportView) -> Table:
@@ -78,7 +94,11 @@ def _waivers(view: ReportView) -> Table:
     ]
     heads = ("Trial", "Outcome", "Waived by", "Reason")
     return _table(
-        "Waivers of the second reading", heads, rows, "No waiver: every result was read by two people."
+        "Waivers of the second reading",
+        heads,
+        rows,
+        "No waiver: every result was read by two people.",
+        "Each result here was let in on one reading, by a named person.",
     )
 
 
@@ -91,7 +111,11 @@ def _left_out(view: ReportView) -> Table:
     ]
     heads = ("Trial", "Outcome", "Reason")
     return _table(
-        "Trials left out of a main analysis", heads, rows, "No trial with a verified result is left out."
+        "Trials left out of a main analysis",
+        heads,
+        rows,
+        "No trial with a verified result is left out.",
+        "They stay in the store and in the tables of this page.",
     )
 
 
@@ -112,6 +136,7 @@ def _verification(view: ReportView) -> Table:
         ("Basis", "Results"),
         rows,
         "No verified result in the store.",
+        "Two people read each result apart; a third settles what differs.",
         anchor="verification",
         after=after,
     )
@@ -130,7 +155,14 @@ def _ongoing(view: ReportView) -> Table:
         for o in view.listed("ongoing")
     ]
     heads = ("Trial", "Registration", "Planned people", "Expected end", "State", "Outcomes")
-    return _table("Ongoing trials", heads, rows, "No ongoing trial is listed.", anchor="ongoing")
+    return _table(
+        "Ongoing trials",
+        heads,
+        rows,
+        "No ongoing trial is listed.",
+        "What is known of trials that are not reported yet.",
+        anchor="ongoing",
+    )
 
 
 def _overdue(view: ReportView, trial: Body) -> str:
@@ -159,7 +191,12 @@ def _searches(view: ReportView) -> Table:
         )
     heads = ("Source", "Last run", "Planned", "Strategy", "By", "Found")
     return _table(
-        "Searches", heads, rows, "No source is planned and no search run is stored.", anchor="searches"
+        "Searches",
+        heads,
+        rows,
+        "No source is planned and no search run is stored.",
+        "The last run of each source, also of those that failed or never ran.",
+        anchor="searches",
     )
 
 
@@ -176,7 +213,12 @@ def _flow(view: ReportView) -> Table:
     rows = [(d, r if r or d != "exclude" else None, n) for d, r, n in rows]
     shown = [(d, r if r else ("not given" if d == "exclude" else "none"), n) for d, r, n in rows]
     return _table(
-        "Flow, counted from the decisions", heads, shown, "No screening decision in the store.", anchor="flow"
+        "Flow, counted from the decisions",
+        heads,
+        shown,
+        "No screening decision in the store.",
+        "Counted from the decisions in the store, never typed in.",
+        anchor="flow",
     )
 
 
@@ -200,7 +242,12 @@ def _studies(view: ReportView) -> Table:
     ]
     heads = ("Trial", "Registration", "Design", "Randomised", "Funding", "Interests", "Reports")
     return _table(
-        "Trials and their reports", heads, rows, "No facts about trials in the store.", anchor="studies"
+        "Trials and their reports",
+        heads,
+        rows,
+        "No facts about trials in the store.",
+        "Each trial with all its reports; people are counted once.",
+        anchor="studies",
     )
 
 
@@ -217,7 +264,8 @@ def _amendments(view: ReportView) -> Table:
     ]
     heads = ("Date", "Author", "Clauses", "Reason", "Results seen")
     none = "The protocol has not been amended."
-    return _table("Amendments of the protocol", heads, rows, none, anchor="amendments")
+    caption = "Dated changes of the plan, and whether results had been seen."
+    return _table("Amendments of the protocol", heads, rows, none, caption, anchor="amendments")
 
 
 def _people(view: ReportView) -> Table:
@@ -225,7 +273,15 @@ def _people(view: ReportView) -> Table:
     funding = view.protocol.review.funding
     after = f"Support: {funding}." if funding else "Support: the protocol names none."
     heads = ("Person", "Roles", "Own trials (kept away from)")
-    return _table("People", heads, rows, "No person is named.", anchor="people", after=after)
+    return _table(
+        "People",
+        heads,
+        rows,
+        "No person is named.",
+        "Nobody holds two of the reading roles on one trial.",
+        anchor="people",
+        after=after,
+    )
 
 
 def _living(view: ReportView) -> Table:
@@ -236,7 +292,14 @@ def _living(view: ReportView) -> Table:
         ("Certainty read again", f"every {living.certainty_reread_days} days"),
         ("Retirement rule", living.retirement_rule or "none: the protocol states no rule"),
     ]
-    return _table("Living mode", ("Step", "Plan"), rows, "No plan.", anchor="living")
+    return _table(
+        "Living mode",
+        ("Step", "Plan"),
+        rows,
+        "No plan.",
+        "What the protocol plans while the review is living.",
+        anchor="living",
+    )
 
 
 def _notices(view: ReportView) -> Table:
@@ -244,7 +307,13 @@ def _notices(view: ReportView) -> Table:
         (n["event"], _title(view, n["synthesis"]), n["person"], n["channel"]) for n in view.listed("notices")
     ]
     heads = ("Event", "Outcome", "Person", "Channel")
-    return _table("Notices to the panel for this version", heads, rows, "No notice was called for.")
+    return _table(
+        "Notices to the panel for this version",
+        heads,
+        rows,
+        "No notice was called for.",
+        "Who was told what because of this version.",
+    )
 
 
 def _defects(view: ReportView) -> Table:
@@ -252,4 +321,10 @@ def _defects(view: ReportView) -> Table:
         (d["id"], d["description"], ", ".join(str(v) for v in d["versions"])) for d in view.listed("defects")
     ]
     heads = ("Defect", "What", "Versions")
-    return _table("Defects of the tool that touch published versions", heads, rows, "None known.")
+    return _table(
+        "Defects of the tool that touch published versions",
+        heads,
+        rows,
+        "None known.",
+        "Published versions are never changed; a defect is told here.",
+    )

@@ -105,14 +105,13 @@ def figures(view: ReportView) -> dict[str, str]:
 
 def _summary(row: Body) -> dict[str, Any]:
     """Return what the index prints of one version."""
-    outcomes = [
-        {
-            "title": body["title"],
+    outcomes = {
+        name: {
             "estimate": short_estimate(body, body.get("pooled")),
             "verdict": ((body.get("monitoring") or {}).get("look") or {}).get("verdict"),
         }
-        for body in row["analyses"].values()
-    ]
+        for name, body in row["analyses"].items()
+    }
     return {
         "version": row["version"],
         "date": row["date"],
@@ -121,6 +120,16 @@ def _summary(row: Body) -> dict[str, Any]:
         "notices": row.get("notices"),
         "outcomes": outcomes,
     }
+
+
+def _columns(protocol: Protocol, versions: Sequence[Body]) -> list[dict[str, str]]:
+    """Return the outcomes in the order of the protocol, then those that only older versions have."""
+    titles = {outcome.id: outcome.title for outcome in protocol.outcomes}
+    for row in versions:
+        titles = {**{name: body["title"] for name, body in row["analyses"].items()}, **titles}
+    ids = [outcome.id for outcome in protocol.outcomes]
+    ids += sorted(set(titles) - set(ids))
+    return [{"id": name, "title": titles[name]} for name in ids]
 
 
 def render_index(protocol: Protocol, versions: Sequence[Body], status: str | Body) -> bytes:
@@ -143,6 +152,7 @@ def render_index(protocol: Protocol, versions: Sequence[Body], status: str | Bod
     """
     context = {
         **shared_context(protocol.review, len(versions)),
+        "outcomes": _columns(protocol, versions),
         "versions": [_summary(row) for row in sorted(versions, key=lambda row: -int(row["version"]))],
         "status_line": status if isinstance(status, str) else status_words(status),
     }

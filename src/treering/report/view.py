@@ -38,7 +38,7 @@ class ReportView:
         Lists of entry bodies by name: waiting, waivers, notices, integrity, searches, certainty, ongoing,
         studies, reports, screening, bias, verifications, amendments, defects.
     simulation : mapping or None
-        Results of ``treering simulate`` for the plan, when there are any.
+        Kept results of ``treering simulate`` by synthesis id, when there are any.
     """
 
     protocol: Protocol
@@ -119,7 +119,7 @@ def build_view(
     status : str or mapping
         Status line.
     simulation : mapping, optional
-        Simulated error rates of the plan.
+        By synthesis id, the ``to_dict`` of a simulation result.
     **records : sequence of mapping
         Bodies of entries, any of :data:`RECORDS`; what is left out is shown as missing. A certainty
         judgement that carries no ``stale`` gets one here.

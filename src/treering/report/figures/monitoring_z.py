@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 from treering.report.figures import style
 from treering.report.figures.monitoring_effect import verdict_marker
 from treering.report.numbers import number, percent, plural
-from treering.terms import Better, OutcomeRole
+from treering.terms import CROSSED, Better, OutcomeRole
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -43,7 +43,7 @@ def z_figure(body: Body, name: str) -> str:
         tall = _tall(looks, hindsight)
         axes.set_xlim(0.0, right)
         axes.set_ylim(-tall, tall)
-        _scale(axes, body, right, tall)
+        _scale(axes, body, looks, right, tall)
         _hindsight(axes, hindsight, tall)
         _bounds(axes, looks, monitoring["plan"], body, tall)
         _path(axes, looks, tall)
@@ -70,7 +70,7 @@ def _tall(looks: Sequence[Body], hindsight: Sequence[Body]) -> float:
     return float(min(1.15 * max([3.0, *values, *bounds]), max([TALLEST, *(1.15 * v for v in values)])))
 
 
-def _scale(axes: Axes, body: Body, right: float, tall: float) -> None:
+def _scale(axes: Axes, body: Body, looks: Sequence[Body], right: float, tall: float) -> None:
     style.bare(axes, "left")
     marks = style.ticks(-tall, tall, "plain", most=8)
     axes.set_yticks([y for y, _ in marks], [label for _, label in marks])
@@ -79,9 +79,10 @@ def _scale(axes: Axes, body: Body, right: float, tall: float) -> None:
     axes.tick_params(axis="both", length=3, color=style.FAINT)
     axes.axhline(0.0, color=style.INK, lw=0.9, zorder=1)
     axes.axvline(1.0, color=style.MUTED, lw=0.9, ls=(0, (5, 3)), zorder=1)
-    axes.text(
-        1.0, -tall * 0.97, "required information ", ha="right", va="bottom", fontsize=8.5, color=style.MUTED
-    )
+    # The words stand on the side of the line that the looks have left free.
+    free = 0.97 * tall if not looks or looks[-1]["z"] < 0 else -0.97 * tall
+    where: Any = {"ha": "right", "va": "top" if free > 0 else "bottom"}
+    axes.text(1.0, free, "required information ", fontsize=8.5, color=style.MUTED, **where)
     axes.set_xlabel("share of the required information", fontsize=8.5)
     up, down = ("benefit", "harm") if body["better"] == Better.HIGHER else ("harm", "benefit")
     style.end_words(axes, "Z", f"\u2191 towards {up}", f"\u2193 towards {down}", below=-0.13)
@@ -135,17 +136,38 @@ def _path(axes: Axes, looks: Sequence[Body], tall: float) -> None:
             mew=1.5,
             zorder=5,
         )
-        above = look["z"] >= 0
+    for numbers, x, z, outside in _numbered(axes, looks):
         axes.annotate(
-            str(look["number"]),
-            (look["fraction"], look["z"]),
-            xytext=(0, 8 if above else -15),
+            ", ".join(numbers),
+            (x, z),
+            xytext=(0, 8 if (z >= 0) == outside else -15),
             textcoords="offset points",
             ha="center",
             fontsize=8,
             color=style.INK,
             zorder=6,
         )
+
+
+def _numbered(axes: Axes, looks: Sequence[Body]) -> list[tuple[list[str], float, float, bool]]:
+    """Gather looks too close to be numbered apart, with their place and whether they crossed.
+
+    A crossing is numbered on the side away from no effect and any other look on the near side, so that the
+    boundary, which lies between, covers neither.
+    """
+    width = axes.get_xlim()[1] - axes.get_xlim()[0]
+    height = axes.get_ylim()[1] - axes.get_ylim()[0]
+    groups: list[tuple[list[str], float, float, bool]] = []
+    for look in looks:
+        x, z, crossed = look["fraction"], look["z"], look["verdict"] in CROSSED
+        for i, (numbers, at, level, outside) in enumerate(groups):
+            near = abs(at - x) < 0.035 * width and abs(level - z) < 0.09 * height
+            if near and outside == crossed:
+                groups[i] = ([*numbers, str(look["number"])], at, level, outside)
+                break
+        else:
+            groups.append(([str(look["number"])], x, z, crossed))
+    return groups
 
 
 def _key(axes: Axes) -> None:
