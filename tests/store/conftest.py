@@ -6,9 +6,11 @@ PostgreSQL are skipped only where its programs are not installed.
 
 from __future__ import annotations
 
+import importlib.util
 import os
 import pwd
 import shutil
+import sqlite3
 import subprocess
 import tempfile
 from collections.abc import Callable, Iterator
@@ -242,3 +244,27 @@ IDENTITIES = {
     for column in METADATA.tables[str(model.__tablename__)].columns
     if not column.nullable
 } - {"entry", "entries", "root"}
+
+
+@pytest.fixture
+def lay_golden() -> Callable[[EvidenceStore], None]:
+    """Lay down the review of the golden store."""
+    path = Path(__file__).parent / "scripts" / "lay_golden.py"
+    specification = importlib.util.spec_from_file_location("lay_golden", path)
+    assert specification is not None
+    assert specification.loader is not None
+    script = importlib.util.module_from_spec(specification)
+    specification.loader.exec_module(script)
+    lay_down: Callable[[EvidenceStore], None] = script.lay_down
+    return lay_down
+
+
+@pytest.fixture
+def golden(tmp_path: Path) -> Path:
+    """The store that the code of revision 0001 made."""
+    path = tmp_path / "golden.db"
+    text = (Path(__file__).parents[1] / "assets" / "stores" / "revision-0001.sql").read_text(encoding="utf-8")
+    connection = sqlite3.connect(path, isolation_level=None)
+    connection.executescript(text)
+    connection.close()
+    return path

@@ -13,7 +13,7 @@ from treering.store.models import KEY_PREFIXES, TABLES
 from treering.terms import EntryKind
 
 _LARGEST = 2**53 - 1
-_ENCODE = json.JSONEncoder(separators=(",", ":"), ensure_ascii=False, allow_nan=False).encode
+_ENCODE = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False).encode
 
 
 class _Unfit(ValueError):
