@@ -390,3 +390,17 @@ def test_only_double_zero_trials_say_so() -> None:
 def test_unknown_options_are_refused(mixed: pd.DataFrame, options: dict[str, object], words: str) -> None:
     with pytest.raises(AnalysisError, match=words):
         pool_one_stage(mixed, **options)
+
+
+@pytest.mark.parametrize("seed", [2, 3, 13, 84])
+def test_wide_heterogeneity_leaves_no_intercept_unsettled(seed: int) -> None:
+    # seeded trials on which a plain Newton search for the intercepts once ran in circles
+    rng = np.random.default_rng(seed)
+    k = int(rng.integers(2, 25))
+    intercept = rng.normal(rng.uniform(-7, -1), rng.uniform(0, 1.5), k)
+    theta = rng.normal(rng.normal(), rng.uniform(0, 1.5), k)
+    n1, n2 = rng.integers(5, 800, k), rng.integers(5, 800, k)
+    a, c = rng.binomial(n1, expit(intercept + theta / 2)), rng.binomial(n2, expit(intercept - theta / 2))
+    table = pd.DataFrame(dict(zip(COLUMNS, (a, n1, c, n2), strict=True)))
+    profiled, conditional = pool_one_stage(table, FIXED), pool_one_stage(table, HYPERGEOMETRIC)
+    assert profiled.estimate == pytest.approx(conditional.estimate, abs=0.5 * conditional.standard_error)

@@ -17,8 +17,9 @@ from scipy.special import expit
 from treering.errors import NotConvergedError
 from treering.pooling.quadrature import Array, Derivatives, Marginal, marginal
 
-_PROFILE_STEPS = 60
+_PROFILE_STEPS, _PROFILE_NEWTON = 100, 25
 _PROFILE_TOLERANCE = 1e-10
+_PROFILE_WIDTH = 1e-9
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,7 +90,8 @@ def profiled_marginal(
         When Newton steps on the intercepts do not settle.
     """
     k = len(intercepts)
-    for _ in range(_PROFILE_STEPS):
+    low, high = np.full(k, -np.inf), np.full(k, np.inf)
+    for step in range(_PROFILE_STEPS):
         current = intercepts
 
         def effect_only(theta: Array, fixed: Array = current) -> Derivatives:
@@ -105,12 +107,18 @@ def profiled_marginal(
         score = np.sum(result.weights * gradient[..., 0], axis=1)
         # Louis 1982: curvature of the integrated log-likelihood from complete-data derivatives
         curvature = np.sum(result.weights * (hessian[..., 0, 0] + gradient[..., 0] ** 2), axis=1) - score**2
-        if np.max(np.abs(score), initial=0.0) < _PROFILE_TOLERANCE * (1 + np.max(arms.total_1)):
-            return result, intercepts
+        # the integrated likelihood is log-concave in the intercept: the sign of the score brackets the root
+        low, high = np.where(score > 0, current, low), np.where(score < 0, current, high)
+        settled = (np.abs(score) < _PROFILE_TOLERANCE * (1 + np.max(arms.total_1))) | (
+            high - low < _PROFILE_WIDTH
+        )
+        if settled.all():
+            return result, current
         complete = np.sum(result.weights * hessian[..., 0, 0], axis=1)
-        # where the integrated curvature is not safely negative, fall back on the complete-data one
-        usable = np.where(curvature < 0.05 * complete, curvature, complete)
-        intercepts = intercepts + np.clip(-score / usable, -2.0, 2.0)
+        usable = np.where(curvature < 1e-4 * complete, curvature, complete)
+        proposed = current + np.clip(-score / usable, -2.0, 2.0)
+        outside = (proposed <= low) | (proposed >= high) | (step >= _PROFILE_NEWTON)
+        intercepts = np.where(outside & np.isfinite(low + high), 0.5 * (low + high), proposed)
     raise NotConvergedError(
         "The trial intercepts of the one-stage model did not settle.",
         found=f"largest score {np.max(np.abs(score)):.3g}",

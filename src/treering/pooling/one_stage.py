@@ -32,7 +32,7 @@ from treering.errors import AnalysisError
 from treering.pooling.binomial import Arms
 from treering.pooling.checks import check_level, choose
 from treering.pooling.likelihood_fit import Fit, Problem, profile_interval
-from treering.pooling.one_stage_models import OneStageModel, fit_model, refuse_infinite
+from treering.pooling.one_stage_models import DEFAULT_NODES, OneStageModel, fit_model, refuse_infinite
 from treering.pooling.tables import two_arm_counts
 from treering.terms import Measure
 
@@ -141,7 +141,8 @@ def pool_one_stage(
     level : float
         Confidence level.
     nodes : int, optional
-        Quadrature nodes per dimension; 15 by default, 11 with two random effects.
+        Quadrature nodes per dimension; by default 25 (hypergeometric), 15 (fixed intercepts) or 11
+        (random intercepts, where there are two dimensions).
 
     Returns
     -------
@@ -165,7 +166,7 @@ def pool_one_stage(
         raise AnalysisError("No trial has both an event and a non-event: nothing to estimate.")
     used = arms.subset(informative)
     refuse_infinite(chosen, used)
-    nodes = nodes or (11 if chosen is OneStageModel.BINOMIAL_NORMAL_RANDOM else 15)
+    nodes = nodes or DEFAULT_NODES[chosen]
     problem, fit = fit_model(chosen, used, nodes)
     estimate, error, low, high = _effect(chosen, wanted, problem, fit, interval, level)
     constant = 0.0 if chosen is OneStageModel.HYPERGEOMETRIC_NORMAL else _constant(arms)

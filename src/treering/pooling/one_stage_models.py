@@ -28,6 +28,15 @@ class OneStageModel(StrEnum):
         return self in (OneStageModel.HYPERGEOMETRIC_NORMAL, OneStageModel.BINOMIAL_NORMAL_FIXED)
 
 
+#: Enough for 1e-6 in the log-likelihood of trials with zero cells, see the tests; the beta-binomial has none.
+DEFAULT_NODES = {
+    OneStageModel.HYPERGEOMETRIC_NORMAL: 25,
+    OneStageModel.BINOMIAL_NORMAL_FIXED: 15,
+    OneStageModel.BINOMIAL_NORMAL_RANDOM: 11,
+    OneStageModel.BETA_BINOMIAL: 1,
+}
+
+
 def fit_model(model: OneStageModel, arms: Arms, nodes: int) -> tuple[Problem, Fit]:
     """Maximise the likelihood of one model.
 
