@@ -49,7 +49,7 @@ class State:
 @pytest.fixture
 def state() -> State:
     state = State()
-    text = '[review]\ntitle = "Warm hands (invented)"\ninvented = true\n'
+    text = '[review]\ntitle = "Warm hands (invented)"\ninvented = true\ncomparator = "no warming"\n'
     state.put(NewEntry(EntryKind.PROTOCOL, "protocol", {"digest": "x", "text": text}, "2026-01-05"))
     return state
 
@@ -115,7 +115,12 @@ def event():
         "monitoring": {
             "plan": {"level": 0.95},
             "look": {"verdict": "benefit boundary crossed"},
-            "rests_on": {"text": "Rests on B: without it the boundary is not crossed.", "tau2": 0.0412},
+            "rests_on": {
+                "sentence": "Rests on B: without it the boundary is not crossed.",
+                "tau2": 0,
+                "tau2_lost": 0.0412,
+                "null_participants": 1186,
+            },
         },
     }
 

@@ -14,6 +14,11 @@ def flat(entry: NewEntry) -> str:
     return " ".join(entry.body["text"].split())
 
 
+def headings(text: str) -> list[str]:
+    """Return the headings of a notice, without the line that names the version."""
+    return [line for line in text.splitlines() if line and not line.startswith((" ", "To "))]
+
+
 def by_person(entries: list[NewEntry]) -> dict[str, NewEntry]:
     return {entry.body["person"]: entry for entry in entries}
 
@@ -35,8 +40,12 @@ def test_a_notice_says_event_effect_dependence_and_what_it_asks(event, panel, st
     assert "benefit boundary crossed" in text
     # exp(-0.3567) = 0.70, exp(-0.5108) = 0.60, exp(-0.2) = 0.82: closed form
     assert "Risk ratio 0.70 (95% interval 0.60 to 0.82), from 6 trials with 2110 participants." in text
-    assert "Per 1000 people: 84 fewer (112 fewer to 51 fewer), where 280 would have it without." in text
+    assert (
+        "Per 1000 people: 84 fewer (112 fewer to 51 fewer), where 280 would have it with no warming." in text
+    )
     assert "Rests on B: without it the boundary is not crossed." in text
+    assert "now 0, stays below 0.041." in text
+    assert "One more trial of about 1186 people that shows no effect at all would undo it." in text
     assert "asks you to meet" in text
     assert "It is not a recommendation" in text
     assert CAUTION in text
@@ -81,22 +90,31 @@ def test_a_former_member_is_mailed_where_the_crossing_was_mailed(event, member, 
 def test_a_lost_crossing_weighs_as_much_as_the_crossing(event, panel, state) -> None:
     body = {
         **event.body,
-        "monitoring": {**event.body["monitoring"], "look": {"verdict": "crossing no longer supported"}},
+        "monitoring": {
+            **event.body["monitoring"],
+            "look": {"verdict": "crossing no longer supported"},
+            "rests_on": None,
+        },
         "trials": [
             event.trial("A"),
             event.trial("B", in_main=False, left_out="report retracted on 2026-02-01"),
         ],
     }
+    state.put(*build_notices([event()], panel, state))
     lost = event(
-        event=EventClass.CROSSING_LOST, body=body, previous=event.body, changes={"causes": ["retraction"]}
+        event=EventClass.CROSSING_LOST,
+        version=5,
+        body=body,
+        previous=event.body,
+        changes={"causes": ["retraction"]},
     )
     before, after = (
         by_person(build_notices([e], panel, state))["chair"].body["text"] for e in (event(), lost)
     )
-    headings = [line for line in before.splitlines() if line and not line.startswith(" ")]
-    assert [line for line in after.splitlines() if line and not line.startswith(" ")] == headings
+    assert headings(after) == headings(before)
+    assert "In the version before: Rests on B" in after
     text = " ".join(after.split())
-    assert "no longer stands: crossing no longer supported" in text
+    assert "The crossing that the notice of version 4 (2026-02-02) told of no longer stands" in text
     assert "No longer in the main analysis: Trial B (report retracted on 2026-02-01)." in text
 
 

@@ -136,20 +136,36 @@ def _text(
     head = [title] if title else []
     head += [INVENTED] if review.get("invented") else []
     head.append(f"To {member.name}. Outcome: {event.title}. Version {event.version} of {event.date}.")
-    parts = _recusal(event, member) if recused else _parts(event, view)
+    comparator = str(review.get("comparator") or "no intervention")
+    parts = _recusal(event, member) if recused else _parts(event, view, comparator)
     parts = {**parts, "Store head": _head(event), "This notice": key}
     blocks = [_wrapped(line) for line in head]
     blocks += [f"{name}\n{_wrapped(text, '  ')}" for name, text in parts.items()]
     return "\n\n".join(blocks) + "\n"
 
 
-def _parts(event: Event, view: StateView) -> dict[str, str]:
+def _announced(event: Event, view: StateView) -> str:
+    """Say by which version's notices the crossing was announced."""
+    told = [
+        notice
+        for notice in view.live(EntryKind.NOTICE)
+        if notice.body["synthesis"] == event.synthesis
+        and notice.body["event"] == EventClass.CROSSING
+        and notice.body["version"] < event.version
+    ]
+    if not told:
+        return "an earlier version"
+    last = max(told, key=lambda notice: int(notice.body["version"]))
+    return f"the notice of version {last.body['version']} ({last.true_at})"
+
+
+def _parts(event: Event, view: StateView, comparator: str) -> dict[str, str]:
     """Return the parts of a notice by their heading."""
     rated = view.get(f"certainty/{event.synthesis}")
     parts = {
-        "What happened": wording.happened(event),
-        "The ordinary pooled effect now": " ".join(wording.effect(event.body)),
-        "What it rests on": wording.dependence(event.body) or "",
+        "What happened": wording.happened(event, _announced(event, view)),
+        "The ordinary pooled effect now": " ".join(wording.effect(event.body, without=comparator)),
+        "What it rests on": wording.rested(event) or "",
         "Certainty": wording.certainty(rated.body if rated else None, event.version),
         "What this asks": wording.ASK,
         "How to read it": CAUTION,

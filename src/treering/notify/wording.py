@@ -17,8 +17,8 @@ ASK = (
 _HAPPENED = {
     EventClass.CROSSING: "At this version the monitoring says: {verdict}.",
     EventClass.CROSSING_LOST: (
-        "A crossing that you were told of no longer stands: {verdict}. This notice weighs as much as the one "
-        "before it."
+        "The crossing that {earlier} told of no longer stands: {verdict}. This notice weighs as much as that "
+        "one did."
     ),
     EventClass.INTEGRITY: "A notice about a trial of this outcome was published: {notices}.",
     EventClass.CERTAINTY_STALE: "The certainty rating of this outcome was made on older numbers.",
@@ -26,9 +26,23 @@ _HAPPENED = {
 }
 
 
-def happened(event: Event) -> str:
-    """Say in a sentence or two what happened, with the causes of what changed."""
-    told = _HAPPENED[event.event].format(verdict=_verdict(event.body), notices=_notices(event))
+def happened(event: Event, earlier: str = "an earlier version") -> str:
+    """Say in a sentence or two what happened, with the causes of what changed.
+
+    Parameters
+    ----------
+    event : Event
+        What happened.
+    earlier : str
+        How a crossing that is lost was announced, for example "the notice of version 4 (2026-02-02)".
+
+    Returns
+    -------
+    str
+    """
+    told = _HAPPENED[event.event].format(
+        verdict=_verdict(event.body), notices=_notices(event), earlier=earlier
+    )
     causes = [str(cause) for cause in event.changes.get("causes", ())]
     if causes:
         told += f" What changed since the version before: {', '.join(causes)}."
@@ -69,8 +83,21 @@ def _notices(event: Event) -> str:
     return "; ".join(fresh) or "see the report"
 
 
-def effect(body: Body) -> Iterator[str]:
-    """Yield the pooled effect and what it means per 1000 people, in natural numbers."""
+def effect(body: Body, *, without: str = "no intervention") -> Iterator[str]:
+    """Yield the pooled effect and what it means per 1000 people, in natural numbers.
+
+    Parameters
+    ----------
+    body : mapping
+        Analysis body.
+    without : str
+        What the comparator is called in the protocol.
+
+    Yields
+    ------
+    str
+        Sentences.
+    """
     pooled = body.get("pooled") or {}
     if pooled.get("estimate") is None:
         yield "No effect can be estimated in the main analysis now."
@@ -88,7 +115,7 @@ def effect(body: Body) -> Iterator[str]:
         yield "The interval is compatible with no effect."
     absolute = body.get("absolute")
     if absolute:
-        yield _absolute(absolute)
+        yield _absolute(absolute, without)
 
 
 def _natural(value: float, scale: str) -> float:
@@ -111,13 +138,13 @@ def _level(body: Body) -> str:
     return f"{100 * level:g}% " if level else ""
 
 
-def _absolute(absolute: Mapping[str, Any]) -> str:
+def _absolute(absolute: Mapping[str, Any], without: str) -> str:
     """Say the effect as more or fewer people among, for example, 1000."""
     per = int(absolute["per"])
     base = f"{per * absolute['comparator_risk']:.1f}".removesuffix(".0")
     told = _more(absolute["difference"])
     ends = [_more(absolute[name]) for name in ("low", "high")]
-    return f"Per {per} people: {told} ({ends[0]} to {ends[1]}), where {base} would have it without."
+    return f"Per {per} people: {told} ({ends[0]} to {ends[1]}), where {base} would have it with {without}."
 
 
 def _more(value: float) -> str:
@@ -127,16 +154,33 @@ def _more(value: float) -> str:
 
 
 def dependence(body: Body) -> str | None:
-    """Say what a crossing rests on; None when nothing was found or asked."""
+    """Say what a crossing rests on; None when there is no crossing to ask that of."""
     rests = (body.get("monitoring") or {}).get("rests_on")
     if not rests:
         return None
-    told = str(rests.get("text") or "").strip()
-    if rests.get("tau2") is not None:
-        told += f" It holds while the between-trial variance stays below {rests['tau2']:.3g}."
+    told = [str(rests["sentence"])]
+    if rests.get("tau2_lost") is not None:
+        told.append(
+            f"The crossing holds while the between-trial variance, now {_small(rests['tau2'])}, stays below "
+            f"{_small(rests['tau2_lost'])}."
+        )
     if rests.get("null_participants"):
-        told += f" One new trial of {rests['null_participants']} people without any effect would undo it."
-    return told.strip() or None
+        people = rests["null_participants"]
+        told.append(f"One more trial of about {people} people that shows no effect at all would undo it.")
+    return " ".join(told)
+
+
+def rested(event: Event) -> str | None:
+    """Say what a crossing rests on, or what one that is lost rested on in the version before."""
+    now = dependence(event.body)
+    if now or event.event is not EventClass.CROSSING_LOST:
+        return now
+    before = ((event.previous or {}).get("monitoring") or {}).get("rests_on")
+    return f"In the version before: {before['sentence']}" if before else None
+
+
+def _small(value: float) -> str:
+    return f"{value:.2g}"
 
 
 def certainty(rated: Body | None, version: int) -> str:
