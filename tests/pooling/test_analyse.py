@@ -12,7 +12,8 @@ import pytest
 from treering.effects import effect_sizes
 from treering.errors import AnalysisError
 from treering.pooling import HalfNormal, absolute_effects, pool, pool_bayesian, subgroup_analysis
-from treering.pooling.analyse import TableAnalysis, analyse_table
+from treering.pooling.analyse import analyse_table
+from treering.pooling.analysis_result import TableAnalysis
 from treering.pooling.plain import plain
 
 PUBLISHED = Path(__file__).parents[1] / "published"
@@ -44,7 +45,8 @@ def rosiglitazone() -> pd.DataFrame:
 
 
 def test_nothing_is_missing_when_the_table_has_everything(analysis: TableAnalysis) -> None:
-    assert analysis.not_done == {}
+    assert set(analysis.not_done) == {"small_study peters", "small_study harbord"}
+    assert all("odds ratios" in reason for reason in analysis.not_done.values())
     assert len(analysis.estimators) == 7
     assert len(analysis.one_stage) == 4
 
@@ -63,6 +65,29 @@ def test_every_part_is_what_its_own_function_gives(analysis: TableAnalysis, tabl
     assert analysis.subgroups.test_p == subgroup_analysis(y, v, table["subgroup"]).test_p
     assert analysis.bayesian.p_beyond_mid == pool_bayesian(y, v, HalfNormal(0.5), mid=0.1).p_beyond_mid
     assert analysis.absolute == absolute_effects(pool(y, v), "risk-ratio", [0.02, 0.05])
+
+
+def test_methods_for_odds_ratios_stand_beside_odds_ratios(
+    table: pd.DataFrame, rosiglitazone: pd.DataFrame
+) -> None:
+    found = analyse_table(table, "odds-ratio", one_stage="never")
+    assert found.small_study.harbord.k == found.small_study.peters.k == 13
+    assert not found.small_study.forced
+    # Nissen and Wolski 2007: Peto odds ratio 1.64 (0.98 to 2.74)
+    rare = analyse_table(rosiglitazone, "odds-ratio", one_stage="never").to_dict()["peto"]["natural"]
+    assert [rare[name] for name in ("estimate", "ci_low", "ci_high")] == pytest.approx(
+        [1.64, 0.98, 2.74], abs=0.006
+    )
+
+
+def test_few_trials_get_small_study_tests_only_when_forced_and_then_marked(table: pd.DataFrame) -> None:
+    held = analyse_table(table.head(6), "odds-ratio", one_stage="never")
+    assert held.small_study is None
+    assert held.trim_and_fill is None
+    assert "6 trials" in held.not_done["small_study"]
+    forced = analyse_table(table.head(6), "odds-ratio", one_stage="never", force_small_study=True)
+    assert forced.small_study.forced
+    assert forced.trim_and_fill.few_trials
 
 
 def test_leaving_a_trial_out_is_pooling_the_others(analysis: TableAnalysis, table: pd.DataFrame) -> None:

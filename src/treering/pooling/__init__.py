@@ -4,7 +4,8 @@ The numeric core: arrays or pandas in, frozen values out, effects on the analysi
 """
 
 from treering.pooling.absolute import AbsoluteEffect, absolute_effects
-from treering.pooling.analyse import TableAnalysis, analyse_table
+from treering.pooling.analyse import analyse_table
+from treering.pooling.analysis_result import TableAnalysis
 from treering.pooling.bayes import BayesianEffect, pool_bayesian
 from treering.pooling.credibility import SUBGROUP_QUESTIONS, SubgroupAnswer, SubgroupCredibility
 from treering.pooling.inference import heterogeneity_p

@@ -3,134 +3,23 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 import pandas as pd
 from scipy.stats import norm
 
-from treering.effects import LeftOut
 from treering.errors import AnalysisError
 from treering.pooling import analysis_classical as classical
 from treering.pooling import analysis_models as models
 from treering.pooling.absolute import AbsoluteEffect
-from treering.pooling.analysis_classical import Cumulative
 from treering.pooling.analysis_input import Inputs, Ledger, Plan, prepare, tuple_of
-from treering.pooling.bayes import BayesianEffect
+from treering.pooling.analysis_result import TableAnalysis, TrialEffect
 from treering.pooling.inverse_variance import pool
 from treering.pooling.one_stage import OneStageEffect
-from treering.pooling.plain import plain, with_natural
+from treering.pooling.plain import plain
 from treering.pooling.priors import TauPrior
-from treering.pooling.regression import MetaRegression
 from treering.pooling.result import PooledEffect
-from treering.pooling.subgroups import SubgroupAnalysis
 from treering.terms import Measure
-
-_NATURAL = ("common", "random", "bayesian")
-
-
-@dataclass(frozen=True, slots=True)
-class TrialEffect:
-    """One trial's effect on the analysis scale, its interval and its share of both pooled effects."""
-
-    trial: str
-    estimate: float
-    variance: float
-    standard_error: float
-    ci_low: float
-    ci_high: float
-    weight_common: float
-    weight_random: float
-    corrected: bool
-    route: str
-
-
-@dataclass(frozen=True, slots=True)
-class TableAnalysis:
-    """All results of one table; a part that could not be computed is None and has its reason in ``not_done``.
-
-    Attributes
-    ----------
-    measure, scale : str
-        The measure; "log" or "natural" analysis scale.
-    level : float
-        Confidence level.
-    options : dict
-        What was asked for.
-    trials : tuple of TrialEffect
-        Trials with a usable effect.
-    left_out : tuple of LeftOut
-        The others with the reason.
-    common, random : PooledEffect or None
-        Inverse-variance results; ``random`` is the headline and holds heterogeneity and prediction.
-    estimators : dict of str to PooledEffect
-        Random effects by every estimator of tau2.
-    subgroups : SubgroupAnalysis or None
-        When the table has the subgroup column.
-    regression : MetaRegression or None
-        When covariates are named.
-    leave_one_out : DataFrame or None
-        The random-effects result without each trial.
-    cumulative : Cumulative or None
-        Pooled effect as trials are added.
-    bayesian : BayesianEffect or None
-        Posterior.
-    one_stage : dict of str to OneStageEffect
-        Rare-event models.
-    absolute : tuple of AbsoluteEffect
-        Events per 1000 people.
-    not_done : dict of str to str
-        Part and reason.
-    warnings : tuple of str
-        What a reader of the numbers must also read.
-    """
-
-    measure: str
-    scale: str
-    level: float
-    options: dict[str, Any]
-    trials: tuple[TrialEffect, ...]
-    left_out: tuple[LeftOut, ...]
-    common: PooledEffect | None
-    random: PooledEffect | None
-    estimators: dict[str, PooledEffect]
-    subgroups: SubgroupAnalysis | None
-    regression: MetaRegression | None
-    leave_one_out: pd.DataFrame | None
-    cumulative: Cumulative | None
-    bayesian: BayesianEffect | None
-    one_stage: dict[str, OneStageEffect]
-    absolute: tuple[AbsoluteEffect, ...]
-    not_done: dict[str, str]
-    warnings: tuple[str, ...]
-
-    def to_dict(self) -> dict[str, Any]:
-        """Return the analysis as plain JSON values.
-
-        Returns
-        -------
-        dict
-            Same names as the attributes; pooled effects carry ``natural`` with estimate and limits on the
-            natural scale; NaN and infinity are None.
-        """
-        whole: dict[str, Any] = plain(self)
-        ratio = self.scale == "log"
-        for name in _NATURAL:
-            if whole[name] is not None:
-                whole[name] = with_natural(whole[name], ratio=ratio)
-        for name in ("trials", "leave_one_out"):
-            whole[name] = whole[name] and [with_natural(row, ratio=ratio) for row in whole[name]]
-        if whole["cumulative"] is not None:
-            steps = whole["cumulative"]["steps"]
-            whole["cumulative"]["steps"] = [with_natural(row, ratio=ratio) for row in steps]
-        for name in ("estimators", "one_stage"):
-            logs = ratio or name == "one_stage"
-            whole[name] = {key: with_natural(block, ratio=logs) for key, block in whole[name].items()}
-        if whole["subgroups"] is not None:
-            groups = whole["subgroups"]["groups"]
-            whole["subgroups"]["groups"] = [with_natural(group, ratio=ratio) for group in groups]
-        return whole
 
 
 def analyse_table(
@@ -227,6 +116,7 @@ def _analyse(inputs: Inputs) -> TableAnalysis:
     plan, sizes, ledger = inputs.plan, inputs.sizes, Ledger()
     k = len(sizes)
     rare = models.one_stage(inputs, ledger)
+    small, filled = classical.small_study_parts(inputs, ledger)
     empty = "" if k else "no trial has a usable effect on this measure"
     single = empty or ("" if k > 1 else "one trial only")
     common, random = _both_models(inputs) if k else (None, None)
@@ -242,6 +132,8 @@ def _analyse(inputs: Inputs) -> TableAnalysis:
         common=common,
         random=random,
         estimators=ledger.attempt("estimators", single, lambda: models.tau2_estimators(inputs)) or {},
+        mantel_haenszel=classical.mantel_haenszel(inputs, ledger),
+        peto=classical.peto(inputs, ledger),
         subgroups=ledger.attempt(
             "subgroups", _why_no_subgroups(inputs) or single, lambda: models.subgroups(inputs)
         ),
@@ -251,6 +143,9 @@ def _analyse(inputs: Inputs) -> TableAnalysis:
             lambda: models.regression(inputs),
         ),
         leave_one_out=ledger.attempt("leave_one_out", single, lambda: classical.without_each(inputs)),
+        influence=ledger.attempt("influence", single, lambda: classical.influence_of_each(inputs)),
+        small_study=small,
+        trim_and_fill=filled,
         cumulative=ledger.attempt("cumulative", empty, lambda: classical.added_up(inputs)),
         bayesian=ledger.attempt("bayesian", empty, lambda: models.bayesian(inputs)),
         one_stage=rare,

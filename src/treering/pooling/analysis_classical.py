@@ -1,4 +1,4 @@
-"""Parts of the table analysis that leave trials out, or add them up one by one."""
+"""Parts of the table analysis without a model of their own: counts pooled, trials left out, small studies."""
 
 from __future__ import annotations
 
@@ -8,11 +8,26 @@ import numpy as np
 import pandas as pd
 
 from treering.errors import AnalysisError
-from treering.pooling.analysis_input import Inputs
-from treering.pooling.inverse_variance import pool_many
+from treering.pooling.analysis_input import Inputs, Ledger
+from treering.pooling.influence import cumulative, influence, leave_one_out
+from treering.pooling.mantel_haenszel import pool_mantel_haenszel
+from treering.pooling.peto import pool_peto
+from treering.pooling.result import PooledEffect
+from treering.pooling.small_study import (
+    FEW_TRIALS,
+    RankTest,
+    RegressionTest,
+    egger,
+    harbord,
+    peters,
+    rank_correlation,
+)
+from treering.pooling.trim_fill import TrimAndFill, trim_and_fill
+from treering.terms import Measure
 
 _ORDERS = ("date", "year")
-_SHOWN = ["k", "estimate", "standard_error", "ci_low", "ci_high", "p", "tau2", "i2"]
+_MANTEL_HAENSZEL = frozenset({Measure.RISK_RATIO, Measure.ODDS_RATIO, Measure.RISK_DIFFERENCE})
+_ODDS = frozenset({Measure.ODDS_RATIO, Measure.PETO_ODDS_RATIO})
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,25 +46,64 @@ class Cumulative:
     steps: pd.DataFrame
 
 
-def _pooled_sets(inputs: Inputs, members: np.ndarray, labels: pd.Index) -> pd.DataFrame:
-    """Pool many sets of trials at once; row i of the boolean matrix ``members`` says who is in set i."""
-    plan = inputs.plan
-    y, v = inputs.sizes["estimate"].to_numpy(), inputs.sizes["variance"].to_numpy()
-    group, trial = np.nonzero(members)
-    pooled = pool_many(
-        y[trial],
-        v[trial],
-        group,
-        tau2=plan.tau2,
-        interval=plan.interval,
-        level=plan.level,
-        prediction_df=plan.prediction_df,
+@dataclass(frozen=True, slots=True)
+class SmallStudy:
+    """Tests for small-study effects; those that do not fit the measure are None.
+
+    ``forced`` is true when there are fewer than ten trials and the tests were asked for all the same.
+    """
+
+    k: int
+    forced: bool
+    egger: RegressionTest | None
+    peters: RegressionTest | None
+    harbord: RegressionTest | None
+    rank_correlation: RankTest | None
+
+
+def mantel_haenszel(inputs: Inputs, ledger: Ledger) -> PooledEffect | None:
+    """Mantel-Haenszel pooled effect from the counts, or None with the reason in the ledger.
+
+    Parameters
+    ----------
+    inputs : Inputs
+        The table and its effects.
+    ledger : Ledger
+        Where reasons are kept.
+
+    Returns
+    -------
+    PooledEffect or None
+    """
+    reason = inputs.why_no_counts
+    if not reason and inputs.measure not in _MANTEL_HAENSZEL:
+        reason = f"there is no Mantel-Haenszel method for {inputs.measure}"
+    return ledger.attempt(
+        "mantel_haenszel",
+        reason,
+        lambda: pool_mantel_haenszel(inputs.table, inputs.measure, correction=inputs.plan.correction),
     )
-    return pooled[_SHOWN].set_axis(labels.rename("trial"))
+
+
+def peto(inputs: Inputs, ledger: Ledger) -> PooledEffect | None:
+    """Peto odds ratio from the counts, whatever the measure, or None with the reason in the ledger.
+
+    Parameters
+    ----------
+    inputs : Inputs
+        The table and its effects.
+    ledger : Ledger
+        Where reasons are kept.
+
+    Returns
+    -------
+    PooledEffect or None
+    """
+    return ledger.attempt("peto", inputs.why_no_counts, lambda: pool_peto(inputs.table))
 
 
 def without_each(inputs: Inputs) -> pd.DataFrame:
-    """Pool all trials but one, for each trial in turn.
+    """Random-effects result without each trial in turn.
 
     Parameters
     ----------
@@ -59,10 +113,26 @@ def without_each(inputs: Inputs) -> pd.DataFrame:
     Returns
     -------
     DataFrame, k rows
-        Random-effects result without the trial of the index.
     """
-    k = len(inputs.sizes)
-    return _pooled_sets(inputs, ~np.eye(k, dtype=bool), inputs.sizes.index)
+    sizes, plan = inputs.sizes, inputs.plan
+    return leave_one_out(
+        sizes["estimate"], sizes["variance"], tau2=plan.tau2, interval=plan.interval, level=plan.level
+    )
+
+
+def influence_of_each(inputs: Inputs) -> pd.DataFrame:
+    """Influence measures of each trial in the random-effects model.
+
+    Parameters
+    ----------
+    inputs : Inputs
+        The table and its effects, two trials or more.
+
+    Returns
+    -------
+    DataFrame, k rows
+    """
+    return influence(inputs.sizes["estimate"], inputs.sizes["variance"], tau2=inputs.plan.tau2)
 
 
 def added_up(inputs: Inputs) -> Cumulative:
@@ -82,18 +152,68 @@ def added_up(inputs: Inputs) -> Cumulative:
     AnalysisError
         When the column to order by is missing or has a gap.
     """
-    used, column = inputs.used, inputs.plan.order
+    sizes, plan, used, column = inputs.sizes, inputs.plan, inputs.used, inputs.plan.order
     if column is None:
         column = next((name for name in _ORDERS if name in used.columns), None)
     elif column not in used.columns:
         raise AnalysisError("The table lacks the column to order by.", found=column)
-    places = np.arange(len(used))
+    ranks = None
     if column is not None:
         gaps = used[column].isna().to_numpy()
         if gaps.any():
             raise AnalysisError(f"{column}: is missing.", trial=str(used.index[int(np.argmax(gaps))]))
-        places = np.argsort(used[column].to_numpy(), kind="stable")
-    members = np.zeros((len(places), len(places)), dtype=bool)
-    for step in range(len(places)):
-        members[step, places[: step + 1]] = True
-    return Cumulative(column or "rows of the table", _pooled_sets(inputs, members, used.index[places]))
+        # ranks, because dates are no floats
+        ranks = used[column].rank(method="dense").to_numpy(dtype=float)
+    steps = cumulative(
+        sizes["estimate"],
+        sizes["variance"],
+        order=ranks,
+        tau2=plan.tau2,
+        interval=plan.interval,
+        level=plan.level,
+    )
+    return Cumulative(column or "rows of the table", steps)
+
+
+def small_study_parts(inputs: Inputs, ledger: Ledger) -> tuple[SmallStudy | None, TrimAndFill | None]:
+    """Small-study tests and trim and fill, with ten trials or more unless forced.
+
+    Parameters
+    ----------
+    inputs : Inputs
+        The table and its effects.
+    ledger : Ledger
+        Where reasons are kept.
+
+    Returns
+    -------
+    tuple
+        Tests; trim and fill in the common-effect model. None where not done.
+    """
+    k = len(inputs.sizes)
+    reason = ""
+    if k < FEW_TRIALS and not inputs.plan.force_small_study:
+        reason = f"{k} trials; such tests are read with {FEW_TRIALS} or more only"
+    tests = ledger.attempt("small_study", reason, lambda: _tests(inputs, ledger))
+    filled = ledger.attempt(
+        "trim_and_fill",
+        reason,
+        lambda: trim_and_fill(inputs.sizes["estimate"], inputs.sizes["variance"], level=inputs.plan.level),
+    )
+    return tests, filled
+
+
+def _tests(inputs: Inputs, ledger: Ledger) -> SmallStudy:
+    """All tests that fit the measure."""
+    y, v = inputs.sizes["estimate"], inputs.sizes["variance"]
+    counts = inputs.why_no_counts
+    odds = counts or ("" if inputs.measure in _ODDS else "made for odds ratios")
+    k = len(inputs.sizes)
+    return SmallStudy(
+        k=k,
+        forced=k < FEW_TRIALS,
+        egger=ledger.attempt("small_study egger", "", lambda: egger(y, v)),
+        peters=ledger.attempt("small_study peters", odds, lambda: peters(inputs.used)),
+        harbord=ledger.attempt("small_study harbord", odds, lambda: harbord(inputs.used)),
+        rank_correlation=ledger.attempt("small_study rank_correlation", "", lambda: rank_correlation(y, v)),
+    )
