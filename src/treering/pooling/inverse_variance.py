@@ -94,7 +94,7 @@ def pool_checked(batch: Batch, options: Options, labels: Sequence[object]) -> Co
         A result is not finite.
     """
     with np.errstate(over="ignore", under="ignore", invalid="ignore", divide="ignore"):
-        columns = pool_batch(batch, options)
+        columns = pool_batch(batch, options, labels)
     check_finite_result((columns["estimate"], columns["standard_error"]), labels)
     return columns
 

@@ -5,6 +5,7 @@ A batch of syntheses goes in, one column for each field of `PooledEffect` comes 
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,7 +13,7 @@ import numpy as np
 import numpy.typing as npt
 
 from treering.pooling.batch import Batch
-from treering.pooling.checks import check_level, choose
+from treering.pooling.checks import check_finite_result, check_level, choose
 from treering.pooling.inference import (
     Inference,
     chi2_quantile,
@@ -22,7 +23,7 @@ from treering.pooling.inference import (
     prediction,
     t_test,
 )
-from treering.pooling.moments import Fit, fit
+from treering.pooling.moments import Fit, dot, fit
 from treering.pooling.qroot import solve_q
 from treering.pooling.result import (
     COMMON_EFFECT,
@@ -72,7 +73,7 @@ class Options:
         return self.interval if self.model is PoolingModel.RANDOM else IntervalMethod.WALD
 
 
-def pool_batch(batch: Batch, options: Options) -> Columns:
+def pool_batch(batch: Batch, options: Options, labels: Sequence[object]) -> Columns:
     """Pool every synthesis of a batch.
 
     Parameters
@@ -81,14 +82,22 @@ def pool_batch(batch: Batch, options: Options) -> Columns:
         Checked syntheses of at least one trial each.
     options : Options
         Checked options.
+    labels : sequence
+        Name of each synthesis, for the error.
 
     Returns
     -------
     dict
         One array for each field of `PooledEffect`; "weights" has shape (n, g).
+
+    Raises
+    ------
+    AnalysisError
+        Numbers too large or too small for double precision.
     """
     centred, centre = _centre(batch)
     common = fit(centred, np.zeros(batch.k.size))
+    check_finite_result((common.mean, common.q, dot(common.pull, common.pull)), labels)
     lone = batch.k < 2.0
     tau2 = _between_trials(centred, common, lone, options)
     chosen = fit(centred, tau2) if tau2.any() else common
@@ -105,10 +114,17 @@ def pool_batch(batch: Batch, options: Options) -> Columns:
 
 
 def _centre(batch: Batch) -> tuple[Batch, FloatArray]:
-    """Move each synthesis near zero, so that squares keep their digits whatever the estimates."""
-    w = np.reciprocal(batch.v)
-    centre = np.einsum("ij,ij->j", w, batch.y) / w.sum(axis=0)
-    return Batch(np.where(w > 0.0, batch.y - centre, 0.0), batch.v, batch.k), centre
+    """Measure each synthesis from its first trial.
+
+    Squares then keep their digits whatever the level of the estimates, and estimates that are all the same
+    become exact zeros.
+    """
+    centre, present = batch.y[0], np.isfinite(batch.v)
+    if present.all():
+        return Batch(batch.y - centre, batch.v, batch.k), centre
+    first = np.argmax(present, axis=0)
+    centre = batch.y[first, np.arange(first.size)]
+    return Batch(np.where(present, batch.y - centre, 0.0), batch.v, batch.k), centre
 
 
 def _between_trials(batch: Batch, common: Fit, lone: BoolArray, options: Options) -> FloatArray:
