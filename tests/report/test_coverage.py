@@ -8,6 +8,7 @@ import pytest
 
 from treering.report import build_view
 from treering.report.coverage import counts, coverage
+from treering.report.coverage_items import PRISMA
 from treering.terms import CoverageState
 
 
@@ -31,7 +32,8 @@ def bare(view_of):
 
 def test_all_42_items_of_prisma_2020_are_listed(view_of):
     # Page et al., BMJ 2021;372:n71: 27 items, with their sub-items 42.
-    items = [row["item"] for row in coverage(view_of(1)) if row["item"][0] not in "LM"]
+    rows = [row for row in coverage(view_of(1)) if row["standard"] == PRISMA]
+    items = [row["item"] for row in rows if not row["item"].startswith("L")]
     assert len(items) == len(set(items)) == 42
     assert {int("".join(c for c in item if c.isdigit())) for item in items} == set(range(1, 28))
 
@@ -80,6 +82,13 @@ def test_every_item_says_why_and_every_place_is_an_id_of_the_page(view_of):
     for row in coverage(view_of(3)):
         assert row["why"]
         assert row["fill"] in ("A", "H", "AH")
+
+
+def test_conduct_expectations_are_listed_and_none_is_assumed(view_of):
+    found = states(view_of(3))
+    assert {"C39", "C46", "C48", "C66", "C70", "C72", "U8"} <= set(found)
+    # One result in the main analysis stands on a waiver, and no second reading of characteristics is stored.
+    assert (found["C46"], found["C45"], found["Rare"]) == ("partly", "missing", "filled")
 
 
 def test_the_counts_add_up(view_of):

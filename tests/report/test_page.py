@@ -249,3 +249,24 @@ def _luminance(colour):
     channels = [int(colour[i : i + 2], 16) / 255 for i in (1, 3, 5)]
     linear = [c / 12.92 if c <= 0.03928 else ((c + 0.055) / 1.055) ** 2.4 for c in channels]
     return sum(w * c for w, c in zip((0.2126, 0.7152, 0.0722), linear, strict=True))
+
+
+def test_a_kept_simulation_stands_beside_the_boundary_and_says_when_it_is_of_another_plan(views):
+    digest = views[3].analyses[MAIN]["monitoring"]["look"]["plan_digest"]
+    found = {"alarm": 0.0558, "alarm_error": 0.0023, "information": 84.6, "lost": None}
+    row = {"rule": "the plan", "tau2": 0.1, "effect": 0.0, **found}
+    head = {"sentence": "Simulated false alarms of the plan.", "reviews": 10000, "seed": 7, "required": 169.2}
+    kept = {**head, "rows": [row], "plan_digest": digest}
+    text = Page(build_files(replace(views[3], simulation={MAIN: kept}))["index.html"].decode()).text
+    assert "5.6% ± 0.23%" in text
+    assert "50%" in text.split("Simulated false alarms")[1][:700]
+    assert "Simulated for another plan" not in text
+    other = {MAIN: {**kept, "plan_digest": "another"}}
+    assert (
+        "Simulated for another plan"
+        in build_files(replace(views[3], simulation=other))["index.html"].decode()
+    )
+
+
+def test_an_outcome_without_a_simulation_says_how_to_make_one(html):
+    assert "No simulation of this plan is kept" in html[3]

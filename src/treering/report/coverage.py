@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import Any
 
+from treering.report.coverage_conduct import CONDUCT, CONDUCT_RULES
 from treering.report.coverage_items import MONITORING, MONITORING_ITEMS, PRISMA, PRISMA_ITEMS
 from treering.report.coverage_methods import METHOD_RULES
 from treering.report.coverage_monitoring import MONITORING_RULES
@@ -34,13 +35,16 @@ def coverage(view: ReportView) -> list[dict[str, Any]]:
         ``place`` (id on the page, or empty).
     """
     rules: dict[str, Rule] = {**METHOD_RULES, **RESULT_RULES, **MONITORING_RULES}
+    asked = [
+        *((PRISMA, item, rules[item.item]) for item in PRISMA_ITEMS),
+        *((MONITORING, item, rules[item.item]) for item in MONITORING_ITEMS),
+        *((CONDUCT, item, rule) for item, rule in CONDUCT_RULES),
+    ]
     rows = []
-    for standard, items in ((PRISMA, PRISMA_ITEMS), (MONITORING, MONITORING_ITEMS)):
-        for item in items:
-            state, why, place = rules[item.item](view)
-            rows.append(
-                {"standard": standard, **item._asdict(), "state": str(state), "why": why, "place": place}
-            )
+    for standard, item, rule in asked:
+        state, why, place = rule(view)
+        row = {"standard": standard, **item._asdict(), "state": str(state), "why": why, "place": place}
+        rows.append(row)
     return rows
 
 
