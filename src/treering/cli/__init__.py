@@ -6,13 +6,16 @@ Data goes to stdout, remarks to stderr; exit status 0 done, 1 refused or fell sh
 
 from __future__ import annotations
 
+import difflib
+import os
 import sys
+import warnings
 from collections.abc import Sequence
 
-from cyclopts import App, CycloptsError
+from cyclopts import App, CycloptsError, Group, UnknownCommandError
 
 from treering import __version__
-from treering.cli.output import EXIT_REFUSED, EXIT_WRONG_USE, remark
+from treering.cli.output import EXIT_DONE, EXIT_REFUSED, EXIT_WRONG_USE, remark
 from treering.errors import TreeringError
 
 app = App(
@@ -68,9 +71,12 @@ HELP = {
 
 
 def _register() -> None:
-    for group, commands in GROUPS.items():
-        for name, place in commands.items():
-            app.command(f"treering.cli.{place}", name=name, help=HELP[name], group=group)
+    for rank, (title, commands) in enumerate(GROUPS.items(), start=1):
+        group = Group(title, sort_key=rank)
+        for place_in_group, (name, place) in enumerate(commands.items()):
+            app.command(
+                f"treering.cli.{place}", name=name, help=HELP[name], group=group, sort_key=place_in_group
+            )
 
 
 _register()
@@ -84,16 +90,46 @@ def main(arguments: Sequence[str] | None = None) -> None:
     arguments : sequence of str, optional
         The command line; the process's own when left out.
     """
-    tokens = list(sys.argv[1:] if arguments is None else arguments)
+    if arguments is None and not sys.warnoptions:
+        # Warnings of libraries speak to programmers; python -W, or the tests, still show them.
+        warnings.simplefilter("ignore")
+    try:
+        status = _run(list(sys.argv[1:] if arguments is None else arguments))
+        sys.stdout.flush()
+    except BrokenPipeError:
+        # The reader of a pipe, `head` for example, has gone: nothing is left to tell, also not at exit.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        status = EXIT_REFUSED
+    sys.exit(status)
+
+
+def _run(tokens: list[str]) -> int:
+    """Run one command and return its exit status; faults that people can mend become one remark."""
     try:
         status = app(tokens, exit_on_error=False, print_error=False, result_action="return_value")
+    except UnknownCommandError:
+        remark(_unknown(tokens))
+        return EXIT_WRONG_USE
     except CycloptsError as error:
-        remark(f"{error} See `treering --help`.")
-        sys.exit(EXIT_WRONG_USE)
+        command = f" {tokens[0]}" if tokens and tokens[0] in HELP else ""
+        remark(f"{error} See `treering{command} --help`.")
+        return EXIT_WRONG_USE
     except TreeringError as error:
         remark(str(error))
-        sys.exit(EXIT_REFUSED)
+        return EXIT_REFUSED
+    except BrokenPipeError:
+        raise
+    except OSError as error:
+        remark(f"{error.filename or 'the system'}: {error.strerror or error}.")
+        return EXIT_REFUSED
     except KeyboardInterrupt:
         remark("Stopped. What was committed stays; run the command again to go on.")
-        sys.exit(EXIT_REFUSED)
-    sys.exit(status if isinstance(status, int) else 0)
+        return EXIT_REFUSED
+    return status if isinstance(status, int) else EXIT_DONE
+
+
+def _unknown(tokens: Sequence[str]) -> str:
+    word = next((token for token in tokens if not token.startswith("-") and token not in HELP), "")
+    near = difflib.get_close_matches(word, HELP, n=1)
+    hint = f" Did you mean `treering {near[0]}`?" if near else ""
+    return f"There is no command {word!r}.{hint} See `treering --help`."

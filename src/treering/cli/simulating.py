@@ -127,10 +127,10 @@ def _tell(item: Any) -> None:
     alpha = item.result.plan.alpha
     if item.result.exceeds:
         worst = item.result.worst
+        rate = f"{worst.alarm:.4f} (error {worst.alarm_error:.4f}) at tau2 {worst.tau2:g}"
         remark(
-            f"{item.outcome}: the plan's false-alarm rate is {worst.alarm:.4f} "
-            f"(error {worst.alarm_error:.4f}) at tau2 {worst.tau2:g}, above its alpha of {alpha:g}. Run with --calibrate for an alpha that "
-            "holds, and amend the protocol."
+            f"{item.outcome}: the plan's false-alarm rate is {rate}, above its alpha of {alpha:g}. "
+            "Run with --calibrate for an alpha that holds, and amend the protocol."
         )
     if item.calibration is not None:
         say(f"{item.outcome}: alpha that holds {alpha:g}: {item.calibration.alpha:.4g}")

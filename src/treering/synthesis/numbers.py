@@ -14,9 +14,11 @@ from typing import Any
 import numpy as np
 
 SIGNIFICANT_DIGITS = 10
+#: Beyond this a whole number is not exact in JSON (RFC 8785).
+LARGEST_WHOLE = 2**53
 
 
-def rounded(value: float) -> float | None:
+def rounded(value: float) -> float | int | None:
     """Return `value` with 10 significant digits; None when it is not finite.
 
     Parameters
@@ -26,12 +28,14 @@ def rounded(value: float) -> float | None:
 
     Returns
     -------
-    float or None
+    float, int or None
+        A whole number is an int, as it is when it is read back from JSON.
     """
     number = float(value)
     if not math.isfinite(number):
         return None
-    return float(f"{number:.{SIGNIFICANT_DIGITS - 1}e}") + 0.0
+    short = float(f"{number:.{SIGNIFICANT_DIGITS - 1}e}")
+    return int(short) if short.is_integer() and abs(short) < LARGEST_WHOLE else short
 
 
 def plain(value: Any) -> Any:
