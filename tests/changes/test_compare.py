@@ -207,3 +207,33 @@ def test_a_synthesis_that_an_amendment_ends_is_still_told(kit):
     assert found["causes"] == ["protocol amendment"]
     assert found["estimate"]["after"] is None
     assert found["split_note"] == "The synthesis was ended."
+
+
+def test_an_amendment_does_not_explain_a_stored_number_that_changed(kit):
+    before = kit.body([kit.row("alder", 0.0, values={"events": 12})])
+    after = kit.body([kit.row("alder", 0.2, values={"events": 14})])
+    found = run(kit, before, after, [kit.entry("amendment", "amendment/2031/1", 6)])
+    assert {"what": "trial alder", "detail": "values.events"} in found["uncaused"]
+
+
+def test_an_amendment_explains_an_effect_computed_anew_from_the_same_numbers(kit):
+    before = kit.body([kit.row("alder", 0.0, values={"events": 12})])
+    after = kit.body([kit.row("alder", 0.2, values={"events": 12})])
+    found = run(kit, before, after, [kit.entry("amendment", "amendment/2031/1", 6)])
+    assert (found["causes"], found["uncaused"]) == (["protocol amendment"], [])
+
+
+def test_an_amendment_explains_the_trials_of_an_outcome_it_adds(kit):
+    old = {"failed": kit.body([kit.row("alder", 0.0)])}
+    new = {**old, "pain": kit.body([kit.row("alder", 0.4)])}
+    found = compare(old, new, [kit.entry("amendment", "a", 6)], SAME_CODE, repool=lambda n, r: kit.mean(r))[
+        "pain"
+    ]
+    assert (found["causes"], found["uncaused"]) == (["protocol amendment"], [])
+
+
+def test_a_description_written_anew_is_a_correction(kit):
+    before, after = (kit.body([kit.row("alder", 0.0, label=name)]) for name in ("alder", "Alder 2029"))
+    entry = kit.entry("study", "study/alder", 5, {"trial": "alder"}, replaces=1)
+    found = run(kit, before, after, [entry])
+    assert (found["causes"], found["uncaused"]) == (["correction"], [])

@@ -92,7 +92,7 @@ def _one(
     find: Finder,
     repool: Callable[[str, Sequence[Row]], float | None],
 ) -> dict[str, Any]:
-    found = differences(before["trials"] if before else (), after["trials"] if after else (), name, find)
+    found = differences(_rows(before), _rows(after), name, find)
     plan = _plan_changes(before, after, find.fallback)
     split, note = _split(name, before, after, found, find, repool)
     judged = [e for e in find.entries if e.kind == EntryKind.CERTAINTY and e.body.get("outcome") == name]
@@ -114,6 +114,10 @@ def _one(
     result["causes"] = [str(cause) for cause in Cause if cause in present]
     result["uncaused"] = _uncaused(result, found)
     return result
+
+
+def _rows(body: Body | None) -> Sequence[Row] | None:
+    return None if body is None else list(body["trials"])
 
 
 def _listed(before: Body | None, after: Body | None, found: Sequence[Difference]) -> dict[str, Any]:

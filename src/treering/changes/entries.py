@@ -83,6 +83,10 @@ _KIND_CAUSES = {
     EntryKind.PROTOCOL: Cause.PROTOCOL,
     EntryKind.AMENDMENT: Cause.PROTOCOL,
     EntryKind.WITHDRAWAL: Cause.CORRECTION,
+    EntryKind.SCREENING: Cause.CORRECTION,
+    EntryKind.STUDY: Cause.CORRECTION,
+    EntryKind.ARM: Cause.CORRECTION,
+    EntryKind.REPORT: Cause.NEW_REPORT,
 }
 
 
@@ -111,6 +115,8 @@ def cause_of(entry: Entry, *, trial_known: bool = True) -> Cause | None:
         if entry.replaces is not None:
             return Cause.CORRECTION
         return Cause.NEW_REPORT if trial_known else Cause.NEW_TRIAL
+    if kind is EntryKind.REPORT and entry.replaces is not None:
+        return Cause.CORRECTION
     return _KIND_CAUSES.get(kind)
 
 
