@@ -43,6 +43,14 @@ def test_copy_never_overwrites(in_use, tmp_path):
     assert (tmp_path / "copy.db").read_text() == "something of value"
 
 
+def test_remains_of_a_killed_copy_are_no_hindrance(in_use, tmp_path):
+    for ending in ("", "-wal", "-shm"):
+        (tmp_path / f"copy.db.partial{ending}").write_bytes(b"remains" * 1000)
+    in_use.copy(tmp_path / "copy.db")
+    with store.open_store(tmp_path / "copy.db") as copy:
+        assert copy.head() == in_use.head()
+
+
 def test_copy_of_a_store_that_is_written_to_is_whole(sqlite_evidence, study, moment, tmp_path):
     stop = threading.Event()
 

@@ -44,10 +44,13 @@ def test_append_killed_at_any_step_is_there_as_a_whole_or_not_at_all(target, tmp
     assert [line["killed"] for line in lines] == [True] * (len(lines) - 1) + [False]
     assert len(lines) > 12
     for place, line in enumerate(lines):
-        left, after = line["left"], line["after"]
+        left = line["left"]
         assert left["links"] == left["size"] == left["typed"]
         assert left["size"] in (130 * place, 130 * (place + 1))
-        assert after["links"] == after["size"] == after["typed"] == 130 * (place + 1)
+        assert left["size"] + line["added"] == 130 * (place + 1)
+    assert {line["added"] for line in lines if line["killed"]} == {0, 130}
+    assert lines[-1]["after"] == lines[-1]["left"]
+    assert lines[-1]["left"]["size"] == 130 * len(lines)
 
 
 def test_error_of_the_caller_half_way_leaves_the_head_unchanged(evidence, study, moment):

@@ -46,6 +46,19 @@ def test_made_store_opens_again(place):
         assert list(opened.entries()) == []
 
 
+def test_store_is_found_again_from_another_folder(tmp_path, monkeypatch, study, moment):
+    monkeypatch.chdir(tmp_path)
+    for address in ("evidence.db", "sqlite:///other.db"):
+        with store.create(address, review="x") as made:
+            (tmp_path / "elsewhere").mkdir(exist_ok=True)
+            monkeypatch.chdir(tmp_path / "elsewhere")
+            made._engine.dispose()
+            made.append([study("T1")], known_at=moment)
+            assert made.head().size == 1
+        monkeypatch.chdir(tmp_path)
+    assert not list((tmp_path / "elsewhere").iterdir())
+
+
 def test_store_is_never_made_over_another(place):
     store.create(place, review="first").close()
     with pytest.raises(StoreError, match="There is a store already"):

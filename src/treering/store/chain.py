@@ -280,7 +280,8 @@ def check_known(known_at: str, last: str) -> None:
             "The run is dated earlier than the last entry of the store.",
             found=known_at,
             expected=f"{last} or later",
-            next_step="Set the clock right and run again; what is known is never dated back.",
+            next_step="Set the clock right and run again; what is known is never dated back. "
+            "If the last run was dated ahead by mistake, date this one like it.",
         )
 
 

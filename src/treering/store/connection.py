@@ -37,7 +37,7 @@ def store_url(target: str | Path) -> URL:
         For any other database.
     """
     if isinstance(target, Path) or "://" not in target:
-        return URL.create("sqlite", database=str(target))
+        return _absolute(URL.create("sqlite", database=str(target)))
     try:
         url = make_url(target)
     except ArgumentError as error:
@@ -51,7 +51,12 @@ def store_url(target: str | Path) -> URL:
             expected="a path of a SQLite file or a postgresql+psycopg:// URL with a database name",
             next_step="Correct store in config/review.toml.",
         )
-    return url
+    return _absolute(url) if url.drivername == "sqlite" else url
+
+
+def _absolute(url: URL) -> URL:
+    # A connection opened later must find the same file, wherever the process has gone meanwhile.
+    return url.set(database=str(Path(str(url.database)).absolute()))
 
 
 def place_of(url: URL) -> str:

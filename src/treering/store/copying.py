@@ -78,7 +78,8 @@ def prepare(path: Path) -> Path:
     partial = path.with_name(path.name + ".partial")
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        partial.unlink(missing_ok=True)
+        for ending in ("", "-wal", "-shm"):  # what a copy that was killed has left
+            partial.with_name(partial.name + ending).unlink(missing_ok=True)
     except OSError as error:
         raise explained(str(error), "readonly", "copy") from error
     return partial

@@ -1,8 +1,8 @@
 """Kill an append with SIGKILL at one place after another, and say what was left each time.
 
 Run with the address of an empty store. For each place the append is made by a child process, which kills
-itself there; then this process looks at the store, lays the entries down again and looks once more. One line
-of JSON for each place; a place after the end of the append ends the run.
+itself there; then this process looks at the store and lays the entries down again. One line of JSON for each
+place; a place after the end of the append ends the run, with a last look.
 """
 
 from __future__ import annotations
@@ -18,6 +18,7 @@ from sqlalchemy import event
 
 from treering import store
 from treering.records import NewEntry
+from treering.store import EvidenceStore
 from treering.store.chain import check_links
 from treering.terms import EntryKind
 
@@ -50,14 +51,14 @@ def append_and_die(target: str, place: int) -> None:
     for name in ("before_cursor_execute", "after_cursor_execute", "commit"):
         event.listen(engine, name, step)
     opened.append(entries(place), known_at=MOMENT)
+    step()  # committed, and nobody was told
 
 
-def look(target: str) -> dict[str, Any]:
+def look(opened: EvidenceStore) -> dict[str, Any]:
     """Return size and root of a store after checking all its links."""
-    with store.open_store(target) as opened:
-        size, _ = check_links(opened.chain_rows())
-        head = opened.head()
-        typed = sum(len(list(opened.typed_rows(kind))) for kind in (EntryKind.STUDY, EntryKind.ARM))
+    size, _ = check_links(opened.chain_rows())
+    head = opened.head()
+    typed = sum(len(list(opened.typed_rows(kind))) for kind in (EntryKind.STUDY, EntryKind.ARM))
     return {"links": size, "size": head.size, "root": head.root, "typed": typed}
 
 
@@ -69,10 +70,12 @@ def main(target: str) -> None:
             append_and_die(target, place)
             os._exit(0)
         _, status = os.waitpid(child, 0)
-        left = look(target)
         with store.open_store(target) as opened:
-            opened.append(entries(place), known_at=MOMENT)
-        line = {"killed": os.WIFSIGNALED(status), "left": left, "after": look(target)}
+            left = look(opened)
+            added = opened.append(entries(place), known_at=MOMENT)
+            line = {"killed": os.WIFSIGNALED(status), "added": len(added), "left": left}
+            if not line["killed"]:
+                line["after"] = look(opened)
         print(json.dumps(line), flush=True)
         if not line["killed"]:
             return
