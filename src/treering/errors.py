@@ -19,7 +19,8 @@
     │   │   ├── KnownDateError    an entry is known earlier than the one before
     │   │   ├── VersionGapError   a version's number does not follow the last one's
     │   │   └── TreeHeadError     size or root of the Merkle tree differ from what is stated
-    │   └── AuditError         a numbered check of the audit failed
+    │   ├── AuditError         a numbered check of the audit failed
+    │   └── ProofError         a proof, a signature or an export does not hold
     ├── ReportError            a version cannot be rendered
     └── NoticeError            a notice could not be delivered
 
@@ -147,6 +148,10 @@ class TreeHeadError(LedgerError):
 
 class AuditError(StoreError):
     """A numbered check of the audit failed."""
+
+
+class ProofError(StoreError):
+    """A proof, a signature or an export does not hold or cannot be read."""
 
 
 class ReportError(TreeringError):
