@@ -94,13 +94,43 @@ def _syntheses(view: ReportView) -> bytes:
     return write_csv(heads, rows)
 
 
+#: Columns of looks.csv in the order of reading; a stored look has its fields in the order of the alphabet.
+LOOK_COLUMNS = (
+    "number",
+    "date",
+    "version",
+    "trials",
+    "estimate",
+    "standard_error",
+    "ci_low",
+    "ci_high",
+    "information",
+    "required",
+    "fraction",
+    "z",
+    "p",
+    "spends",
+    "alpha_spent",
+    "boundary",
+    "redrawn_boundary",
+    "futility",
+    "adjusted_low",
+    "adjusted_high",
+    "mixture_low",
+    "mixture_high",
+    "verdict",
+    "remarks",
+)
+
+
 def _looks(view: ReportView) -> bytes:
     looks = [
         (name, look)
         for name, body in view.analyses.items()
         for look in (body.get("monitoring") or {}).get("looks") or ()
     ]
-    fields = list(dict.fromkeys(key for _, look in looks for key in look)) or ["number"]
+    known = {key for _, look in looks for key in look}
+    fields = [*(key for key in LOOK_COLUMNS if key in known), *sorted(known - set(LOOK_COLUMNS))] or ["number"]
     return write_csv(
         ["synthesis", *fields], ([name, *(look.get(key) for key in fields)] for name, look in looks)
     )

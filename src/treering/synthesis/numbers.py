@@ -60,7 +60,7 @@ def plain(value: Any) -> Any:
     if isinstance(value, float | np.floating):
         return rounded(float(value))
     if isinstance(value, Mapping):
-        return {str(name): plain(item) for name, item in value.items()}
+        return {str(name): plain(value[name]) for name in sorted(value)}
     if isinstance(value, np.ndarray):
         return [plain(item) for item in value.tolist()]
     if isinstance(value, Sequence | set | frozenset):

@@ -136,11 +136,16 @@ def comparison_lines(found: dict[str, Any]) -> Iterator[str]:
     for name, change in found["syntheses"].items():
         verdict, estimate = change["verdict"], change["estimate"]
         yield f"{name}"
-        yield f"    verdict: {verdict['before'] or '-'} to {verdict['after'] or '-'}"
+        if verdict["before"] or verdict["after"]:
+            yield f"    verdict: {_movement(verdict['before'] or '-', verdict['after'] or '-')}"
         before, after = (_number(estimate[side]) for side in ("before", "after"))
-        yield f"    estimate (analysis scale): {before} to {after}"
+        yield f"    estimate (analysis scale): {_movement(before, after)}"
         for part in change["split"]:
             yield f"    {part['cause'] or 'uncaused'}: {part['movement']:+.4g}"
+
+
+def _movement(before: str, after: str) -> str:
+    return f"{before}, as before" if before == after else f"{before} to {after}"
 
 
 def _number(pooled: Any) -> str:

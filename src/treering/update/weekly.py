@@ -139,7 +139,13 @@ def step_notify(context: RunContext) -> tuple[str, ...]:
     failures = []
     with evidence(context) as store:
         for notice in pending(store.state()):
-            sent = deliver(notice, context.review.protocol.delivery, context.review.outbox, context.day)
+            sent = deliver(
+                notice,
+                context.review.protocol.delivery,
+                context.review.outbox,
+                context.day,
+                panel=context.review.panel,
+            )
             if sent.entry is None:
                 failures.append(sent.failure)
             else:
