@@ -31,6 +31,12 @@ class Arms:
     events_2: Array
     total_2: Array
 
+    @property
+    def whole(self) -> bool:
+        """Whether all events and totals are whole numbers."""
+        both = np.concatenate([self.events_1, self.total_1, self.events_2, self.total_2])
+        return bool(np.all(both == np.floor(both)))
+
     def subset(self, keep: npt.NDArray[np.bool_]) -> Arms:
         """Return the trials where ``keep`` is true."""
         return Arms(self.events_1[keep], self.total_1[keep], self.events_2[keep], self.total_2[keep])

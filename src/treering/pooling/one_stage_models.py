@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from enum import StrEnum
 from functools import partial
 
@@ -58,9 +59,19 @@ def fit_model(model: OneStageModel, arms: Arms, nodes: int) -> tuple[Problem, Fi
     """
     if model is OneStageModel.BETA_BINOMIAL:
         return _fit_beta_binomial(arms)
-    random = model is OneStageModel.BINOMIAL_NORMAL_RANDOM
-    problem = _random_problem(arms, nodes) if random else _normal_problem(model, arms, nodes)
+    if model is OneStageModel.BINOMIAL_NORMAL_RANDOM:
+        problem = _random_problem(arms, nodes)
+    else:
+        problem = _normal_problem(model, arms, nodes)
+        if model is OneStageModel.BINOMIAL_NORMAL_FIXED and arms.whole:
+            problem = _started_near(problem, arms)
     return problem, maximise(problem)
+
+
+def _started_near(problem: Problem, arms: Arms) -> Problem:
+    """Start the dear profile likelihood at the maximum of the conditional one, which lies close by."""
+    near, _ = best_point(_normal_problem(OneStageModel.HYPERGEOMETRIC_NORMAL, arms, 7))
+    return replace(problem, starts=(np.array([near[0], max(near[1], 0.01)]),))
 
 
 def _crude(arms: Arms) -> float:
