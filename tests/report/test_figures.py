@@ -160,3 +160,22 @@ def test_even_ticks_are_few_and_hold_zero(low, high):
 def test_drawing_libraries_load_only_when_a_figure_is_made():
     code = "import sys, treering.report, treering.report.figures; sys.exit('matplotlib' in sys.modules)"
     assert subprocess.run([sys.executable, "-c", code], check=False).returncode == 0
+
+
+def test_an_amended_plan_starts_its_own_line_of_bounds(views):
+    body = views[2].analyses[MAIN]
+    first, second = body["monitoring"]["looks"]
+    amended = {**body["monitoring"], "looks": [first, {**second, "plan_digest": "amended"}]}
+    # A line through one bound only is no line: the dashed stroke between the two ledgers is gone.
+    dashes = [z_figure({**body, "monitoring": m}, "z").count("stroke-dasharray: 8.4,2.8") for m in
+              (body["monitoring"], amended)]  # fmt: skip
+    assert dashes[0] == 3
+    assert dashes[1] > dashes[0]
+
+
+def test_a_futility_bound_is_drawn_and_named_only_where_there_is_one(views):
+    body = views[2].analyses[MAIN]
+    looks = [{**look, "futility": 0.3} for look in body["monitoring"]["looks"]]
+    with_bound = {**body, "monitoring": {**body["monitoring"], "looks": looks}}
+    assert "futility" in texts(z_figure(with_bound, "z"))
+    assert "futility" not in texts(z_figure(body, "z"))

@@ -130,7 +130,9 @@ def _looks(view: ReportView) -> bytes:
         for look in (body.get("monitoring") or {}).get("looks") or ()
     ]
     known = {key for _, look in looks for key in look}
-    fields = [*(key for key in LOOK_COLUMNS if key in known), *sorted(known - set(LOOK_COLUMNS))] or ["number"]
+    fields = [*(key for key in LOOK_COLUMNS if key in known), *sorted(known - set(LOOK_COLUMNS))] or [
+        "number"
+    ]
     return write_csv(
         ["synthesis", *fields], ([name, *(look.get(key) for key in fields)] for name, look in looks)
     )

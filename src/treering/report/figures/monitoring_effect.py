@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 from treering.report.figures import style
 from treering.report.numbers import effect, interval, plural
 from treering.report.wording import directions, measure_words
-from treering.terms import CROSSED, Better, Verdict
+from treering.terms import Better, Verdict
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -37,14 +37,14 @@ def effect_figure(body: Body, intervention: str, name: str) -> str:
     looks = [look for look in body["monitoring"]["looks"] if look.get("estimate") is not None]
     with style.settings():
         figure = style.new_figure(HEIGHT)
-        axes = figure.add_axes((0.075, 0.21, 0.905, 0.63))
+        axes = figure.add_axes((0.075, 0.21, 0.885, 0.63))
         low, high = _range(body, looks)
         axes.set_ylim(low, high)
         axes.set_xlim(0.4, len(looks) + 0.6)
         _scale(axes, body, looks, intervention, low, high)
         for x, look in enumerate(looks, start=1):
-            _look(axes, x, look, low, high)
-        _key(axes)
+            _look(axes, x, look, low, high, 1.0 if len(looks) < 14 else 0.65)
+        _key(axes, looks)
         title = f"Monitoring on the effect scale: {body['title']}"
         return style.to_svg(figure, name, title, describe(body, looks))
 
@@ -65,14 +65,17 @@ def describe(body: Body, looks: Sequence[Body]) -> str:
 
 
 def _range(body: Body, looks: Sequence[Body]) -> tuple[float, float]:
-    """Cover the ordinary intervals; much wider adjusted ones leave the picture by an arrow."""
-    inner = [0.0, 1.25 * abs(body["mid"]), -1.25 * abs(body["mid"])]
-    inner += [look[k] for look in looks for k in ("estimate", "ci_low", "ci_high") if look.get(k) is not None]
-    span = max(inner) - min(inner)
-    outer = [look[k] for look in looks for k in ("adjusted_low", "adjusted_high") if look.get(k) is not None]
-    low = max(min([*inner, *outer]), min(inner) - 0.45 * span)
-    high = min(max([*inner, *outer]), max(inner) + 0.45 * span)
-    return low - 0.05 * span, high + 0.05 * span
+    """Cover every estimate and what a typical ordinary interval needs; what is wider leaves by an arrow."""
+    points = [0.0, 1.25 * abs(body["mid"]), -1.25 * abs(body["mid"]), *(k["estimate"] for k in looks)]
+    known = [k for k in looks if k.get("ci_low") is not None and k.get("ci_high") is not None]
+    points += [known[-1][name] for name in ("ci_low", "ci_high") if known]
+    widths = sorted(k["ci_high"] - k["ci_low"] for k in known)
+    reach = max([max(points) - min(points), *widths[len(widths) // 2 : len(widths) // 2 + 1]])
+    names = ("ci_low", "ci_high", "adjusted_low", "adjusted_high")
+    ends = [k[name] for k in looks for name in names if k.get(name) is not None]
+    low = max(min([*points, *ends]), min(points) - 0.5 * reach)
+    high = min(max([*points, *ends]), max(points) + 0.5 * reach)
+    return low - 0.05 * reach, high + 0.05 * reach
 
 
 def _scale(axes: Axes, body: Body, looks: Sequence[Body], intervention: str, low: float, high: float) -> None:
@@ -96,27 +99,12 @@ def _scale(axes: Axes, body: Body, looks: Sequence[Body], intervention: str, low
     style.end_words(axes, f"{name[0].upper()}{name[1:]}{unit}", *ends, below=-0.24)
 
 
-def _look(axes: Axes, x: float, look: Body, low: float, high: float) -> None:
+def _look(axes: Axes, x: float, look: Body, low: float, high: float, size: float) -> None:
     _adjusted(axes, x, look, low, high)
     if look.get("ci_low") is not None and look.get("ci_high") is not None:
-        axes.plot(
-            [x, x],
-            [max(look["ci_low"], low), min(look["ci_high"], high)],
-            color=style.ACCENT,
-            lw=4.5,
-            zorder=3,
-        )
-    marker, filled = verdict_marker(look["verdict"])
-    axes.plot(
-        [x],
-        [look["estimate"]],
-        marker,
-        ms=9 if filled else 8,
-        mfc=style.INK if filled else style.PAPER,
-        mec=style.INK,
-        mew=1.3,
-        zorder=5,
-    )
+        ends = [max(look["ci_low"], low), min(look["ci_high"], high)]
+        axes.plot([x, x], ends, color=style.ACCENT, lw=4.5 * size, zorder=3)
+    axes.plot([x], [look["estimate"]], zorder=5, **marker_of(look["verdict"], style.INK, 8.5 * size))
 
 
 def _adjusted(axes: Axes, x: float, look: Body, low: float, high: float) -> None:
@@ -134,36 +122,38 @@ def _adjusted(axes: Axes, x: float, look: Body, low: float, high: float) -> None
             axes.plot([x], [limit], arrow, ms=5, color=style.INK, clip_on=False, zorder=2)
 
 
-def verdict_marker(verdict: str) -> tuple[str, bool]:
-    """Return the marker of a verdict and whether it is filled: told by shape, not by colour."""
-    if verdict in CROSSED:
-        return "D", True
-    if verdict == Verdict.NO_LONGER_SUPPORTED:
-        return "X", False
-    if verdict == Verdict.REACHED_WITHOUT_CROSSING:
-        return "s", False
-    return "o", False
+#: Marker of each state, whether it is filled, and its word: told by shape before colour.
+_MARKERS: dict[str, tuple[str, bool, str]] = {
+    Verdict.BENEFIT_CROSSED: ("D", True, "crossed"),
+    Verdict.HARM_CROSSED: ("D", True, "crossed"),
+    Verdict.FUTILITY_CROSSED: ("s", True, "futility crossed"),
+    Verdict.NO_LONGER_SUPPORTED: ("X", False, "no longer supported"),
+    Verdict.REACHED_WITHOUT_CROSSING: ("s", False, "information reached"),
+}
+_OTHER = ("o", False, "estimate")
 
 
-def _key(axes: Axes) -> None:
+def verdict_marker(verdict: str) -> tuple[str, bool, str]:
+    """Return the marker of a verdict, whether it is filled, and its word."""
+    return _MARKERS.get(verdict, _OTHER)
+
+
+def marker_of(verdict: str, colour: str, size: float) -> dict[str, Any]:
+    """Return the drawing options of a verdict's marker."""
+    marker, filled, _ = verdict_marker(verdict)
+    face = colour if filled else style.PAPER
+    return {"marker": marker, "ls": "none", "ms": size, "mfc": face, "mec": colour, "mew": 1.3}
+
+
+def _key(axes: Axes, looks: Sequence[Body]) -> None:
     from matplotlib.lines import Line2D
 
-    point: Any = {"ls": "none", "mec": style.INK, "mew": 1.3}
     handles = [
         Line2D([], [], color=style.ACCENT, lw=4.5, label="ordinary interval"),
         Line2D([], [], color=style.INK, lw=1.1, label="boundary-adjusted interval"),
-        Line2D([], [], marker="o", mfc=style.PAPER, ms=6, label="estimate", **point),
-        Line2D([], [], marker="D", mfc=style.INK, ms=6, label="crossed", **point),
-        Line2D([], [], marker="X", mfc=style.PAPER, ms=7, label="no longer supported", **point),
     ]
-    axes.legend(
-        handles=handles,
-        loc="lower right",
-        bbox_to_anchor=(1.0, 1.07),
-        ncols=len(handles),
-        frameon=False,
-        fontsize=8,
-        handlelength=1.4,
-        columnspacing=1.4,
-        borderaxespad=0.2,
-    )
+    words = {verdict_marker(look["verdict"])[2]: look["verdict"] for look in looks}
+    handles += [
+        Line2D([], [], label=word, **marker_of(verdict, style.INK, 6)) for word, verdict in words.items()
+    ]
+    style.key(axes, handles, lift=1.07)

@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from treering.report.figures import style
-from treering.report.figures.monitoring_effect import verdict_marker
+from treering.report.figures.monitoring_effect import marker_of
 from treering.report.numbers import number, percent, plural
 from treering.terms import CROSSED, Better, OutcomeRole
 
@@ -46,8 +46,8 @@ def z_figure(body: Body, name: str) -> str:
         _scale(axes, body, looks, right, tall)
         _hindsight(axes, hindsight, tall)
         _bounds(axes, looks, monitoring["plan"], body, tall)
-        _path(axes, looks, tall)
-        _key(axes)
+        _path(axes, looks)
+        _key(axes, looks, hindsight)
         return style.to_svg(figure, name, f"Monitoring on the Z scale: {body['title']}", describe(looks))
 
 
@@ -107,35 +107,31 @@ def _signs(plan: Body, body: Body) -> tuple[int, ...]:
 def _bounds(axes: Axes, looks: Sequence[Body], plan: Body, body: Body, tall: float) -> None:
     used = [look for look in looks if look.get("spends") and look.get("boundary") is not None]
     redrawn = [look for look in looks if not look.get("spends") and look.get("redrawn_boundary") is not None]
+    futile = [look for look in looks if look.get("futility") is not None]
+    dashed: Any = {"color": style.INK, "lw": 1.4, "ls": (0, (6, 2)), "zorder": 3}
     for sign in _signs(plan, body):
-        x = [look["fraction"] for look in used]
-        axes.plot(
-            x, [sign * look["boundary"] for look in used], color=style.INK, lw=1.4, ls=(0, (6, 2)), zorder=3
-        )
-        for look in used:
-            y = sign * look["boundary"]
-            if abs(y) <= tall:
-                axes.plot([look["fraction"]], [y], "_", ms=13, mew=2, color=style.INK, zorder=3)
-        for look in redrawn:
-            axes.plot(
-                [look["fraction"]], [sign * look["redrawn_boundary"]], "_", ms=13, mew=1.2, color=style.MUTED
-            )
+        # An amendment opens a new ledger: its bounds are not a continuation of the old ones.
+        for ledger in dict.fromkeys(look.get("plan_digest") for look in used):
+            part = [look for look in used if look.get("plan_digest") == ledger]
+            axes.plot([k["fraction"] for k in part], [sign * k["boundary"] for k in part], **dashed)
+        inside = [look for look in used if look["boundary"] <= tall]
+        _bars(axes, [(k["fraction"], sign * k["boundary"]) for k in inside], style.INK, 2.0)
+        _bars(axes, [(k["fraction"], sign * k["redrawn_boundary"]) for k in redrawn], style.MUTED, 1.2)
+        line = [(k["fraction"], sign * k["futility"]) for k in futile]
+        axes.plot([x for x, _ in line], [y for _, y in line], color=style.MUTED, lw=1.1, ls=(0, (3, 2, 1, 2)))
 
 
-def _path(axes: Axes, looks: Sequence[Body], tall: float) -> None:
+def _bars(axes: Axes, places: Sequence[tuple[float, float]], colour: str, weight: float) -> None:
+    x, y = [place[0] for place in places], [place[1] for place in places]
+    axes.plot(x, y, "_", ms=13, mew=weight, color=colour, zorder=3)
+
+
+def _path(axes: Axes, looks: Sequence[Body]) -> None:
     axes.plot([k["fraction"] for k in looks], [k["z"] for k in looks], color=style.ACCENT, lw=1.8, zorder=4)
+    size = 8.0 if len(looks) < 14 else 6.0
     for look in looks:
-        marker, filled = verdict_marker(look["verdict"])
-        axes.plot(
-            [look["fraction"]],
-            [look["z"]],
-            marker,
-            ms=8,
-            mfc=style.ACCENT if filled else style.PAPER,
-            mec=style.ACCENT,
-            mew=1.5,
-            zorder=5,
-        )
+        marker = marker_of(look["verdict"], style.ACCENT, size)
+        axes.plot([look["fraction"]], [look["z"]], zorder=5, **marker)
     for numbers, x, z, outside in _numbered(axes, looks):
         axes.annotate(
             ", ".join(numbers),
@@ -161,7 +157,8 @@ def _numbered(axes: Axes, looks: Sequence[Body]) -> list[tuple[list[str], float,
     for look in looks:
         x, z, crossed = look["fraction"], look["z"], look["verdict"] in CROSSED
         for i, (numbers, at, level, outside) in enumerate(groups):
-            near = abs(at - x) < 0.035 * width and abs(level - z) < 0.09 * height
+            room = (0.025 + 0.011 * len(numbers)) * width
+            near = abs(at - x) < room and abs(level - z) < 0.09 * height and len(numbers) < 4
             if near and outside == crossed:
                 groups[i] = ([*numbers, str(look["number"])], at, level, outside)
                 break
@@ -170,33 +167,20 @@ def _numbered(axes: Axes, looks: Sequence[Body]) -> list[tuple[list[str], float,
     return groups
 
 
-def _key(axes: Axes) -> None:
+def _key(axes: Axes, looks: Sequence[Body], hindsight: Sequence[Body]) -> None:
     from matplotlib.lines import Line2D
 
+    path: Any = {"color": style.ACCENT, "lw": 1.8, "marker": "o", "mfc": style.PAPER}
     handles = [
-        Line2D(
-            [], [], color=style.ACCENT, lw=1.8, marker="o", mfc=style.PAPER, label="looks as they happened"
-        ),
+        Line2D([], [], label="looks as they happened", **path),
         Line2D([], [], color=style.INK, lw=1.4, ls=(0, (6, 2)), label="boundary as used"),
-        Line2D([], [], color=style.MUTED, ls="none", marker="_", ms=11, label="redrawn, no alpha spent"),
-        Line2D(
-            [],
-            [],
-            color=style.MUTED,
-            lw=1.1,
-            ls=(0, (1, 1.8)),
-            marker=".",
-            label="hindsight, by publication date",
-        ),
     ]
-    axes.legend(
-        handles=handles,
-        loc="lower right",
-        bbox_to_anchor=(1.0, 1.06),
-        ncols=len(handles),
-        frameon=False,
-        fontsize=8,
-        handlelength=2.2,
-        columnspacing=1.4,
-        borderaxespad=0.2,
-    )
+    if any(not k.get("spends") and k.get("redrawn_boundary") is not None for k in looks):
+        bar: Any = {"color": style.MUTED, "ls": "none", "marker": "_", "ms": 11}
+        handles.append(Line2D([], [], label="redrawn, no alpha spent", **bar))
+    if any(look.get("futility") is not None for look in looks):
+        handles.append(Line2D([], [], color=style.MUTED, lw=1.1, ls=(0, (3, 2, 1, 2)), label="futility"))
+    if hindsight:
+        dots: Any = {"color": style.MUTED, "lw": 1.1, "ls": (0, (1, 1.8)), "marker": "."}
+        handles.append(Line2D([], [], label="hindsight, by publication date", **dots))
+    style.key(axes, handles, lift=1.06)

@@ -11,12 +11,14 @@ from __future__ import annotations
 import io
 import math
 import re
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 from xml.sax.saxutils import escape
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
+    from matplotlib.lines import Line2D
 
 INK = "#1b2b2f"
 MUTED = "#5b6a6e"
@@ -185,6 +187,21 @@ def end_words(axes: Axes, name: str, up: str, down: str, *, below: float) -> Non
     axes.text(0.0, 1.1, name, transform=axes.transAxes, color=MUTED, va="bottom")
     axes.text(0.0, 1.02, up, transform=axes.transAxes, color=MUTED, va="bottom", fontsize=8.5)
     axes.text(0.0, below, down, transform=axes.transAxes, color=MUTED, va="top", fontsize=8.5)
+
+
+def key(axes: Axes, handles: Sequence[Line2D], *, lift: float) -> None:
+    """Put the key in one line above the drawing."""
+    axes.legend(
+        handles=handles,
+        loc="lower right",
+        bbox_to_anchor=(1.0, lift),
+        ncols=len(handles),
+        frameon=False,
+        fontsize=8,
+        handlelength=1.8,
+        columnspacing=1.3,
+        borderaxespad=0.2,
+    )
 
 
 def at_most(text: str, length: int) -> str:
