@@ -2,7 +2,7 @@
 
 Run with the address of an empty store. For each place the append is made by a child process, which kills
 itself there; then this process looks at the store and lays the entries down again. One line of JSON for each
-place; a place after the end of the append ends the run, with a last look.
+place; after a place beyond the end of the append comes a last one, killed when the commit is done.
 """
 
 from __future__ import annotations
@@ -38,12 +38,12 @@ def entries(place: int) -> list[NewEntry]:
     ]
 
 
-def append_and_die(target: str, place: int) -> None:
-    """Append in this process and kill it at the place; return when the append ends before."""
+def append_and_die(target: str, place: int, *, after: bool) -> None:
+    """Append in this process and kill it at the place, or after the commit; return if it ends before."""
     steps = count()
 
     def step(*_: Any) -> None:
-        if next(steps) == place:
+        if next(steps) == place and not after:
             os.kill(os.getpid(), signal.SIGKILL)
 
     opened = store.open_store(target)
@@ -51,7 +51,8 @@ def append_and_die(target: str, place: int) -> None:
     for name in ("before_cursor_execute", "after_cursor_execute", "commit"):
         event.listen(engine, name, step)
     opened.append(entries(place), known_at=MOMENT)
-    step()  # committed, and nobody was told
+    if after:  # committed, and nobody was told
+        os.kill(os.getpid(), signal.SIGKILL)
 
 
 def look(opened: EvidenceStore) -> dict[str, Any]:
@@ -64,21 +65,21 @@ def look(opened: EvidenceStore) -> dict[str, Any]:
 
 def main(target: str) -> None:
     """Go through all places."""
+    after = False
     for place in count():
         child = os.fork()
         if child == 0:
-            append_and_die(target, place)
+            append_and_die(target, place, after=after)
             os._exit(0)
         _, status = os.waitpid(child, 0)
+        killed = os.WIFSIGNALED(status)
         with store.open_store(target) as opened:
             left = look(opened)
             added = opened.append(entries(place), known_at=MOMENT)
-            line = {"killed": os.WIFSIGNALED(status), "added": len(added), "left": left}
-            if not line["killed"]:
-                line["after"] = look(opened)
-        print(json.dumps(line), flush=True)
-        if not line["killed"]:
+        print(json.dumps({"killed": killed, "added": len(added), "left": left}), flush=True)
+        if after:
             return
+        after = not killed
 
 
 if __name__ == "__main__":
