@@ -33,6 +33,7 @@ from treering.terms import (
 )
 
 Identifier = Annotated[str, Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9._-]{0,63}$")]
+Text = Annotated[str, Field(min_length=1)]
 PartT = TypeVar("PartT", bound="Part")
 Share = Annotated[float, Field(ge=0, le=1)]
 
@@ -47,7 +48,7 @@ class Person(Part):
     """One member of the review team."""
 
     id: Identifier
-    name: str
+    name: Text
     roles: tuple[PersonRole, ...]
     own_trials: tuple[Identifier, ...] = ()
 
@@ -69,14 +70,14 @@ class Monitoring(Part):
     """How one outcome is monitored; ``effect`` is on the natural scale (a ratio, or a difference)."""
 
     effect: float
-    effect_reason: str
+    effect_reason: Text
     alpha: Annotated[float, Field(gt=0, lt=0.5)] = 0.05
     sides: Literal[1, 2] = 2
     power: Annotated[float, Field(gt=0, lt=1)] = 0.9
     spending: Spending = Spending.OBRIEN_FLEMING
     spending_parameter: float | None = None
     diversity: Annotated[float, Field(ge=0, lt=1)] = 0.0
-    diversity_reason: str
+    diversity_reason: Text
     futility: bool = False
     tau2_range: tuple[Annotated[float, Field(ge=0)], ...] = (0.0,)
     prior_sd: Annotated[float, Field(gt=0)] | None = None
@@ -86,8 +87,8 @@ class Outcome(Part):
     """One outcome of the review; each is one synthesis."""
 
     id: Identifier
-    title: str
-    question: str
+    title: Text
+    question: Text
     measure: Measure
     role: OutcomeRole
     better: Better
@@ -119,8 +120,8 @@ class Outcome(Part):
                 raise ValueError("a harm has no futility stop: set monitoring.futility to false")
             if self.pooling.method != "inverse-variance":
                 raise ValueError(
-                    "looks are defined for inverse-variance pooling; for rare events use measure "
-                    "'peto-odds-ratio' with model 'common', which is inverse-variance pooling of Peto's estimate"
+                    "looks are defined for inverse-variance pooling; for rare events use measure 'peto-odds-"
+                    "ratio' with model 'common', which is inverse-variance pooling of Peto's estimate"
                 )
         for name, value in pairs:
             if self.is_ratio and value <= 0:
@@ -155,7 +156,7 @@ class Amendment(Part):
     date: date
     author: Identifier
     clauses: tuple[str, ...]
-    reason: str
+    reason: Text
     results_seen: bool
 
 
@@ -163,10 +164,10 @@ class ReviewHead(Part):
     """What the review is."""
 
     id: Identifier
-    title: str
-    question: str
-    intervention: str
-    comparator: str
+    title: Text
+    question: Text
+    intervention: Text
+    comparator: Text
     invented: bool = False
     registration: str = ""
     protocol_link: str = ""
@@ -245,7 +246,7 @@ class Member(Part):
     """One panel member: what they follow and how they are told."""
 
     id: Identifier
-    name: str
+    name: Text
     follows: tuple[str, ...] = ("all",)
     events: tuple[EventClass, ...] = tuple(EventClass)
     channel: Literal["file", "email", "webhook", "apprise"] = "file"
@@ -266,16 +267,36 @@ class Panel(Part):
     members: tuple[Member, ...] = ()
 
 
+#: Faults of the shape of a file, in plain words; the library's own words speak of patterns and tuples.
+_PLAIN_WORDS = {
+    "missing": "this field is missing",
+    "extra_forbidden": "there is no such field",
+    "string_too_short": "this field is empty",
+    "string_pattern_mismatch": "write a short name of letters, digits, dots, dashes or underscores",
+}
+
+
 def _sentences(error: ValidationError) -> list[str]:
     """Turn validation faults into one sentence each, with the place in the file."""
+    faults = error.errors()
+    lists = {fault["loc"][0] for fault in faults if len(fault["loc"]) > 1}
     sentences = []
-    for fault in error.errors():
-        place = ".".join(str(step) for step in fault["loc"]) or "the file"
-        reason = fault["msg"].removeprefix("Value error, ")
+    for fault in faults:
+        if fault["type"] == "too_short" and fault["loc"][0] in lists:
+            continue  # the list counts as short only because its items have the faults named beside this one
         shown = fault.get("input")
-        found = f" (found {shown!r})" if isinstance(shown, str | int | float | bool) else ""
-        sentences.append(f"{place}: {reason}{found}")
+        reason = _PLAIN_WORDS.get(fault["type"], fault["msg"].removeprefix("Value error, "))
+        if shown == "" and fault["type"] == "string_pattern_mismatch":
+            reason = f"this field is empty: {reason}"
+        found = f" (found {shown!r})" if shown != "" and isinstance(shown, str | int | float | bool) else ""
+        sentences.append(f"{_place(fault['loc'])}: {reason}{found}")
     return sentences
+
+
+def _place(steps: tuple[int | str, ...]) -> str:
+    """Name a place as people count: the first of [[people]] is people 1."""
+    words = "".join(f" {step + 1}" if isinstance(step, int) else f".{step}" for step in steps)
+    return words.removeprefix(".") or "the file"
 
 
 def _read_toml(path: Path) -> tuple[str, dict[str, Any]]:
@@ -296,8 +317,10 @@ def _read(path: Path, shape: type[PartT]) -> PartT:
         return shape.model_validate(data)
     except ValidationError as error:
         faults = _sentences(error)
+        listed = "".join(f"\n    {fault}." for fault in faults)
+        many = "1 fault" if len(faults) == 1 else f"{len(faults)} faults"
         raise ProtocolError(
-            "; ".join(faults) + ".", file=str(path), next_step="Correct the named fields and run again."
+            f"{many}; correct what is named and run again.{listed}", file=str(path)
         ) from error
 
 

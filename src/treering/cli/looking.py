@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from datetime import date
 from pathlib import Path
 from typing import Any
 
@@ -15,8 +16,8 @@ def history(
     trial: str | None = None,
     person: str | None = None,
     outcome: str | None = None,
-    since: str | None = None,
-    until: str | None = None,
+    since: date | None = None,
+    until: date | None = None,
     json: bool = False,
 ) -> int:
     """List the versions; with a filter, list the entries it finds.
@@ -27,8 +28,8 @@ def history(
         The review folder.
     trial, person, outcome : str, optional
         Show the entries about a trial, by a person, about an outcome.
-    since, until : str, optional
-        ISO dates between which the entries became known.
+    since, until : date, optional
+        ISO dates, 2026-01-31, between which the entries became known.
     json : bool
         Print JSON.
     """
@@ -36,7 +37,14 @@ def history(
 
     with _store(folder) as store:
         if any((trial, person, outcome, since, until)):
-            rows = entry_rows(store, trial=trial, person=person, outcome=outcome, since=since, until=until)
+            rows = entry_rows(
+                store,
+                trial=trial,
+                person=person,
+                outcome=outcome,
+                since=since and since.isoformat(),
+                until=until and until.isoformat(),
+            )
             columns = {
                 "seq": "entry",
                 "known_at": "known",
@@ -61,6 +69,8 @@ def history(
         say_json(rows)
     else:
         say_table(rows, columns)
+        if not rows:
+            remark("Nothing in the store fits.")
     return EXIT_DONE
 
 

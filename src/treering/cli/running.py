@@ -89,7 +89,7 @@ def template(
 
     text = blank_form(read_review(folder).protocol, trial, extractor, form)
     if output is None:
-        say(text)
+        say(text.rstrip("\n"))
     else:
         with output.open("x", encoding="utf-8") as file:
             file.write(text)
@@ -161,8 +161,9 @@ def schedule(folder: Path = Path(), /, *, day: str = "Thursday", hour: int = 6, 
     from treering_flows.engine import prepare_engine
 
     prepare_engine(verbose=verbose)
-    from treering_flows.schedule import serve_weekly
+    from treering_flows.schedule import cron_of, serve_weekly
 
+    cron_of(day, hour)  # a time that is none is told before anything starts
     remark(f"Updates every {day} at {hour:02d}:00 UTC until stopped. The evidence store has its own lock.")
     serve_weekly(folder.resolve(), day=day, hour=hour)
     return EXIT_DONE
@@ -214,6 +215,7 @@ def _preview_lines(found: dict[str, Any]) -> list[str]:
     for item in found["returned"]:
         lines += [f"  {fault}" for fault in item["faults"]]
     lines += [f"  verified: {item['trial']}, {item['outcome']}" for item in found["verified"]]
+    lines += [f"  look at: {text}" for text in found["remarks"]]
     lines += [f"  waits: {item['trial']}, {item['outcome']}: {item['why']}" for item in found["waiting"]]
     lines.append(
         "An update would lay down a new version."

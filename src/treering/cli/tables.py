@@ -25,7 +25,9 @@ def read_table(file: Path) -> pd.DataFrame:
 
     try:
         table = pd.read_csv(file)
-    except (OSError, ValueError) as error:
+    except OSError as error:
+        raise IntakeError(f"the table can't be read: {error.strerror}.", file=str(file)) from error
+    except ValueError as error:
         raise IntakeError(f"the table can't be read: {error}.", file=str(file)) from error
     if table.empty:
         raise IntakeError("the table holds no trial.", file=str(file), expected="one row per trial")
