@@ -4,9 +4,11 @@ from __future__ import annotations
 
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import cast
 
 from prefect import flow, serve
 from prefect.client.schemas.objects import ConcurrencyLimitConfig, ConcurrencyLimitStrategy
+from prefect.deployments.runner import RunnerDeployment
 from prefect.schedules import Cron
 
 from treering.errors import ProtocolError
@@ -44,12 +46,16 @@ def serve_weekly(folder: Path, *, day: str, hour: int) -> None:
 
     A run that would overlap another is cancelled; the evidence store has its own lock besides.
     """
-    deployment = scheduled_update.to_deployment(
-        name=f"weekly-{folder.name}",
-        parameters={"folder": str(folder)},
-        schedule=Cron(cron_of(day, hour), timezone="UTC"),
-        concurrency_limit=ConcurrencyLimitConfig(
-            limit=1, collision_strategy=ConcurrencyLimitStrategy.CANCEL_NEW
+    # Outside an event loop the engine's call answers at once; its type also covers the awaited form.
+    deployment = cast(
+        RunnerDeployment,
+        scheduled_update.to_deployment(
+            name=f"weekly-{folder.name}",
+            parameters={"folder": str(folder)},
+            schedule=Cron(cron_of(day, hour), timezone="UTC"),
+            concurrency_limit=ConcurrencyLimitConfig(
+                limit=1, collision_strategy=ConcurrencyLimitStrategy.CANCEL_NEW
+            ),
         ),
     )
     serve(deployment, pause_on_shutdown=False)

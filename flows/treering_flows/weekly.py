@@ -82,9 +82,11 @@ def weekly_update(folder: str, day: str, as_of: datetime | None = None) -> Summa
     with steps.one_writer(context):
         taken = verify(context, read_intake(context))
         basis = append(context, taken)
-        outcomes = [] if basis is None else [outcome.id for outcome in basis.protocol.outcomes]
-        analyses = {outcome: analyse(basis, outcome) for outcome in outcomes}
-        changes = {} if basis is None else compare(basis, analyses)
+        analyses: Analyses = {}
+        changes: dict[str, dict[str, Any]] = {}
+        if basis is not None:
+            analyses = {outcome.id: analyse(basis, outcome.id) for outcome in basis.protocol.outcomes}
+            changes = compare(basis, analyses)
         publish(context, basis, analyses, changes)
         summary = steps.step_close(context, taken, notify(context))
     _show(summary)

@@ -88,7 +88,7 @@ def boundaries(
     if json:
         say_json(found)
         return EXIT_DONE
-    rows = table.looks.to_dict(orient="records")
+    rows = [{str(name): value for name, value in row.items()} for row in table.looks.to_dict("records")]
     say_table(rows, {str(name): str(name).replace("_", " ") for name in table.looks.columns})
     for name, value in table.required.items():
         say(f"{name.replace('_', ' ')}: {value:.6g}")

@@ -42,8 +42,8 @@ def history(
                 trial=trial,
                 person=person,
                 outcome=outcome,
-                since=since and since.isoformat(),
-                until=until and until.isoformat(),
+                since=since.isoformat() if since else None,
+                until=until.isoformat() if until else None,
             )
             columns = {
                 "seq": "entry",

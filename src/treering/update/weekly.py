@@ -146,10 +146,10 @@ def step_notify(context: RunContext) -> tuple[str, ...]:
                 context.day,
                 panel=context.review.panel,
             )
-            if sent.entry is None:
-                failures.append(sent.failure)
-            else:
+            if sent.entry is not None:
                 store.append([sent.entry], known_at=context.known_at)
+            if sent.failure is not None:
+                failures.append(sent.failure)
     return tuple(failures)
 
 
