@@ -173,6 +173,12 @@ def test_values_that_do_not_fit_their_column_are_refused(evidence, study, moment
     assert evidence.head().size == 0
 
 
+@pytest.mark.parametrize("wrong", [{"by": None}, {"by": 7}, {"by": "a\x00b"}, {"reason": 7}], ids=str)
+def test_person_and_reason_are_text(evidence, study, moment, wrong):
+    with pytest.raises(StoreError, match=rf"study study/T1: {next(iter(wrong))} must be text"):
+        evidence.append([study("T1", **wrong)], known_at=moment)
+
+
 def test_key_of_another_kind_is_refused(evidence, study, moment):
     with pytest.raises(StoreError, match="begins with study/"):
         evidence.append([replace(study("T1"), key="result/T1")], known_at=moment)

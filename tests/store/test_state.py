@@ -160,3 +160,32 @@ def test_typed_rows_hold_the_body_with_real_types(evidence, moment):
     (row,) = evidence.typed_rows(EntryKind.RISK_OF_BIAS)
     assert row == {"entry": 0, "support": None} | body
     assert list(row) == ["entry", *BODY_FIELDS[EntryKind.RISK_OF_BIAS]]
+
+
+def test_state_after_entries_is_the_one_they_would_leave(history, study, moment):
+    corrected = study("T1", true_at="2026-05-01", randomised=117, replaces=3)
+    entries = [study("T5"), corrected, study("T0", true_at="1999-01-01")]
+    ahead = history.state().after(entries, known_at=moment)
+    assert trials(ahead) == [("T0", 120), ("T1", 117), ("T5", 120)]
+    assert history.head().size == len(history.state()) == 8
+    history.append(entries, known_at=moment)
+    assert [(entry.seq, entry.key, entry.body) for entry in history.state().everything()] == [
+        (entry.seq, entry.key, entry.body) for entry in ahead.everything()
+    ]
+
+
+def test_state_after_nothing_new_is_the_same(history, study):
+    state = history.state()
+    assert state.after([study("T0", true_at="1999-01-01")], known_at=MAY) is state
+
+
+@pytest.mark.parametrize("wrong", [{"replaces": None, "year": 1}, {"replaces": 3, "year": "x"}], ids=str)
+def test_state_after_entries_refuses_what_the_ledger_would(history, study, wrong):
+    with pytest.raises(StoreError):
+        history.state().after([study("T1", **wrong)], known_at=MAY)
+
+
+def test_state_without_entries_shows_what_they_replaced(history):
+    state = history.state().without(lambda entry: entry.seq == 3)
+    assert trials(state) == [("T0", 120), ("T1", 120)]
+    assert [entry.seq for entry in state.everything()] == [0, 1, 2, 4, 5, 6, 7]

@@ -106,13 +106,13 @@ def plan(entries: Iterable[NewEntry], *, known_at: str, tail: Tail, tips: Mutabl
     """
     batch = Batch()
     for given in entries:
-        check_key(given.kind, given.key)
+        _check_form(given)
         tip = tips.get(given.key)
         entry = _with_head(given, tail) if given.kind == EntryKind.VERSION and tip is None else given
         body = body_bytes(entry)
         if tip is not None and _is_repeat(entry, body, tip):
             continue
-        _check(entry, tip, known_at, tail)
+        _check_place(entry, tip, known_at, tail)
         _lay_down(entry, body, known_at, tail, tips, batch)
     return batch
 
@@ -145,45 +145,42 @@ def provisional(
     """
     rows: list[LedgerRow] = []
     for entry in entries:
-        check_key(entry.kind, entry.key)
+        _check_form(entry)
         tip = tips.get(entry.key)
         body = body_bytes(entry)
         if tip is not None and _is_repeat(entry, body, tip):
             continue
         chain.check_replacement(entry, tip)
-        seq, kind = size + len(rows), str(entry.kind)
+        seq = size + len(rows)
+        project(entry.kind, seq, entry.body, key=entry.key)
         canonical = entry_bytes(entry, body, seq=seq, known_at=known_at, previous="")
-        cause = None if entry.cause is None else str(entry.cause)
-        rows.append(
-            (
-                seq,
-                kind,
-                entry.key,
-                entry.true_at,
-                known_at,
-                str(entry.by),
-                cause,
-                entry.reason,
-                entry.replaces,
-                b"",
-                canonical,
-            )
-        )
-        tips[entry.key] = Tip(seq, kind, entry.true_at, canonical)
+        rows.append(_row(entry, seq, known_at, b"", canonical))
+        tips[entry.key] = Tip(seq, str(entry.kind), entry.true_at, canonical)
     return rows
 
 
-def _check(entry: NewEntry, tip: Tip | None, known_at: str, tail: Tail) -> None:
+def _check_form(entry: NewEntry) -> None:
+    """Check what can be told from the entry alone."""
+    check_key(entry.kind, entry.key)
     chain.true_date(entry.true_at, key=entry.key)
+    for name, text in (("by", entry.by), ("reason", entry.reason)):
+        absent = text is None and name == "reason"
+        if not absent and (not isinstance(text, str) or "\x00" in text):
+            raise StoreError(
+                f"{entry.kind} {entry.key}: {name} must be text.",
+                found=repr(text),
+                next_step="Correct it and append again; nothing was stored.",
+            )
+
+
+def _check_place(entry: NewEntry, tip: Tip | None, known_at: str, tail: Tail) -> None:
+    """Check that the entry may follow what is there."""
     chain.check_known(known_at, tail.known_at)
     if tip is not None and tip.kind == EntryKind.VERSION:
         chain.check_unversioned(entry)
     if entry.kind == EntryKind.VERSION:
         chain.check_version(entry, last=tail.last_version, size=tail.size, root=tail.frontier.root().hex())
     chain.check_replacement(entry, tip)
-    for name, text in (("by", entry.by), ("reason", entry.reason)):
-        if text is not None and (not isinstance(text, str) or "\x00" in text):
-            raise StoreError(f"{entry.kind} {entry.key}: {name} must be text.", found=repr(text))
 
 
 def _lay_down(
@@ -193,30 +190,30 @@ def _lay_down(
     seq = tail.frontier.size
     canonical = entry_bytes(entry, body, seq=seq, known_at=known_at, previous=tail.hash)
     digest = sha256(canonical).digest()
-    cause = None if entry.cause is None else str(entry.cause)
-    kind = str(entry.kind)
-    batch.ledger.append(
-        (
-            seq,
-            kind,
-            entry.key,
-            entry.true_at,
-            known_at,
-            str(entry.by),
-            cause,
-            entry.reason,
-            entry.replaces,
-            digest,
-            canonical,
-        )
-    )
+    batch.ledger.append(_row(entry, seq, known_at, digest, canonical))
     row = project(entry.kind, seq, entry.body, key=entry.key)
     batch.typed.setdefault(entry.kind, []).append(row)
     batch.nodes += [node for node in tail.frontier.add(leaf_hash(canonical)) if node[0] >= KEPT_LEVEL]
     tail.hash, tail.known_at = digest.hex(), known_at
     if entry.kind == EntryKind.VERSION:
         tail.last_version += 1
-    tips[entry.key] = Tip(seq, kind, entry.true_at, canonical)
+    tips[entry.key] = Tip(seq, str(entry.kind), entry.true_at, canonical)
+
+
+def _row(entry: NewEntry, seq: int, known_at: str, digest: bytes, canonical: bytes) -> LedgerRow:
+    return (
+        seq,
+        str(entry.kind),
+        entry.key,
+        entry.true_at,
+        known_at,
+        str(entry.by),
+        None if entry.cause is None else str(entry.cause),
+        entry.reason,
+        entry.replaces,
+        digest,
+        canonical,
+    )
 
 
 def _is_repeat(entry: NewEntry, body: bytes, tip: Tip) -> bool:
