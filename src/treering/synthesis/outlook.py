@@ -36,11 +36,10 @@ def ongoing_trials(
         body = entry.body
         if outcome.id in (body.get("outcomes") or [outcome.id]) and body["trial"] not in reported:
             planned = body.get("planned")
-            known = planned is not None and per_participant is not None
             trials.append(
                 OngoingTrial(
                     trial=body["trial"],
-                    information=planned * per_participant if known else None,
+                    information=None if planned is None or not per_participant else planned * per_participant,
                     end=body.get("expected_end"),
                 )
             )
