@@ -41,7 +41,7 @@ def value_words(value: Any) -> str:
     if isinstance(value, float):
         return number(value, 0) if value.is_integer() else f"{value:.6g}".replace("-", MINUS)
     if isinstance(value, Mapping):
-        return "; ".join(f"{field_words(k)}: {value_words(v)}" for k, v in value.items()) or "none"
+        return "; ".join(f"{field_words(k)}: {value_words(v)}" for k, v in sorted(value.items())) or "none"
     if isinstance(value, list | tuple):
         return "; ".join(value_words(v) for v in value) or "none"
     return str(value)
@@ -74,7 +74,9 @@ def side_words(values: Mapping[str, Any], side: str) -> str:
         "not reported" when the trial reports no number of that arm.
     """
     own = {
-        k.removeprefix(f"{side}_"): v for k, v in values.items() if k.startswith(f"{side}_") and v is not None
+        name.removeprefix(f"{side}_"): value
+        for name, value in _in_order(values)
+        if name.startswith(f"{side}_") and value is not None
     }
     if "events" in own and "total" in own:
         parts = [f"{value_words(own.pop('events'))} of {value_words(own.pop('total'))}"]
@@ -87,9 +89,20 @@ def side_words(values: Mapping[str, Any], side: str) -> str:
 
 def other_words(values: Mapping[str, Any]) -> str:
     """Return the numbers of a trial that belong to no arm, as one text; empty when there are none."""
-    rest = {
-        k: v
-        for k, v in values.items()
-        if not k.startswith(("intervention_", "comparator_")) and v is not None
-    }
-    return ", ".join(f"{field_words(name)} {value_words(value)}" for name, value in rest.items())
+    return ", ".join(
+        f"{field_words(name)} {value_words(value)}"
+        for name, value in _in_order(values)
+        if not name.startswith(("intervention_", "comparator_")) and value is not None
+    )
+
+
+#: Order of reading; a stored mapping has its fields in the order of the alphabet.
+_ORDER = ("events", "mean", "sd", "time", "estimate", "log_estimate", "ci_low", "ci_high", "standard_error")
+
+
+def _in_order(values: Mapping[str, Any]) -> list[tuple[str, Any]]:
+    def place(name: str) -> tuple[int, str]:
+        plain = name.removeprefix("intervention_").removeprefix("comparator_")
+        return (_ORDER.index(plain) if plain in _ORDER else len(_ORDER), name)
+
+    return sorted(values.items(), key=lambda pair: place(pair[0]))
