@@ -86,12 +86,14 @@ def chunks(counts: IntArray) -> Iterator[slice]:
     slice
         Consecutive syntheses; at least one, however long it is.
     """
+    pieces = -(-int(counts.sum()) // CHUNK_NUMBERS)
+    fill = max(int(counts.max()), -(-int(counts.sum()) // pieces))  # pieces of like size share the cores well
     start = 0
     while start < counts.size:
         # The rectangle is as tall as its longest synthesis, so the running maximum decides the width.
-        window = counts[start : start + CHUNK_NUMBERS]
+        window = counts[start : start + fill]
         height = np.maximum.accumulate(window)
-        fits = height * np.arange(1, window.size + 1) <= CHUNK_NUMBERS
+        fits = height * np.arange(1, window.size + 1) <= fill
         width = max(1, int(np.argmin(fits)) if not fits.all() else window.size)
         yield slice(start, start + width)
         start += width

@@ -32,11 +32,11 @@ from treering.pooling.qroot import newton_step
 from treering.pooling.result import FloatArray
 
 GRID_STEP = 1.0
-DENSER = 8
+DENSER = 4
 LEVEL = 0.4
 NEAR = 0.5
 MAX_STEPS = 200
-RELATIVE_STEP = 1e-7
+RELATIVE_STEP = 1e-6
 TINY = np.finfo(np.float64).tiny
 
 
@@ -179,13 +179,26 @@ def _maxima(
     if which.size == 0:
         return np.zeros(0), which, ~above[0]
     low, high = grid[at, which], grid[at + 1, which]
-    # B / A is nearly linear in tau2 (exactly so for equal variances): a straight line gives the first guess.
-    under = 1.0 - b[at, which] / a[at, which]
-    over = b[at + 1, which] / np.maximum(a[at + 1, which], TINY) - 1.0
-    start = low + (high - low) * under / (under + over)
+    start = _first_guess(grid, a, b, at, which)
     every = which.size == batch.k.size and bool((which == np.arange(which.size)).all())
     part = batch if every else batch.columns(which)
     return _refine(part, low, high, start, restricted), which, ~above[0]
+
+
+def _first_guess(
+    grid: FloatArray, a: FloatArray, b: FloatArray, at: npt.NDArray[np.intp], which: npt.NDArray[np.intp]
+) -> FloatArray:
+    """Where B / A = 1 by inverse quadratic interpolation through the bracket and the point beside it.
+
+    B / A is nearly linear in tau2, exactly so for equal variances.
+    """
+    beside = np.where(at > 0, at - 1, at + 2)
+    t0, t1, t2 = (grid[row, which] for row in (at, at + 1, beside))
+    r0, r1, r2 = (b[row, which] / np.maximum(a[row, which], TINY) - 1.0 for row in (at, at + 1, beside))
+    straight = (t1 - t0) / (r1 - r0)
+    bend = ((t2 - t1) / (r2 - r1) - straight) / (r2 - r0)
+    guess = t0 - r0 * straight + r0 * r1 * bend
+    return np.where((guess > t0) & (guess < t1), guess, t0 - r0 * straight)
 
 
 def _refine(batch: Batch, low: FloatArray, high: FloatArray, t: FloatArray, restricted: bool) -> FloatArray:
@@ -202,7 +215,7 @@ def _refine(batch: Batch, low: FloatArray, high: FloatArray, t: FloatArray, rest
         t = moved
         if unsettled.size == 0:
             return t
-        if 4 * unsettled.size < t.size:
+        if 2 * unsettled.size < t.size:
             # The few slow ones go on alone.
             rest = batch.columns(unsettled)
             t[unsettled] = _refine(rest, low[unsettled], high[unsettled], t[unsettled], restricted)

@@ -16,8 +16,8 @@ from treering.pooling.moments import Fit, dot, fit
 from treering.pooling.result import FloatArray
 
 MAX_STEPS = 100
-RELATIVE_STEP = 1e-7
-"""Last step as a fraction of v + tau2. Newton squares the error: the root itself is good to about 1e-13."""
+RELATIVE_STEP = 1e-6
+"""Last step as a fraction of v + tau2. Newton squares the error: the root itself is good to about 1e-12."""
 
 
 def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, t: FloatArray, at_t: Fit) -> FloatArray:
@@ -87,7 +87,7 @@ def _newton(batch: Batch, target: FloatArray, t: FloatArray) -> FloatArray:
         t = moved
         if unsettled.size == 0:
             return t
-        if 4 * unsettled.size < t.size:
+        if 2 * unsettled.size < t.size:
             # The few slow ones go on alone.
             t[unsettled] = _newton(batch.columns(unsettled), target[unsettled], t[unsettled])
             return t
