@@ -10,6 +10,7 @@
     │   └── NotConvergedError  an iteration ended without an answer
     ├── StoreError             the evidence store refused or is damaged
     │   ├── StoreBusyError     another update holds the writer's lock
+    │   ├── NoStoreError       there is no evidence store at that place
     │   ├── CanonicalError     a value has no canonical bytes
     │   ├── LedgerError        an entry breaks a rule of the ledger; one class for each rule
     │   │   ├── EntryGapError     a sequence number is missing or out of order
@@ -144,6 +145,10 @@ class VersionGapError(LedgerError):
 
 class TreeHeadError(LedgerError):
     """Size or root of the Merkle tree differ from what is stated."""
+
+
+class NoStoreError(StoreError):
+    """There is no evidence store at that place."""
 
 
 class AuditError(StoreError):
