@@ -133,7 +133,7 @@ def check_finite_result(columns: Iterable[FloatArray], labels: Sequence[object])
         if bad.any():
             at = int(np.argmax(bad))
             raise AnalysisError(
-                "The numbers are too large or too small to be pooled in double precision.",
+                "The numbers are too large or too small, or too far apart, to be pooled in double precision.",
                 found=f"pooled value {column[at]} for {labels[at]}",
                 next_step="Check the units of estimates and variances.",
             )
