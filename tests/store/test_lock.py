@@ -127,3 +127,12 @@ def test_update_whose_lock_was_lost_stores_nothing_more(cluster, postgres_url, s
         assert opened.head().size == 0
         with opened.exclusive():
             opened.append([study("T1")], known_at=moment)
+
+
+def test_update_whose_lock_file_was_removed_stores_nothing_more(sqlite_evidence, study, moment):
+    lock = Path(sqlite_evidence.place + ".lock")
+    with store.open_store(sqlite_evidence.place) as other, sqlite_evidence.exclusive():
+        lock.unlink()
+        with other.exclusive(), pytest.raises(StoreError, match=r"lock of this update was lost.*removed"):
+            sqlite_evidence.append([study("T1")], known_at=moment)
+    assert sqlite_evidence.head().size == 0

@@ -99,6 +99,15 @@ def test_server_that_is_not_there_is_named(tmp_path):
         store.open_store(f"postgresql+psycopg://nobody@/nothing?host={tmp_path}")
 
 
+def test_database_that_cannot_hold_every_character_is_refused(cluster):
+    engine = create_engine(cluster.url("postgres"), isolation_level="AUTOCOMMIT")
+    with engine.connect() as connection:
+        connection.exec_driver_sql("CREATE DATABASE narrow ENCODING 'LATIN1' LOCALE 'C' TEMPLATE template0")
+    engine.dispose()
+    with pytest.raises(StoreError, match=r"every character.*LATIN1.*UTF8"):
+        store.create(cluster.url("narrow"), review="x")
+
+
 def test_store_from_the_future_is_refused_untouched(target):
     execute(target, "UPDATE alembic_version SET version_num = '9999'")
     with pytest.raises(StoreError, match=r"later version of treering.*9999.*Update treering"):

@@ -176,7 +176,7 @@ def writing(engine: Engine, *, lock: str | None = None) -> Iterator[Connection]:
     Raises
     ------
     StoreError
-        When the database refuses; nothing was stored then.
+        When the database refuses; the transaction is rolled back then.
     """
     options: dict[str, Any] = {_WRITING: True}
     if engine.dialect.name == "postgresql":
@@ -222,7 +222,7 @@ _HINTS: tuple[tuple[tuple[str, ...], str, str], ...] = (
     ),
     (
         ("is full", "diskfull", "no space left", "disk i/o error", "could not extend"),
-        "The disk of the store is full or failing; nothing of this run was stored.",
+        "The disk of the store is full or failing; the entries at hand were not stored.",
         "Free some space and run again; what was stored before is unharmed.",
     ),
     (
@@ -237,8 +237,9 @@ _HINTS: tuple[tuple[tuple[str, ...], str, str], ...] = (
     ),
     (
         ("connection", "server closed", "shutting down", "adminshutdown", "terminating"),
-        "The database server cannot be reached; nothing of this run was stored.",
-        "Check that it runs and that its address in config/review.toml is right, then run again.",
+        "The database server cannot be reached.",
+        "Check that it runs and that its address in config/review.toml is right, then run again: "
+        "what was stored already is not stored twice.",
     ),
 )
 
@@ -270,7 +271,7 @@ def explained(text: str, name: str, action: str) -> StoreError:
         if any(word in seen for word in words):
             return StoreError(message, found=found, next_step=step)
     return StoreError(
-        f"The database refused to {action}; nothing of this run was stored.",
+        f"The database refused to {action}; entries at hand were not stored.",
         found=found,
         next_step="Run treering audit; if it passes, report this fault of the program.",
     )

@@ -1,7 +1,8 @@
 """The lock that lets one update run at a time; it is held by the database and dies with the process.
 
 SQLite: an exclusive transaction on a small database beside the store, so that readers of the store itself
-are never blocked. PostgreSQL: an advisory lock of a session of its own.
+are never blocked; the operating system ends it with the process. PostgreSQL: an advisory lock of a session
+of its own.
 """
 
 from __future__ import annotations
@@ -47,7 +48,7 @@ class SqliteLock:
     """
 
     def __init__(self, store: Path) -> None:
-        path = store.with_name(store.name + ".lock")
+        path = self._path = store.with_name(store.name + ".lock")
         try:
             self._connection = sqlite3.connect(path, timeout=0, isolation_level=None, check_same_thread=False)
         except sqlite3.Error as error:
@@ -59,9 +60,23 @@ class SqliteLock:
             if "locked" in str(error):
                 raise _busy(str(path)) from error
             raise explained(str(error), type(error).__name__, "lock") from error
+        self._file = _identity(path)
 
     def check(self) -> None:
-        """Do nothing: the operating system holds the lock as long as the process lives."""
+        """Check that the file the lock is on is still in its place.
+
+        Raises
+        ------
+        StoreError
+            When someone removed it: another update may have begun on a new one.
+        """
+        if self._file is None or _identity(self._path) != self._file:
+            raise StoreError(
+                "The lock of this update was lost; nothing more is stored.",
+                file=str(self._path),
+                found="its file was removed or replaced",
+                next_step="See that no other update runs, leave the lock file alone and run again.",
+            )
 
     def release(self) -> None:
         """Let the next update begin."""
@@ -120,6 +135,14 @@ class PostgresLock:
             # The session is gone and the lock with it; the server must not see this connection again.
             self._connection.invalidate()
             self._connection.close()
+
+
+def _identity(path: Path) -> tuple[int, int] | None:
+    try:
+        found = path.stat()
+    except OSError:  # it is not there, which is what the caller asks about
+        return None
+    return found.st_dev, found.st_ino
 
 
 def _busy(place: str) -> StoreBusyError:

@@ -74,9 +74,23 @@ def lay_out(engine: Engine, review: str) -> None:
                 file=place_of(engine.url),
                 next_step="Open it, or choose another place for a new one.",
             )
+        _check_encoding(connection)
         migrate(connection)
         values = {"id": 1, "review": review, "format": ENTRY_FORMAT}
         connection.execute(insert(METADATA.tables["store"]), [values])
+
+
+def _check_encoding(connection: Connection) -> None:
+    if connection.dialect.name != "postgresql":
+        return
+    found = connection.exec_driver_sql("SHOW server_encoding").scalar_one()
+    if found != "UTF8":
+        raise StoreError(
+            "The database cannot hold every character.",
+            found=f"encoding {found}",
+            expected="encoding UTF8",
+            next_step="Make the database with ENCODING 'UTF8' and start again.",
+        )
 
 
 def migrate(connection: Connection, *, to: str = HEAD_REVISION) -> None:
