@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from treering.errors import StoreError
+from treering.errors import NoStoreError, StoreError
 from treering.store.connection import engine_for, place_of, reading, set_write_ahead, store_url, writing
 from treering.store.repo import EvidenceStore
 from treering.store.schema import check_revision, lay_out, migrate, revision_of
@@ -80,8 +80,8 @@ def open_store(target: str | Path) -> EvidenceStore:
     return EvidenceStore(engine)
 
 
-def _absent(place: str) -> StoreError:
-    return StoreError(
+def _absent(place: str) -> NoStoreError:
+    return NoStoreError(
         "There is no evidence store here.",
         file=place,
         next_step="Make one with treering start, or correct store in config/review.toml.",

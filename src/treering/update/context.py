@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 
-from treering.errors import ProtocolError, StoreError
+from treering.errors import NoStoreError, ProtocolError
 from treering.protocol import Panel, Protocol, read_panel, read_protocol
 from treering.store import EvidenceStore, create, open_store
 
@@ -102,20 +102,17 @@ def open_evidence(review: Review, *, make: bool = False) -> EvidenceStore:
     Raises
     ------
     StoreError
-        When there is no store, or it cannot be opened.
+        When it cannot be opened; NoStoreError when there is none and `make` is not set.
     ProtocolError
         When the store belongs to another review.
     """
     place = review.store_place
-    is_file = "://" not in place
-    if is_file and not Path(place).exists():
+    try:
+        store = open_store(place)
+    except NoStoreError:
         if not make:
-            raise StoreError(
-                "there is no evidence store yet.", file=place, next_step="Run `treering update` once."
-            )
-        Path(place).parent.mkdir(parents=True, exist_ok=True)
+            raise
         return create(place, review=review.protocol.review.id)
-    store = open_store(place)
     if store.review != review.protocol.review.id:
         store.close()
         raise ProtocolError(

@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
+from treering.errors import NoStoreError
 from treering.store import State
 from treering.terms import EntryKind
 from treering.update.context import open_evidence, read_review
@@ -33,13 +34,11 @@ def preview(folder: Path, known_at: str) -> dict[str, Any]:
         When config or store cannot be used, or the plan changed without an amendment.
     """
     review = read_review(folder)
-    place = review.store_place
-    if "://" not in place and not Path(place).exists():
+    try:
+        with open_evidence(review) as store:
+            state = store.state()
+    except NoStoreError:
         state = State(())
-    else:
-        store = open_evidence(review)
-        state = store.state()
-        store.close()
     taken = verify(review, state, read_intake(review, state, known_at[:10]), known_at)
     after = state.after(taken.entries, known_at=known_at)
     fresh = [entry for entry in after.everything() if entry.seq >= len(state)]
