@@ -211,7 +211,8 @@ def _tell(summary: Summary, indent: str = "") -> None:
 
 
 def _preview_lines(found: dict[str, Any]) -> list[str]:
-    lines = [f"{len(found['files'])} file(s) in intake, {len(found['returned'])} would go back."]
+    files = "1 file" if len(found["files"]) == 1 else f"{len(found['files'])} files"
+    lines = [f"{files} in intake, {len(found['returned']) or 'none'} would go back."]
     for item in found["returned"]:
         lines += [f"  {fault}" for fault in item["faults"]]
     lines += [f"  verified: {item['trial']}, {item['outcome']}" for item in found["verified"]]
