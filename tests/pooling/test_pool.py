@@ -10,7 +10,7 @@ from statsmodels.stats.meta_analysis import combine_effects
 
 from treering.errors import AnalysisError
 from treering.pooling import heterogeneity_p, pool, pool_many
-from treering.pooling.batch import single
+from treering.pooling.batch import chunks, single
 from treering.pooling.inference import log_t_tail
 from treering.pooling.likelihood import log_likelihood
 from treering.pooling.maximum import modes
@@ -233,6 +233,27 @@ def test_pool_many_equals_pool_on_each_synthesis(interval, method):
         assert row[NUMBERS].to_numpy(float) == pytest.approx(numbers(one), rel=1e-9, abs=1e-11, nan_ok=True)
         assert row["weights"] == pytest.approx(one.weights, rel=1e-9)
         assert (row["k"], row["interval"], row["remarks"]) == (one.k, one.interval, one.remarks)
+
+
+def test_a_bulk_cut_into_parts_equals_pool_on_each_synthesis():
+    rng = np.random.default_rng(12)
+    sizes = rng.integers(1, 60, 2500)
+    groups = np.repeat(np.arange(2500), sizes)
+    y, v = rng.normal(size=groups.size), rng.lognormal(size=groups.size)
+    assert len(list(chunks(sizes))) > 1
+    many = pool_many(y, v, groups)
+    assert many["k"].tolist() == sizes.tolist()
+    for name in rng.choice(2500, 60, replace=False):
+        one = pool(y[groups == name], v[groups == name])
+        row = many.loc[name, NUMBERS].to_numpy(float)
+        assert row == pytest.approx(numbers(one), rel=1e-8, abs=1e-10, nan_ok=True)
+        assert many.at[name, "weights"] == pytest.approx(one.weights, rel=1e-8)
+
+
+@given(st.lists(st.integers(1, 40_000), min_size=1, max_size=40))
+def test_parts_of_a_bulk_cover_every_synthesis_once(sizes):
+    parts = list(chunks(np.array(sizes)))
+    assert [at for part in parts for at in range(part.start, part.stop)] == list(range(len(sizes)))
 
 
 def test_z_is_the_normal_quantile_of_the_planned_test(effects_of):
