@@ -270,3 +270,8 @@ def test_a_kept_simulation_stands_beside_the_boundary_and_says_when_it_is_of_ano
 
 def test_an_outcome_without_a_simulation_says_how_to_make_one(html):
     assert "No simulation of this plan is kept" in html[3]
+
+
+def test_risk_of_bias_is_told_by_domain_in_words(pages):
+    part = pages[3].text.split("Risk of bias of each result by domain")[1]
+    assert "Alder 2029 Low Some concerns Low Low Low Some concerns deviations: the carers knew MV, OK" in part

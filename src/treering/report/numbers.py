@@ -157,7 +157,7 @@ def effect(value: float | None, scale: str, measure: str = "") -> str:
     if scale != "log":
         return _apart(shown, 0.0, 3 if "risk-difference" in measure or "arcsine" in measure else 2)
     if shown >= 100:
-        return number(shown, 0)
+        return number(shown, 0) if shown < 100_000 else f"above {number(100_000, 0)}"
     if shown >= 0.1:
         return _apart(shown, 1.0, 2)
     return f"{shown:.2g}" if shown >= 1e-4 else "below 0.0001"

@@ -58,6 +58,7 @@ def outcome_context(view: ReportView, name: str, figures: Mapping[str, str]) -> 
         **_estimate_words(body, view, level),
         **_change_words(body, before, changes),
         **_trial_words(view, body, changes),
+        "bias": bias_rows(view, name),
         **_figures(name, body, before, figures),
         **_monitoring_words(view, outcome, body, before),
         "certainty": next((j for j in view.listed("certainty") if j["outcome"] == name), None),
@@ -156,6 +157,38 @@ def _trial_words(view: ReportView, body: Body, changes: Body) -> dict[str, Any]:
         "marks": margin_marks(changes) if view.version.get("previous") else {},
         "bias_line": ", ".join(f"{judged[word]} {word}" for word in order if judged[word]) or "no trial",
     }
+
+
+#: The domains of RoB 2, in its order, as the store names them.
+DOMAINS = ("randomisation", "deviations", "missing_data", "measurement", "selection")
+
+
+def bias_rows(view: ReportView, name: str) -> list[dict[str, Any]]:
+    """Return the risk-of-bias judgements of one outcome's results, with words for each domain.
+
+    Parameters
+    ----------
+    view : ReportView
+        The version.
+    name : str
+        Synthesis id.
+
+    Returns
+    -------
+    list of dict
+        ``trial``, ``domains`` (five words in order), ``overall``, ``support`` and ``assessors``.
+    """
+    return [
+        {
+            "trial": judgement["trial"],
+            "domains": [(judgement.get("domains") or {}).get(d) or "not judged" for d in DOMAINS],
+            "overall": judgement["overall"],
+            "support": value_words(judgement.get("support") or "none given"),
+            "assessors": ", ".join(judgement.get("assessors") or ()) or "not given",
+        }
+        for judgement in view.listed("bias")
+        if judgement["outcome"] == name
+    ]
 
 
 def arm_words(values: Body) -> tuple[str, str, str]:

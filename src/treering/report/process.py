@@ -184,11 +184,10 @@ def _searches(view: ReportView) -> Table:
             rows.append((source, "never", due, "not given", "not given", "no run in the store"))
             continue
         age = (view.date - date.fromisoformat(run["date"][:10])).days
+        ago = f"{plural(age, 'day')} ago" if age else "the day of this version"
         late = ", overdue" if every and age > every else ""
         outcome = run.get("error") or f"{count(run.get('new_hits'))} new of {count(run.get('hits'))}"
-        rows.append(
-            (source, f"{run['date']}, {age} days ago{late}", due, run.get("strategy"), run.get("by"), outcome)
-        )
+        rows.append((source, f"{run['date']}, {ago}{late}", due, run.get("strategy"), run.get("by"), outcome))
     heads = ("Source", "Last run", "Planned", "Strategy", "By", "Found")
     return _table(
         "Searches",
