@@ -274,4 +274,7 @@ def test_an_outcome_without_a_simulation_says_how_to_make_one(html):
 
 def test_risk_of_bias_is_told_by_domain_in_words(pages):
     part = pages[3].text.split("Risk of bias of each result by domain")[1]
-    assert "Alder 2029 Low Some concerns Low Low Low Some concerns deviations: the carers knew MV, OK" in part
+    assert (
+        "Alder 2029 Low Some concerns Low Low Low Some concerns MV, OK Support: deviations: the carers knew"
+        in part
+    )

@@ -183,12 +183,20 @@ def bias_rows(view: ReportView, name: str) -> list[dict[str, Any]]:
             "trial": judgement["trial"],
             "domains": [(judgement.get("domains") or {}).get(d) or "not judged" for d in DOMAINS],
             "overall": judgement["overall"],
-            "support": value_words(judgement.get("support") or "none given"),
+            "support": support_words(judgement.get("support") or {}),
             "assessors": ", ".join(judgement.get("assessors") or ()) or "not given",
         }
         for judgement in view.listed("bias")
         if judgement["outcome"] == name
     ]
+
+
+def support_words(support: Body) -> str:
+    """Return the support of a judgement; one text given for every domain is said once."""
+    texts = {str(text) for text in support.values()}
+    if len(texts) == 1 and len(support) > 1:
+        return f"every domain: {texts.pop()}"
+    return value_words(support) if support else "none given"
 
 
 def arm_words(values: Body) -> tuple[str, str, str]:
