@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import os
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
@@ -94,7 +94,12 @@ class ReviewFolder:
 
     @staticmethod
     def extraction(
-        trial: str, person: str, counts: tuple[int, int, int, int], *, published: str = "2025-01-01", **fields: Any
+        trial: str,
+        person: str,
+        counts: tuple[int, int, int, int],
+        *,
+        published: str = "2025-01-01",
+        **fields: Any,
     ) -> dict[str, Any]:
         """Return one person's reading."""
         names = ("intervention_events", "intervention_total", "comparator_events", "comparator_total")
@@ -104,9 +109,7 @@ class ReviewFolder:
             "published": published,
             "extractor": person,
             "report": {"id": f"{trial}-main"},
-            "results": [
-                {"outcome": "failed", **dict(zip(names, counts, strict=True)), "locator": "table 2"}
-            ],
+            "results": [{"outcome": "failed", **dict(zip(names, counts, strict=True)), "locator": "table 2"}],
         } | fields
 
     def update(self, day: str) -> Any:
@@ -136,13 +139,13 @@ def review_class() -> type[ReviewFolder]:
 
 
 @pytest.fixture
-def make_review(tmp_path: Path) -> Iterator[Callable[..., ReviewFolder]]:
+def make_review(tmp_path: Path) -> Callable[..., ReviewFolder]:
     """Make review folders."""
 
     def make(plan: str = PLAN, panel: str = PANEL, name: str = "review") -> ReviewFolder:
         return ReviewFolder(tmp_path / name, plan, panel)
 
-    yield make
+    return make
 
 
 @pytest.fixture

@@ -1,4 +1,4 @@
-"""Numbers as they are stored: ten digits, None for what cannot be estimated, the form they have after JSON."""
+"""Numbers as they are stored: ten digits, None when not estimable, the form they have after JSON."""
 
 from __future__ import annotations
 

@@ -41,7 +41,8 @@ def test_quiet_week_lays_down_no_version_and_spends_no_alpha(review: Any) -> Non
     with review.store() as store:
         assert len(store.versions()) == 1
         assert len(store.state().live(EntryKind.LOOK)) == 1
-        assert [run.body["outcome"] for run in store.state().live(EntryKind.RUN)] == ["version 1", "nothing new"]
+        outcomes = [run.body["outcome"] for run in store.state().live(EntryKind.RUN)]
+        assert outcomes == ["version 1", "nothing new"]
     assert "2026-01-12" in (review.folder / "reports" / "index.html").read_text()
 
 
@@ -138,7 +139,7 @@ def test_a_bad_file_goes_back_with_a_sentence_and_the_rest_is_processed(review: 
     review.drop(name, content)
     summary = with_trials(review).update("2026-01-05")
     assert summary.version == 1
-    ((returned,),) = ([item for item in summary.returned],)
+    (returned,) = summary.returned
     assert returned["file"] == name
     assert all(sentence.startswith(name) for sentence in returned["faults"])
     reason = review.folder / "intake" / "returned" / f"{name}.reason.txt"
@@ -187,7 +188,14 @@ results_seen = true
 
 
 def test_an_altered_amendment_is_refused(review: Any) -> None:
-    amendment = '\n[[amendments]]\ndate = 2026-01-01\nauthor = "DD"\nclauses = ["x"]\nreason = "y"\nresults_seen = false\n'
+    amendment = """
+[[amendments]]
+date = 2026-01-01
+author = "DD"
+clauses = ["x"]
+reason = "y"
+results_seen = false
+"""
     plan = (review.folder / "config" / "review.toml").read_text() + amendment
     review.write_plan(plan)
     with_trials(review).update("2026-01-05")

@@ -35,6 +35,8 @@ def rounded(value: float) -> float | int | None:
     if not math.isfinite(number):
         return None
     short = float(f"{number:.{SIGNIFICANT_DIGITS - 1}e}")
+    if not math.isfinite(short):  # the very largest floats would be rounded up to infinity
+        return number
     return int(short) if short.is_integer() and abs(short) < LARGEST_WHOLE else short
 
 
