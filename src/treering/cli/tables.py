@@ -24,7 +24,8 @@ def read_table(file: Path) -> pd.DataFrame:
     import pandas as pd
 
     try:
-        table = pd.read_csv(file)
+        # A trial may be called "NA" or "01": a name is text and never read as a missing value or a number.
+        table = pd.read_csv(file, converters={"trial": str.strip})
     except OSError as error:
         raise IntakeError(f"the table can't be read: {error.strerror}.", file=str(file)) from error
     except ValueError as error:
@@ -32,7 +33,7 @@ def read_table(file: Path) -> pd.DataFrame:
     if table.empty:
         raise IntakeError("the table holds no trial.", file=str(file), expected="one row per trial")
     if "trial" in table.columns:
-        table = table.set_index(table["trial"].astype(str))
+        table = table.set_index("trial", drop=False)
     return table
 
 
