@@ -155,12 +155,17 @@ def _check_columns(connection: Connection, findings: Findings) -> None:
     for name, table in sorted(METADATA.tables.items()):
         dialect = connection.dialect
         found = {(c["name"], c["type"].compile(dialect), c["nullable"]) for c in inspector.get_columns(name)}
-        wanted = {(c.name, c.type.compile(dialect), bool(c.nullable)) for c in table.columns}
+        wanted = {(c.name, _type(c.type.compile(dialect)), bool(c.nullable)) for c in table.columns}
         for column, kind, _ in sorted(found ^ wanted):
             findings.add(1, f"column {name}.{column} ({kind}) is not as it was laid down.", step=_RENEW)
     unique = {index["name"]: index["unique"] for index in inspector.get_indexes("entry")}
     if unique.get("entry_replaces") is not True or "entry_key" not in unique:
         findings.add(1, "An index of table entry is missing.", found=sorted(map(str, unique)), step=_RENEW)
+
+
+def _type(name: str) -> str:
+    # PostgreSQL calls a FLOAT without a precision by the other name.
+    return "DOUBLE PRECISION" if name == "FLOAT" else name
 
 
 def audit_engine(url: URL, *, lenient: bool = False) -> Engine:

@@ -9,7 +9,7 @@ that is trusted, a page or a notice of that time.
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -81,17 +81,37 @@ def inclusion_document(store: StoreReader, seq: int, size: int) -> dict[str, Any
     StoreError
         When it is not among them, or there is no tree of this size.
     """
-    path = store.inclusion_proof(seq, size)
-    (entry,) = store.entries(since=seq, until=seq + 1)
-    return {
-        "format": INCLUSION,
-        "review": store.review,
-        "entry": entry.canonical.decode(),
-        "seq": seq,
-        "size": size,
-        "root": store.head(size).root,
-        "path": path,
-    }
+    (document,) = inclusion_documents(store, [seq], size)
+    return document
+
+
+def inclusion_documents(store: StoreReader, seqs: Iterable[int], size: int) -> Iterator[dict[str, Any]]:
+    """Yield the proofs of several entries in one tree.
+
+    Parameters
+    ----------
+    store : StoreReader
+        The evidence store.
+    seqs : iterable of int
+        The entries.
+    size : int
+        Size of the tree.
+
+    Yields
+    ------
+    dict
+        As :func:`inclusion_document` gives it.
+
+    Raises
+    ------
+    StoreError
+        When an entry is not in the tree, or there is no tree of this size.
+    """
+    about = {"format": INCLUSION, "review": store.review, "size": size, "root": store.head(size).root}
+    for seq in seqs:
+        path = store.inclusion_proof(seq, size)
+        (entry,) = store.entries(since=seq, until=seq + 1)
+        yield {**about, "entry": entry.canonical.decode(), "seq": seq, "path": path}
 
 
 def consistency_document(store: StoreReader, first: int, second: int | None = None) -> dict[str, Any]:
