@@ -168,7 +168,7 @@ def test_simulate_prints_one_row_for_each_rule_and_keeps_what_it_found(
 
 def test_simulate_for_people_is_quiet_when_piped(run: Callable[..., Any], past: Any) -> None:
     ran = run("simulate", past.folder, "--reviews", 50)
-    assert ran.out.splitlines()[0] == "failed: 100 reviews per row, seed 1"
+    assert ran.out.splitlines()[0] == "failed: 50 reviews per row, seed 1"
     assert "\x1b" not in ran.out + ran.err
     assert "advise against sequential methods" in ran.err
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
+from io import StringIO
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -24,16 +25,18 @@ def read_table(file: Path) -> pd.DataFrame:
     import pandas as pd
 
     try:
-        # A trial may be called "NA" or "01": a name is text and never read as a missing value or a number.
-        table = pd.read_csv(file, converters={"trial": str.strip})
+        text = file.read_text(encoding="utf-8-sig")
+        table = pd.read_csv(StringIO(text))
+        if "trial" in table.columns:
+            # A trial may be called "NA" or "01": a name is text, never a missing value or a number.
+            names = pd.read_csv(StringIO(text), usecols=["trial"], dtype=str, keep_default_na=False)
+            table = table.assign(trial=names["trial"]).set_index("trial", drop=False)
     except OSError as error:
         raise IntakeError(f"the table can't be read: {error.strerror}.", file=str(file)) from error
     except ValueError as error:
         raise IntakeError(f"the table can't be read: {error}.", file=str(file)) from error
     if table.empty:
         raise IntakeError("the table holds no trial.", file=str(file), expected="one row per trial")
-    if "trial" in table.columns:
-        table = table.set_index("trial", drop=False)
     return table
 
 
