@@ -7,6 +7,7 @@ import sqlite3
 import pytest
 
 from treering import store
+from treering.store.models import METADATA, TABLES
 from treering.terms import EntryKind
 
 
@@ -69,3 +70,31 @@ def test_equal_values_written_differently_are_no_difference(copy_of, study, mome
         assert opened.state().get("study/Z1").body["funding"]["sum"] == 12
         assert list(opened.typed_rows(EntryKind.STUDY))[-1]["funding"] == {"sum": 12, "of": [1e300]}
     assert found(path) == []
+
+
+def other(value):
+    """Return a value of the same storage class that differs."""
+    if isinstance(value, str):
+        return f"{value}x"
+    return value + 1 if isinstance(value, int | float) else "x"
+
+
+def test_any_one_changed_cell_is_found(copy_of):
+    connection, path = copy_of
+    connection.execute("PRAGMA foreign_keys = OFF")
+    tables = [(str(model.__tablename__), "entry") for model in TABLES.values()] + [("entry", "seq")]
+    with store.open_store(path) as opened:
+        for table, primary in tables:
+            for column in (column.name for column in METADATA.tables[table].columns):
+                if column in ("entry", "seq", "canonical", "hash"):
+                    continue  # the chain rules answer for these; see test_chain.py
+                query = f'SELECT {primary}, "{column}" FROM "{table}" ORDER BY {primary} LIMIT 1'
+                seq, value = connection.execute(query).fetchone()
+                update = f'UPDATE "{table}" SET "{column}" = ? WHERE {primary} = ?'
+                connection.execute(update, (other(value), seq))
+                found = {
+                    (place.seq, place.table, place.column) for place in opened.differences(until=seq + 1)
+                }
+                assert (seq, table, column) in found
+                connection.execute(update, (value, seq))
+        assert list(opened.differences()) == []
