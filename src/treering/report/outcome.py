@@ -15,6 +15,7 @@ from treering.report.inputs import monitoring_inputs, rests_on_pairs
 from treering.report.labels import field_words, other_words, side_words, value_words
 from treering.report.marks import margin_marks
 from treering.report.numbers import effect, interval, number
+from treering.report.outlook import outlook_words
 from treering.report.view import ReportView
 
 Body = Mapping[str, Any]
@@ -62,6 +63,7 @@ def outcome_context(view: ReportView, name: str, figures: Mapping[str, str]) -> 
         **_figures(name, body, before, figures),
         **_monitoring_words(view, outcome, body, before),
         "certainty": next((j for j in view.listed("certainty") if j["outcome"] == name), None),
+        "outlook": outlook_words(body, names),
         "bayes": [(field_words(k), value_words(v)) for k, v in (body.get("bayes") or {}).items()],
     }
 

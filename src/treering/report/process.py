@@ -34,6 +34,9 @@ def process_tables(view: ReportView) -> list[Table]:
         _waivers(view),
         _left_out(view),
         _verification(view),
+        _agreement(view),
+        _pairs(view),
+        _third_readings(view),
         _ongoing(view),
         _searches(view),
         _flow(view),
@@ -99,6 +102,48 @@ def _waivers(view: ReportView) -> Table:
         rows,
         "No waiver: every result was read by two people.",
         "Each result here was let in on one reading, by a named person.",
+    )
+
+
+def _agreement(view: ReportView) -> Table:
+    rows = [
+        (value_words(a["field"]), a["compared"], a["differed"]) for a in view.listed("agreement_by_field")
+    ]
+    return _table(
+        "Agreement of the two readers, by field",
+        ("Field", "Compared", "Differed"),
+        rows,
+        "No number was read by two people yet.",
+        "What differed was settled by a third person at the source.",
+    )
+
+
+def _pairs(view: ReportView) -> Table:
+    rows = [
+        (f"{a['first']} and {a['second']}", a["compared"], a["differed"])
+        for a in view.listed("agreement_by_pair")
+    ]
+    return _table(
+        "Agreement of the two readers, by pair",
+        ("Readers", "Numbers compared", "Differed"),
+        rows,
+        "No pair of readers yet.",
+        "Counted over the live verifications.",
+    )
+
+
+def _third_readings(view: ReportView) -> Table:
+    rows = [
+        (t["trial"], _title(view, t["outcome"]), ", ".join(value_words(name) for name in t["fields"]))
+        for t in view.listed("third_readings")
+    ]
+    return _table(
+        "To be read again by a third person",
+        ("Trial", "Outcome", "Fields"),
+        rows,
+        "No agreed number is drawn for another reading.",
+        "A share of the agreed numbers (by the protocol), drawn by a fixed rule, and every trial that a "
+        "crossing rests on. They hold nothing back.",
     )
 
 

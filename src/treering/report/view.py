@@ -85,6 +85,9 @@ RECORDS = (
     "verifications",
     "amendments",
     "defects",
+    "third_readings",
+    "agreement_by_field",
+    "agreement_by_pair",
 )
 
 

@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from treering.errors import StoreError
-from treering.intake import settle
+from treering.intake import agreement, settle
 from treering.report import ReportView, build_view
 from treering.store import EvidenceStore, State, StoredEntry
 from treering.terms import EntryKind
@@ -95,6 +95,8 @@ def version_view(store: EvidenceStore, version: int) -> ReportView:
 def view_from(store: EvidenceStore, basis: Basis, analyses: Mapping[str, dict[str, Any]]) -> ReportView:
     """Build the report of a stored version from given analyses (stored ones, or ones computed again)."""
     body = version_body(store, basis.version)
+    settled = settle(basis.state, basis.protocol, read_again=_resting(analyses))
+    agreed = agreement(basis.state)
     ordered = {o.id: analyses[o.id] for o in basis.protocol.outcomes if o.id in analyses}
     return build_view(
         protocol=basis.protocol,
@@ -104,12 +106,21 @@ def view_from(store: EvidenceStore, basis: Basis, analyses: Mapping[str, dict[st
         previous_analyses=basis.previous or None,
         changes=changes_of(basis, ordered),
         status=_status(basis),
-        waiting=settle(basis.state, basis.protocol).waiting,
+        waiting=settled.waiting,
+        third_readings=settled.third_readings,
+        agreement_by_field=agreed["fields"],
+        agreement_by_pair=agreed["pairs"],
         notices=_notices(store, basis.version),
         certainty=rated(basis.state),
         simulation=_simulations(basis.state, ordered),
         **{name: _bodies(basis.state.live(kind)) for name, kind in LISTS.items()},
     )
+
+
+def _resting(analyses: Mapping[str, dict[str, Any]]) -> list[str]:
+    """Return the trials whose removal would undo a crossing: a third person reads them again."""
+    blocks = [(body["monitoring"] or {}).get("rests_on") or {} for body in analyses.values()]
+    return sorted({trial for block in blocks for group in block.get("sets", ()) for trial in group})
 
 
 def _bodies(entries: Sequence[StoredEntry]) -> list[dict[str, Any]]:
