@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
@@ -10,7 +11,7 @@ from sqlalchemy import JSON, Engine
 
 from treering.errors import StoreError
 from treering.store import reader
-from treering.store.canonical import parse, parse_canonical
+from treering.store.canonical import canonical_bytes, parse, parse_canonical
 from treering.store.connection import reading
 from treering.store.entries import ROW_FIELDS, LedgerRow, row_of
 from treering.store.models import METADATA, TABLES
@@ -18,6 +19,7 @@ from treering.store.projection import project, typed_values
 from treering.terms import EntryKind
 
 _CHUNK = 5000
+_ENCODE = json.JSONEncoder(separators=(",", ":"), ensure_ascii=False, allow_nan=False).encode
 
 
 @dataclass(frozen=True, slots=True)
@@ -88,7 +90,7 @@ _Typed = dict[EntryKind, dict[int, tuple[Any, ...]]]
 
 def _entry_differences(row: LedgerRow, typed: _Typed) -> Iterator[Difference]:
     """Yield the differences of one entry, and take its typed row out of those left over."""
-    seq, canonical = row[0], bytes(row[-1])
+    seq, canonical = row[0], row[-1]
     try:
         value = parse_canonical(canonical)
         expected = row_of(value, canonical, row[9])
@@ -116,13 +118,18 @@ def _typed_differences(
         return
     columns = METADATA.tables[table].columns
     for (name, right), stored in zip(wanted.items(), found, strict=True):
-        value = _plain(stored) if isinstance(columns[name].type, JSON) else stored
-        if value != right:
+        is_json = isinstance(columns[name].type, JSON)
+        value = _plain(stored) if is_json else stored
+        # 1 and true are equal in Python and differ as JSON.
+        if value != right or (is_json and canonical_bytes(value) != canonical_bytes(right)):
             yield Difference(seq, table, name, value, right)
 
 
 def _plain(stored: Any) -> Any:
+    """Return the value of JSON text; text that treering would not write so is returned as it is."""
     try:
-        return parse(stored.encode()) if isinstance(stored, str) else stored
+        if isinstance(stored, str) and _ENCODE(json.loads(stored)) == stored:
+            return parse(stored.encode())
     except ValueError:
-        return stored
+        pass  # no JSON at all
+    return stored
