@@ -13,23 +13,30 @@ from pathlib import Path
 PRIVATE = {"DO_NOT_TRACK": "1", "PREFECT_SERVER_ANALYTICS_ENABLED": "false"}
 #: The first start on a new machine migrates the engine's own database and takes about 20 s, its limit.
 PATIENT = {"PREFECT_SERVER_EPHEMERAL_STARTUP_TIMEOUT_SECONDS": "120"}
-#: The temporary server writes to our stderr; harmless tracebacks of its recorder would frighten people.
+#: The temporary server writes to our stderr; harmless tracebacks of its recorder would frighten people. The
+#: client would print each refusal as a traceback, twice; the command says it in one sentence.
 QUIET = {
     "PREFECT_SERVER_LOGGING_LEVEL": "CRITICAL",
-    "PREFECT_LOGGING_LEVEL": "WARNING",
+    "PREFECT_LOGGING_LEVEL": "CRITICAL",
     "PREFECT_CLI_PROMPT": "false",
 }
 
 
-def prepare_engine(*, verbose: bool = False) -> None:
+#: A schedule runs unwatched: what fails must stand in its log.
+LOGGED = {**QUIET, "PREFECT_LOGGING_LEVEL": "WARNING"}
+
+
+def prepare_engine(*, verbose: bool = False, unwatched: bool = False) -> None:
     """Set the engine's defaults in the environment.
 
     Parameters
     ----------
     verbose : bool
         Leave the log levels alone.
+    unwatched : bool
+        Keep the engine's warnings and errors, because nobody sees what a command says.
     """
-    defaults = {**PRIVATE, **PATIENT, **({} if verbose else QUIET)}
+    defaults = {**PRIVATE, **PATIENT, **({} if verbose else LOGGED if unwatched else QUIET)}
     for name, value in defaults.items():
         os.environ.setdefault(name, value)
     if "PREFECT_HOME" not in os.environ and not _writable(Path.home()):

@@ -6,7 +6,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 from typing import cast
 
-from prefect import flow, serve
+from prefect import flow, get_run_logger, serve
 from prefect.client.schemas.objects import ConcurrencyLimitConfig, ConcurrencyLimitStrategy
 from prefect.deployments.runner import RunnerDeployment
 from prefect.schedules import Cron
@@ -38,7 +38,10 @@ def cron_of(day: str, hour: int) -> str:
 def scheduled_update(folder: str) -> None:
     """Run one update at the real time; a run that starts late does not fake its date."""
     now = datetime.now(UTC)
-    weekly_update(folder, now.date().isoformat(), now)
+    summary = weekly_update(folder, now.date().isoformat(), now)
+    faults = [fault for item in summary.returned for fault in item["faults"]]
+    for text in (*(f"returned: {fault}" for fault in faults), *summary.undelivered):
+        get_run_logger().warning(text)
 
 
 def serve_weekly(folder: Path, *, day: str, hour: int) -> None:

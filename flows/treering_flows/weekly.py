@@ -17,19 +17,19 @@ from treering.update.taking_in import TakenIn
 from treering.update.versions import Analyses, Basis, analyse_synthesis, changes_of
 
 
-@task(name="read intake", cache_policy=NO_CACHE)
+@task(name="read intake", task_run_name="read intake", cache_policy=NO_CACHE)
 def read_intake(context: RunContext) -> TakenIn:
     """Read and check the dropped files."""
     return steps.step_read(context)
 
 
-@task(name="verify", cache_policy=NO_CACHE)
+@task(name="verify", task_run_name="verify", cache_policy=NO_CACHE)
 def verify(context: RunContext, read: TakenIn) -> TakenIn:
     """Pair what two people extracted apart; a third settles."""
     return steps.step_verify(context, read)
 
 
-@task(name="append", cache_policy=NO_CACHE)
+@task(name="append", task_run_name="append", cache_policy=NO_CACHE)
 def append(context: RunContext, taken: TakenIn) -> Basis | None:
     """Append to the evidence store and say what the next version is made from."""
     steps.step_append(context, taken)
@@ -42,13 +42,13 @@ def analyse(basis: Basis, outcome: str) -> dict[str, Any]:
     return analyse_synthesis(basis, outcome)
 
 
-@task(name="compare with last version", cache_policy=NO_CACHE)
+@task(name="compare with last version", task_run_name="compare with last version", cache_policy=NO_CACHE)
 def compare(basis: Basis, analyses: Analyses) -> dict[str, dict[str, Any]]:
     """Split what changed by cause."""
     return changes_of(basis, analyses)
 
 
-@task(name="publish", cache_policy=NO_CACHE)
+@task(name="publish", task_run_name="publish", cache_policy=NO_CACHE)
 def publish(
     context: RunContext, basis: Basis | None, analyses: Analyses, changes: dict[str, dict[str, Any]]
 ) -> None:
@@ -58,7 +58,7 @@ def publish(
     steps.step_publish(context)
 
 
-@task(name="notify", cache_policy=NO_CACHE)
+@task(name="notify", task_run_name="notify", cache_policy=NO_CACHE)
 def notify(context: RunContext) -> tuple[str, ...]:
     """Deliver the notices; what fails stays stored for the next run."""
     return steps.step_notify(context)
@@ -89,13 +89,22 @@ def weekly_update(folder: str, day: str, as_of: datetime | None = None) -> Summa
             changes = compare(basis, analyses)
         publish(context, basis, analyses, changes)
         summary = steps.step_close(context, taken, notify(context))
-    _show(summary)
+    _show(context, summary)
     return summary
 
 
-def _show(summary: Summary) -> None:
-    """Leave a table of verdicts and a link to the reports with the run."""
-    table = [{"synthesis": name, "verdict": verdict} for name, verdict in summary.verdicts.items()]
+def _show(context: RunContext, summary: Summary) -> None:
+    """Leave a table of the state of each synthesis and a link to the reports with the run."""
+    table = [
+        {
+            "synthesis": outcome.id,
+            "title": outcome.title,
+            "verdict": summary.verdicts.get(
+                outcome.id, "no look yet" if outcome.monitoring else "not monitored"
+            ),
+        }
+        for outcome in context.review.protocol.outcomes
+    ]
     create_table_artifact(table=table, key="treering-verdicts", description=f"Update of {summary.day}")
     create_link_artifact(
         link=Path(summary.index).resolve().as_uri(), key="treering-report", link_text="Reports, all versions"

@@ -160,7 +160,7 @@ def schedule(folder: Path = Path(), /, *, day: str = "Thursday", hour: int = 6, 
     read_review(folder)
     from treering_flows.engine import prepare_engine
 
-    prepare_engine(verbose=verbose)
+    prepare_engine(verbose=verbose, unwatched=True)
     from treering_flows.schedule import cron_of, serve_weekly
 
     cron_of(day, hour)  # a time that is none is told before anything starts
