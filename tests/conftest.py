@@ -1,15 +1,21 @@
-"""What many tests share: a review folder with a small plan, and files dropped into it."""
+"""What many tests share: a review folder with a small plan, and a private PostgreSQL server."""
 
 from __future__ import annotations
 
 import json
 import os
-from collections.abc import Callable
+import pwd
+import shutil
+import subprocess
+import tempfile
+from collections.abc import Callable, Iterator
 from datetime import UTC, datetime
+from itertools import count
 from pathlib import Path
 from typing import Any
 
 import pytest
+from sqlalchemy import create_engine
 
 # One thread per process: the suite runs in several processes on two cores.
 for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
@@ -65,6 +71,63 @@ name = "Chair"
 id = "second"
 name = "Second"
 """
+
+
+def _programs() -> Path | None:
+    """Return the folder of the newest PostgreSQL server programs."""
+    found = shutil.which("initdb")
+    places = [Path(found).parent] if found else []
+    places += sorted(Path("/usr/lib/postgresql").glob("*/bin"), key=lambda path: -int(path.parent.name))
+    return next((place for place in places if (place / "pg_ctl").exists()), None)
+
+
+class Cluster:
+    """A private PostgreSQL server; refuses to run as root, so root hands it to the user postgres."""
+
+    def __init__(self, programs: Path) -> None:
+        self.programs = programs
+        self.folder = Path(tempfile.mkdtemp(prefix="trpg", dir="/tmp"))
+        self._as_user: list[str] = []
+        self.user = pwd.getpwuid(os.getuid()).pw_name
+        if os.getuid() == 0:
+            self.user = "postgres"
+            self._as_user = ["runuser", "-u", self.user, "--"]
+            shutil.chown(self.folder, self.user)
+        self._run("initdb", "-D", self._data, "-U", "treering", "-A", "trust", "-E", "UTF8", "--no-sync")
+        self._names = count()
+
+    @property
+    def _data(self) -> str:
+        return str(self.folder / "data")
+
+    def _run(self, program: str, *arguments: str) -> None:
+        command = [*self._as_user, str(self.programs / program), *arguments]
+        log = self.folder.with_suffix(".out")
+        with log.open("ab") as out:
+            subprocess.run(command, check=True, stdout=out, stderr=out, cwd="/tmp")
+
+    def start(self) -> None:
+        options = f"-c listen_addresses='' -c unix_socket_directories={self.folder} -c fsync=off"
+        self._run("pg_ctl", "-D", self._data, "-w", "-l", str(self.folder / "log"), "-o", options, "start")
+
+    def stop(self) -> None:
+        self._run("pg_ctl", "-D", self._data, "-w", "-m", "immediate", "stop")
+
+    def remove(self) -> None:
+        shutil.rmtree(self.folder)
+        self.folder.with_suffix(".out").unlink()
+
+    def url(self, database: str) -> str:
+        return f"postgresql+psycopg://treering@/{database}?host={self.folder}"
+
+    def fresh(self) -> str:
+        """Return the URL of a new empty database."""
+        name = f"review{next(self._names)}"
+        engine = create_engine(self.url("postgres"), isolation_level="AUTOCOMMIT")
+        with engine.connect() as connection:
+            connection.exec_driver_sql(f"CREATE DATABASE {name}")
+        engine.dispose()
+        return self.url(name)
 
 
 class ReviewFolder:
@@ -152,3 +215,20 @@ def make_review(tmp_path: Path) -> Callable[..., ReviewFolder]:
 def review(make_review: Callable[..., ReviewFolder]) -> ReviewFolder:
     """Return a small invented review with one monitored outcome and nothing in it."""
     return make_review()
+
+
+@pytest.fixture(scope="session")
+def cluster() -> Iterator[Cluster]:
+    programs = _programs()
+    if programs is None:
+        pytest.skip("PostgreSQL is not installed here")
+    running = Cluster(programs)
+    running.start()
+    yield running
+    running.stop()
+    running.remove()
+
+
+@pytest.fixture
+def postgres_url(cluster: Cluster) -> str:
+    return cluster.fresh()

@@ -7,15 +7,11 @@ PostgreSQL are skipped only where its programs are not installed.
 from __future__ import annotations
 
 import importlib.util
-import os
-import pwd
 import shutil
 import sqlite3
-import subprocess
-import tempfile
 from collections.abc import Callable, Iterator
-from itertools import count
 from pathlib import Path
+from typing import Any
 
 import pytest
 from hypothesis import settings
@@ -37,63 +33,6 @@ REVIEW = "invented review"
 MOMENT = "2026-05-04T06:00:00Z"
 
 
-def _programs() -> Path | None:
-    """Return the folder of the newest PostgreSQL server programs."""
-    found = shutil.which("initdb")
-    places = [Path(found).parent] if found else []
-    places += sorted(Path("/usr/lib/postgresql").glob("*/bin"), key=lambda path: -int(path.parent.name))
-    return next((place for place in places if (place / "pg_ctl").exists()), None)
-
-
-class Cluster:
-    """A private PostgreSQL server; refuses to run as root, so root hands it to the user postgres."""
-
-    def __init__(self, programs: Path) -> None:
-        self.programs = programs
-        self.folder = Path(tempfile.mkdtemp(prefix="trpg", dir="/tmp"))
-        self._as_user: list[str] = []
-        self.user = pwd.getpwuid(os.getuid()).pw_name
-        if os.getuid() == 0:
-            self.user = "postgres"
-            self._as_user = ["runuser", "-u", self.user, "--"]
-            shutil.chown(self.folder, self.user)
-        self._run("initdb", "-D", self._data, "-U", "treering", "-A", "trust", "-E", "UTF8", "--no-sync")
-        self._names = count()
-
-    @property
-    def _data(self) -> str:
-        return str(self.folder / "data")
-
-    def _run(self, program: str, *arguments: str) -> None:
-        command = [*self._as_user, str(self.programs / program), *arguments]
-        log = self.folder.with_suffix(".out")
-        with log.open("ab") as out:
-            subprocess.run(command, check=True, stdout=out, stderr=out, cwd="/tmp")
-
-    def start(self) -> None:
-        options = f"-c listen_addresses='' -c unix_socket_directories={self.folder} -c fsync=off"
-        self._run("pg_ctl", "-D", self._data, "-w", "-l", str(self.folder / "log"), "-o", options, "start")
-
-    def stop(self) -> None:
-        self._run("pg_ctl", "-D", self._data, "-w", "-m", "immediate", "stop")
-
-    def remove(self) -> None:
-        shutil.rmtree(self.folder)
-        self.folder.with_suffix(".out").unlink()
-
-    def url(self, database: str) -> str:
-        return f"postgresql+psycopg://treering@/{database}?host={self.folder}"
-
-    def fresh(self) -> str:
-        """Return the URL of a new empty database."""
-        name = f"review{next(self._names)}"
-        engine = create_engine(self.url("postgres"), isolation_level="AUTOCOMMIT")
-        with engine.connect() as connection:
-            connection.exec_driver_sql(f"CREATE DATABASE {name}")
-        engine.dispose()
-        return self.url(name)
-
-
 def empty(url: str) -> None:
     """Remove all entries from a store on PostgreSQL, as only the owner of the server can."""
     engine = create_engine(url)
@@ -106,23 +45,6 @@ def empty(url: str) -> None:
 
 
 @pytest.fixture(scope="session")
-def cluster() -> Iterator[Cluster]:
-    programs = _programs()
-    if programs is None:
-        pytest.skip("PostgreSQL is not installed here")
-    running = Cluster(programs)
-    running.start()
-    yield running
-    running.stop()
-    running.remove()
-
-
-@pytest.fixture
-def postgres_url(cluster: Cluster) -> str:
-    return cluster.fresh()
-
-
-@pytest.fixture(scope="session")
 def empty_sqlite(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """A file with an empty store; copied, since making one takes longer than most tests."""
     path = tmp_path_factory.mktemp("empty") / "evidence.db"
@@ -131,7 +53,7 @@ def empty_sqlite(tmp_path_factory: pytest.TempPathFactory) -> Path:
 
 
 @pytest.fixture(scope="session")
-def shared_postgres(cluster: Cluster) -> str:
+def shared_postgres(cluster: Any) -> str:
     """A store on PostgreSQL that is emptied before each test; a new database would take far longer."""
     url = cluster.fresh()
     store.create(url, review=REVIEW).close()

@@ -7,7 +7,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from treering.errors import NoStoreError, ProtocolError
-from treering.protocol import Panel, Protocol, read_panel, read_protocol
+from treering.protocol import Panel, Protocol, public_text, read_panel, read_protocol
 from treering.store import EvidenceStore, create, open_store
 
 
@@ -22,7 +22,7 @@ class Review:
     protocol : Protocol
         config/review.toml.
     protocol_text : str
-        Its text as it stands, kept in the store with every version.
+        Its text without the sections on store and delivery, kept in the store with every version.
     panel : Panel
         config/panel.toml.
     """
@@ -93,7 +93,8 @@ def read_review(folder: Path) -> Review:
     protocol = read_protocol(config)
     panel_path = folder / "config" / "panel.toml"
     panel = read_panel(panel_path) if panel_path.exists() else Panel(format=1)
-    return Review(folder, protocol, config.read_text(encoding="utf-8"), panel)
+    text = public_text(config.read_text(encoding="utf-8"), str(config))
+    return Review(folder, protocol, text, panel)
 
 
 def open_evidence(review: Review, *, make: bool = False) -> EvidenceStore:

@@ -1,28 +1,24 @@
-"""The protocol of a review and its panel, read from config/ as validated, hashed values.
+"""config/review.toml as values: questions, outcomes, pooling, monitoring, verification, people, amendments.
 
-``config/review.toml`` is the plan: questions, outcomes, pooling, monitoring, verification, people and
-amendments. ``config/panel.toml`` says who is told what, by which channel. Everything that can change a
-number sits in :meth:`Protocol.plan`, whose SHA-256 is the protocol digest printed with every version.
+Everything that can change a number sits in :meth:`Protocol.plan`, whose SHA-256 is the protocol digest
+printed with every version.
 """
 
 from __future__ import annotations
 
 import hashlib
 import math
-import tomllib
 from datetime import date
-from pathlib import Path
-from typing import Annotated, Any, Literal, Self, TypeVar
+from typing import Annotated, Any, Literal, Self
 
 import rfc8785
-from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
+from pydantic import Field, model_validator
 
-from treering.errors import ProtocolError
+from treering.protocol.base import Identifier, Part, Share, Text
 from treering.terms import (
     RATIO_MEASURES,
     Better,
     Correction,
-    EventClass,
     IntervalMethod,
     Measure,
     OutcomeRole,
@@ -31,17 +27,6 @@ from treering.terms import (
     Spending,
     Tau2,
 )
-
-Identifier = Annotated[str, Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9._-]{0,63}$")]
-Text = Annotated[str, Field(min_length=1)]
-PartT = TypeVar("PartT", bound="Part")
-Share = Annotated[float, Field(ge=0, le=1)]
-
-
-class Part(BaseModel):
-    """A frozen part of the protocol; unknown fields are faults, not silently dropped."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True)
 
 
 class Person(Part):
@@ -231,116 +216,3 @@ class Protocol(Part):
     def outcome(self, outcome_id: str) -> Outcome | None:
         """Return the outcome with this id, or None."""
         return next((o for o in self.outcomes if o.id == outcome_id), None)
-
-
-class Interest(Part):
-    """A dated declaration of a panel member."""
-
-    date: date
-    text: str
-    outcomes: tuple[Identifier, ...] = ()
-    recused: bool = False
-
-
-class Member(Part):
-    """One panel member: what they follow and how they are told."""
-
-    id: Identifier
-    name: Text
-    follows: tuple[str, ...] = ("all",)
-    events: tuple[EventClass, ...] = tuple(EventClass)
-    channel: Literal["file", "email", "webhook", "apprise"] = "file"
-    address: str = ""
-    interests: tuple[Interest, ...] = ()
-
-    @model_validator(mode="after")
-    def _address_fits_channel(self) -> Self:
-        if self.channel != "file" and not self.address:
-            raise ValueError(f"channel {self.channel} needs an address")
-        return self
-
-
-class Panel(Part):
-    """The whole of config/panel.toml."""
-
-    format: Literal[1]
-    members: tuple[Member, ...] = ()
-
-
-#: Faults of the shape of a file, in plain words; the library's own words speak of patterns and tuples.
-_PLAIN_WORDS = {
-    "missing": "this field is missing",
-    "extra_forbidden": "there is no such field",
-    "string_too_short": "this field is empty",
-    "string_pattern_mismatch": "write a short name of letters, digits, dots, dashes or underscores",
-}
-
-
-def _sentences(error: ValidationError) -> list[str]:
-    """Turn validation faults into one sentence each, with the place in the file."""
-    faults = error.errors()
-    lists = {fault["loc"][0] for fault in faults if len(fault["loc"]) > 1}
-    sentences = []
-    for fault in faults:
-        if fault["type"] == "too_short" and fault["loc"][0] in lists:
-            continue  # the list counts as short only because its items have the faults named beside this one
-        shown = fault.get("input")
-        reason = _PLAIN_WORDS.get(fault["type"], fault["msg"].removeprefix("Value error, "))
-        if shown == "" and fault["type"] == "string_pattern_mismatch":
-            reason = f"this field is empty: {reason}"
-        found = f" (found {shown!r})" if shown != "" and isinstance(shown, str | int | float | bool) else ""
-        sentences.append(f"{_place(fault['loc'])}: {reason}{found}")
-    return sentences
-
-
-def _place(steps: tuple[int | str, ...]) -> str:
-    """Name a place as people count: the first of [[people]] is people 1."""
-    words = "".join(f" {step + 1}" if isinstance(step, int) else f".{step}" for step in steps)
-    return words.removeprefix(".") or "the file"
-
-
-def _read_toml(path: Path) -> tuple[str, dict[str, Any]]:
-    try:
-        text = path.read_text(encoding="utf-8")
-        return text, tomllib.loads(text)
-    except FileNotFoundError as error:
-        raise ProtocolError(
-            "the file is missing.", file=str(path), next_step="Make a review with `treering start FOLDER`."
-        ) from error
-    except (UnicodeDecodeError, tomllib.TOMLDecodeError, OSError) as error:
-        raise ProtocolError(f"the file can't be read: {error}.", file=str(path)) from error
-
-
-def _read(path: Path, shape: type[PartT]) -> PartT:
-    _, data = _read_toml(path)
-    try:
-        return shape.model_validate(data)
-    except ValidationError as error:
-        faults = _sentences(error)
-        listed = "".join(f"\n    {fault}." for fault in faults)
-        many = "1 fault" if len(faults) == 1 else f"{len(faults)} faults"
-        raise ProtocolError(
-            f"{many}; correct what is named and run again.{listed}", file=str(path)
-        ) from error
-
-
-def read_protocol(path: Path) -> Protocol:
-    """Read and check config/review.toml.
-
-    Raises
-    ------
-    ProtocolError
-        One sentence per fault, with its place in the file.
-    """
-    return _read(path, Protocol)
-
-
-def read_panel(path: Path) -> Panel:
-    """Read and check config/panel.toml.
-
-    Raises
-    ------
-    ProtocolError
-        One sentence per fault, with its place in the file.
-    """
-    return _read(path, Panel)

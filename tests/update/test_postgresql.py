@@ -1,0 +1,50 @@
+"""The same weeks on SQLite and on PostgreSQL leave the same heads and the same report bytes."""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Callable
+from typing import Any
+
+
+def weeks(review: Any) -> dict[str, Any]:
+    """Play three weeks and return heads and digests of everything published."""
+    for trial, counts in (("T1", (24, 110, 33, 108)), ("T2", (30, 140, 41, 138)), ("T3", (15, 80, 21, 82))):
+        review.drop_pair(trial, counts)
+    review.update("2026-01-05")
+    review.drop_pair("Large", (150, 800, 230, 800))
+    review.update("2026-01-12")
+    review.drop_pair("T2", (30, 140, 44, 138), correction="erratum")
+    review.update("2026-01-19")
+    with review.store() as store:
+        heads = [(body["version"], body["root"]) for body in store.versions()]
+        head = store.head()
+    files = {
+        str(path.relative_to(review.folder)): hashlib.sha256(path.read_bytes()).hexdigest()
+        for path in sorted((review.folder / "reports").rglob("*"))
+        if path.is_file()
+    }
+    return {"heads": heads, "head": head, "files": files}
+
+
+def test_both_databases_leave_the_same_heads_and_report_bytes(
+    make_review: Callable[..., Any], postgres_url: str
+) -> None:
+    on_file = make_review(name="file")
+    plan = (on_file.folder / "config" / "review.toml").read_text()
+    on_server = make_review(name="server")
+    on_server.write_plan(plan + f'\n[store]\nurl = "{postgres_url}"\n')
+    on_file.write_plan(plan + "\n")
+    assert weeks(on_file) == weeks(on_server)
+
+
+def test_where_the_store_lies_stays_out_of_the_ledger(
+    make_review: Callable[..., Any], postgres_url: str
+) -> None:
+    review = make_review()
+    plan = (review.folder / "config" / "review.toml").read_text()
+    review.write_plan(plan + f'\n[store]\nurl = "{postgres_url}"\n[delivery]\nsender = "a@example.org"\n')
+    review.update("2026-01-05")
+    with review.store() as store:
+        text = store.state().get("protocol").body["text"]
+    assert text == plan + "\n"
