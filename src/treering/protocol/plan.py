@@ -129,7 +129,7 @@ class Living(Part):
     """Parameters of the living mode: how often the steps are due and when living ends."""
 
     update_every_days: Annotated[int, Field(ge=1)] = 7
-    search_every_days: dict[str, Annotated[int, Field(ge=1)]] = {}
+    search_every_days: dict[str, Annotated[int, Field(ge=1)]] = Field(default_factory=dict)
     certainty_reread_days: Annotated[int, Field(ge=1)] = 183
     report_lag_days: Annotated[int, Field(ge=0)] = 365
     retirement_rule: str = ""
