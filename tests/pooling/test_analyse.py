@@ -11,7 +11,14 @@ import pytest
 
 from treering.effects import effect_sizes
 from treering.errors import AnalysisError
-from treering.pooling import HalfNormal, absolute_effects, pool, pool_bayesian, subgroup_analysis
+from treering.pooling import (
+    HalfNormal,
+    absolute_effects,
+    pool,
+    pool_bayesian,
+    pool_mantel_haenszel,
+    subgroup_analysis,
+)
 from treering.pooling.analyse import analyse_table
 from treering.pooling.analysis_result import TableAnalysis
 from treering.pooling.plain import plain
@@ -65,6 +72,23 @@ def test_every_part_is_what_its_own_function_gives(analysis: TableAnalysis, tabl
     assert analysis.subgroups.test_p == subgroup_analysis(y, v, table["subgroup"]).test_p
     assert analysis.bayesian.p_beyond_mid == pool_bayesian(y, v, HalfNormal(0.5), mid=0.1).p_beyond_mid
     assert analysis.absolute == absolute_effects(pool(y, v), "risk-ratio", [0.02, 0.05])
+
+
+def test_the_planned_degrees_of_freedom_hold_wherever_trials_are_pooled_again(table: pd.DataFrame) -> None:
+    found = analyse_table(table, "risk-ratio", prediction_df="k-1", one_stage="never")
+    last = found.cumulative.steps.iloc[-1]
+    assert last["prediction_high"] == pytest.approx(found.random.prediction_high, rel=1e-9)
+    without = effect_sizes(table.iloc[1:], "risk-ratio")
+    again = pool(without["estimate"], without["variance"], prediction_df="k-1")
+    assert found.leave_one_out["prediction_high"].iloc[0] == pytest.approx(again.prediction_high, rel=1e-9)
+
+
+def test_the_size_of_a_correction_reaches_mantel_haenszel(table: pd.DataFrame) -> None:
+    zero = table.assign(intervention_events=[0, *table["intervention_events"][1:]])
+    options = {"correction": "constant", "amount": 0.1}
+    found = analyse_table(zero, "odds-ratio", one_stage="never", **options)
+    assert found.mantel_haenszel.estimate == pool_mantel_haenszel(zero, "odds-ratio", **options).estimate
+    assert found.mantel_haenszel.estimate != pool_mantel_haenszel(zero, "odds-ratio").estimate
 
 
 def test_methods_for_odds_ratios_stand_beside_odds_ratios(

@@ -135,6 +135,17 @@ def test_double_zero_trials_stay_listed_and_change_no_ratio(trials):
         assert other.weights[-1] == 0.0
 
 
+@pytest.mark.parametrize("amount", [0.1, 0.25, 0.5])
+def test_a_constant_correction_is_what_adding_by_hand_gives_in_another_library(amount):
+    rows = [[0, 40, 3, 42], [5, 60, 9, 58], [2, 30, 4, 33]]
+    found = pool_mantel_haenszel(table(rows), "odds-ratio", correction="constant", amount=amount)
+    cells = np.array([[[a, n - a], [c, m - c]] for a, n, c, m in rows], dtype=float)
+    cells[0] += amount
+    peer = StratifiedTable(list(cells))
+    assert found.estimate == pytest.approx(peer.logodds_pooled, rel=1e-10)
+    assert found.standard_error == pytest.approx(peer.logodds_pooled_se, rel=1e-10)
+
+
 def test_weights_of_the_odds_ratio_sum_to_one(trials):
     assert pool_mantel_haenszel(trials("aspirin"), "odds-ratio").weights.sum() == pytest.approx(1.0)
 

@@ -348,11 +348,11 @@ def test_simulated_trials_give_back_the_true_odds_ratio() -> None:
 @pytest.mark.parametrize(
     ("rows", "words"),
     [
-        ([[5, 4, 1, 10]], "intervention_events is above intervention_total"),
-        ([[1, 10, -1, 10]], "comparator_events is not a count"),
-        ([[1, 10, 1, 0]], "comparator_total is not above zero"),
-        ([[1.5, 10, 1, 10]], "intervention_events is not a count"),
-        ([[np.nan, 10, 1, 10]], "intervention_events is not a count"),
+        ([[5, 4, 1, 10]], "intervention_events: is above intervention_total"),
+        ([[1, 10, -1, 10]], "comparator_events: is below zero"),
+        ([[1, 10, 1, 0]], "comparator_total: is not above zero"),
+        ([[1.5, 10, 1, 10]], "intervention_events: is not a whole number"),
+        ([[np.nan, 10, 1, 10]], "intervention_events: is missing"),
     ],
 )
 def test_bad_counts_are_refused_with_trial_and_field(rows: list[list[float]], words: str) -> None:

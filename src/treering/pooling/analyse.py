@@ -14,6 +14,7 @@ from treering.pooling import analysis_models as models
 from treering.pooling.absolute import AbsoluteEffect
 from treering.pooling.analysis_input import Inputs, Ledger, Plan, prepare, tuple_of
 from treering.pooling.analysis_result import TableAnalysis, TrialEffect
+from treering.pooling.influence import influence, leave_one_out
 from treering.pooling.inverse_variance import pool
 from treering.pooling.one_stage import OneStageEffect
 from treering.pooling.plain import plain
@@ -142,8 +143,10 @@ def _analyse(inputs: Inputs) -> TableAnalysis:
             empty or ("" if plan.covariates else "no covariate named"),
             lambda: models.regression(inputs),
         ),
-        leave_one_out=ledger.attempt("leave_one_out", single, lambda: classical.without_each(inputs)),
-        influence=ledger.attempt("influence", single, lambda: classical.influence_of_each(inputs)),
+        leave_one_out=ledger.attempt(
+            "leave_one_out", single, lambda: leave_one_out(*inputs.numbers, **plan.random_effects)
+        ),
+        influence=ledger.attempt("influence", single, lambda: influence(*inputs.numbers, tau2=plan.tau2)),
         small_study=small,
         trim_and_fill=filled,
         cumulative=ledger.attempt("cumulative", empty, lambda: classical.added_up(inputs)),
@@ -157,12 +160,8 @@ def _analyse(inputs: Inputs) -> TableAnalysis:
 
 def _both_models(inputs: Inputs) -> tuple[PooledEffect, PooledEffect]:
     """Common-effect and planned random-effects result."""
-    plan, y, v = inputs.plan, inputs.sizes["estimate"], inputs.sizes["variance"]
-    common = pool(y, v, model="common", level=plan.level)
-    random = pool(
-        y, v, tau2=plan.tau2, interval=plan.interval, level=plan.level, prediction_df=plan.prediction_df
-    )
-    return common, random
+    common = pool(*inputs.numbers, model="common", level=inputs.plan.level)
+    return common, pool(*inputs.numbers, **inputs.plan.random_effects)
 
 
 def _trials(

@@ -9,7 +9,7 @@ import pandas as pd
 
 from treering.errors import AnalysisError
 from treering.pooling.analysis_input import Inputs, Ledger
-from treering.pooling.influence import cumulative, influence, leave_one_out
+from treering.pooling.influence import cumulative
 from treering.pooling.mantel_haenszel import pool_mantel_haenszel
 from treering.pooling.peto import pool_peto
 from treering.pooling.result import PooledEffect
@@ -81,7 +81,9 @@ def mantel_haenszel(inputs: Inputs, ledger: Ledger) -> PooledEffect | None:
     return ledger.attempt(
         "mantel_haenszel",
         reason,
-        lambda: pool_mantel_haenszel(inputs.table, inputs.measure, correction=inputs.plan.correction),
+        lambda: pool_mantel_haenszel(
+            inputs.table, inputs.measure, correction=inputs.plan.correction, amount=inputs.plan.amount
+        ),
     )
 
 
@@ -102,39 +104,6 @@ def peto(inputs: Inputs, ledger: Ledger) -> PooledEffect | None:
     return ledger.attempt("peto", inputs.why_no_counts, lambda: pool_peto(inputs.table))
 
 
-def without_each(inputs: Inputs) -> pd.DataFrame:
-    """Random-effects result without each trial in turn.
-
-    Parameters
-    ----------
-    inputs : Inputs
-        The table and its effects, two trials or more.
-
-    Returns
-    -------
-    DataFrame, k rows
-    """
-    sizes, plan = inputs.sizes, inputs.plan
-    return leave_one_out(
-        sizes["estimate"], sizes["variance"], tau2=plan.tau2, interval=plan.interval, level=plan.level
-    )
-
-
-def influence_of_each(inputs: Inputs) -> pd.DataFrame:
-    """Influence measures of each trial in the random-effects model.
-
-    Parameters
-    ----------
-    inputs : Inputs
-        The table and its effects, two trials or more.
-
-    Returns
-    -------
-    DataFrame, k rows
-    """
-    return influence(inputs.sizes["estimate"], inputs.sizes["variance"], tau2=inputs.plan.tau2)
-
-
 def added_up(inputs: Inputs) -> Cumulative:
     """Pool the first trial, the first two, and so on.
 
@@ -152,7 +121,7 @@ def added_up(inputs: Inputs) -> Cumulative:
     AnalysisError
         When the column to order by is missing or has a gap.
     """
-    sizes, plan, used, column = inputs.sizes, inputs.plan, inputs.used, inputs.plan.order
+    used, column = inputs.used, inputs.plan.order
     if column is None:
         column = next((name for name in _ORDERS if name in used.columns), None)
     elif column not in used.columns:
@@ -164,14 +133,7 @@ def added_up(inputs: Inputs) -> Cumulative:
             raise AnalysisError(f"{column}: is missing.", trial=str(used.index[int(np.argmax(gaps))]))
         # ranks, because dates are no floats
         ranks = used[column].rank(method="dense").to_numpy(dtype=float)
-    steps = cumulative(
-        sizes["estimate"],
-        sizes["variance"],
-        order=ranks,
-        tau2=plan.tau2,
-        interval=plan.interval,
-        level=plan.level,
-    )
+    steps = cumulative(*inputs.numbers, order=ranks, **inputs.plan.random_effects)
     return Cumulative(column or "rows of the table", steps)
 
 
@@ -198,14 +160,14 @@ def small_study_parts(inputs: Inputs, ledger: Ledger) -> tuple[SmallStudy | None
     filled = ledger.attempt(
         "trim_and_fill",
         reason,
-        lambda: trim_and_fill(inputs.sizes["estimate"], inputs.sizes["variance"], level=inputs.plan.level),
+        lambda: trim_and_fill(*inputs.numbers, level=inputs.plan.level),
     )
     return tests, filled
 
 
 def _tests(inputs: Inputs, ledger: Ledger) -> SmallStudy:
     """All tests that fit the measure."""
-    y, v = inputs.sizes["estimate"], inputs.sizes["variance"]
+    y, v = inputs.numbers
     counts = inputs.why_no_counts
     odds = counts or ("" if inputs.measure in _ODDS else "made for odds ratios")
     k = len(inputs.sizes)

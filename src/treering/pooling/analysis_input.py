@@ -4,16 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from typing import TypeVar
+from typing import Any, TypeVar
 
 import numpy as np
 import pandas as pd
 
 from treering.effects import LeftOut, usable
+from treering.effects.zero_cells import COUNTS
 from treering.errors import AnalysisError
 from treering.pooling.checks import check_level
 from treering.pooling.priors import TauPrior
-from treering.pooling.tables import COUNT_COLUMNS
 from treering.terms import RATIO_MEASURES, Measure
 
 BINARY = frozenset(
@@ -51,6 +51,16 @@ class Plan:
     mid: float | None
     one_stage: str
     force_small_study: bool
+
+    @property
+    def random_effects(self) -> dict[str, Any]:
+        """Options of the planned random-effects analysis, for everything that pools again."""
+        return {
+            "tau2": self.tau2,
+            "interval": self.interval,
+            "level": self.level,
+            "prediction_df": self.prediction_df,
+        }
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,13 +104,18 @@ class Inputs:
         """Reason why methods on counts cannot be used, empty when they can."""
         if self.measure not in BINARY:
             return f"for binary outcomes only, not for {self.measure}"
-        missing = [name for name in COUNT_COLUMNS if name not in self.table.columns]
+        missing = [name for name in COUNTS if name not in self.table.columns]
         if missing:
             return f"the table has no column {missing[0]}"
-        gaps = self.table[list(COUNT_COLUMNS)].isna().any(axis=1).to_numpy()
+        gaps = self.table[list(COUNTS)].isna().any(axis=1).to_numpy()
         if gaps.any():
             return f"no counts for {', '.join(str(t) for t in self.table.index[gaps])}"
         return ""
+
+    @property
+    def numbers(self) -> tuple[pd.Series, pd.Series]:
+        """Estimates and variances of the usable trials."""
+        return self.sizes["estimate"], self.sizes["variance"]
 
     @property
     def rare(self) -> bool:

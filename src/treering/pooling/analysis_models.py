@@ -35,18 +35,8 @@ def tau2_estimators(inputs: Inputs) -> dict[str, PooledEffect]:
     -------
     dict of str to PooledEffect
     """
-    plan, sizes = inputs.plan, inputs.sizes
-    return {
-        method.value: pool(
-            sizes["estimate"],
-            sizes["variance"],
-            tau2=method,
-            interval=plan.interval,
-            level=plan.level,
-            prediction_df=plan.prediction_df,
-        )
-        for method in Tau2
-    }
+    plan = inputs.plan.random_effects
+    return {method.value: pool(*inputs.numbers, **{**plan, "tau2": method}) for method in Tau2}
 
 
 def bayesian(inputs: Inputs) -> BayesianEffect:
@@ -76,8 +66,7 @@ def bayesian(inputs: Inputs) -> BayesianEffect:
             )
         prior = DEFAULT_PRIOR
     return pool_bayesian(
-        inputs.sizes["estimate"],
-        inputs.sizes["variance"],
+        *inputs.numbers,
         prior,
         better=plan.better or Better.LOWER,
         mid=plan.mid,
@@ -157,8 +146,7 @@ def subgroups(inputs: Inputs) -> SubgroupAnalysis:
     """
     plan = inputs.plan
     return subgroup_analysis(
-        inputs.sizes["estimate"],
-        inputs.sizes["variance"],
+        *inputs.numbers,
         inputs.used[plan.subgroup],
         tau2=plan.tau2,
         between_variance=plan.between_variance,
@@ -189,8 +177,7 @@ def regression(inputs: Inputs) -> MetaRegression:
     if missing:
         raise AnalysisError("The table lacks a covariate.", found=missing)
     return meta_regression(
-        inputs.sizes["estimate"],
-        inputs.sizes["variance"],
+        *inputs.numbers,
         inputs.used[list(plan.covariates)],
         tau2=plan.tau2,
         interval=plan.interval,

@@ -7,7 +7,10 @@ from typing import NamedTuple
 import numpy as np
 import pandas as pd
 
-from treering.effects.zero_cells import corrected_counts
+from treering.effects.binary import observed_minus_expected
+from treering.effects.checks import known_amount, known_correction
+from treering.effects.rows import Rows, refuse
+from treering.effects.zero_cells import COUNTS, corrected_rows, count_rows
 from treering.errors import AnalysisError
 from treering.pooling.inference import heterogeneity_p, i2_interval, normal_test
 from treering.pooling.result import FloatArray, PooledEffect
@@ -46,8 +49,15 @@ class Counts(NamedTuple):
         """Events in both arms."""
         return self.a + self.c
 
+    def rows(self) -> Rows:
+        """Return the tables as rows for the functions of one trial's effect; labels are row numbers."""
+        values = dict(zip(COUNTS, (self.a, self.n1, self.c, self.n2), strict=True))
+        return Rows(values, np.arange(1, self.n.size + 1).astype(object))
 
-def read_counts(table: pd.DataFrame, correction: str = "none") -> Counts:
+
+def read_counts(
+    table: pd.DataFrame, correction: str = "none", amount: float = 0.5, *, whole: bool = False
+) -> Counts:
     """Read, check and if asked correct the counts of a table.
 
     Parameters
@@ -55,7 +65,11 @@ def read_counts(table: pd.DataFrame, correction: str = "none") -> Counts:
     table : DataFrame, k rows
         ``intervention_events intervention_total comparator_events comparator_total``.
     correction : str
-        "none", "constant" (0.5) or "treatment-arm"; only trials with a zero cell change.
+        "none", "constant" or "treatment-arm"; only trials with a zero cell change.
+    amount : float
+        Size of the correction, in events; see `treering.effects.corrected_counts`.
+    whole : bool
+        Whether fractions of people are refused (effective numbers of a cluster trial are fractions).
 
     Returns
     -------
@@ -67,15 +81,41 @@ def read_counts(table: pd.DataFrame, correction: str = "none") -> Counts:
     AnalysisError
         No trial, or a count that cannot be right, naming trial and field.
     """
+    rows = _rows(table, correction, amount)
+    if whole:
+        for field in COUNTS:
+            part = rows[field] != np.floor(rows[field])
+            refuse(part, rows.labels, field, rows[field], "is not a whole number", "a count of people")
+    fixed, _ = corrected_rows(rows)
+    a, n1, c, n2 = (fixed[field] for field in COUNTS)
+    return Counts(a, n1 - a, c, n2 - c)
+
+
+def _rows(table: pd.DataFrame, correction: str = "none", amount: float = 0.5) -> Rows:
     if len(table) == 0:
         raise AnalysisError("There is no trial to pool.", found=0, expected="at least one trial")
-    fixed = corrected_counts(table, correction)
-    arms = [
-        (fixed[f"{arm}_events"].to_numpy(np.float64), fixed[f"{arm}_total"].to_numpy(np.float64))
-        for arm in ("intervention", "comparator")
-    ]
-    (a, n1), (c, n2) = arms
-    return Counts(a, n1 - a, c, n2 - c)
+    return count_rows(table, known_correction(correction), known_amount(amount))
+
+
+def deviations(table: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
+    """Observed minus expected intervention events, and their variance with all margins fixed.
+
+    Parameters
+    ----------
+    table : DataFrame, k rows
+        The four columns of counts.
+
+    Returns
+    -------
+    tuple of ndarray, shape (k,)
+        O - E and V; see `treering.effects.binary.observed_minus_expected`.
+
+    Raises
+    ------
+    AnalysisError
+        No trial, or a count that cannot be right.
+    """
+    return observed_minus_expected(_rows(table))
 
 
 def common_effect(

@@ -12,16 +12,26 @@ import numpy as np
 import pandas as pd
 from scipy import special
 
+from treering.effects.binary import log_odds_ratio, log_risk_ratio, risk_difference
 from treering.errors import AnalysisError
 from treering.pooling.checks import choose
-from treering.pooling.counts import Counts, common_effect, read_counts, silent_trials
+from treering.pooling.counts import Counts, common_effect, deviations, read_counts, silent_trials
 from treering.pooling.result import FloatArray, PooledEffect
 from treering.terms import Measure
 
 MEASURES = (Measure.RISK_RATIO, Measure.ODDS_RATIO, Measure.RISK_DIFFERENCE)
 
 
-def pool_mantel_haenszel(table: pd.DataFrame, measure: str, *, correction: str = "none") -> PooledEffect:
+_OWN_EFFECTS = {
+    Measure.RISK_RATIO: log_risk_ratio,
+    Measure.ODDS_RATIO: log_odds_ratio,
+    Measure.RISK_DIFFERENCE: risk_difference,
+}
+
+
+def pool_mantel_haenszel(
+    table: pd.DataFrame, measure: str, *, correction: str = "none", amount: float = 0.5
+) -> PooledEffect:
     """Pool two-by-two tables by Mantel and Haenszel.
 
     Parameters
@@ -32,6 +42,8 @@ def pool_mantel_haenszel(table: pd.DataFrame, measure: str, *, correction: str =
         Ratios are pooled and returned on the log scale.
     correction : {"none", "constant", "treatment-arm"}
         What is done with trials that have a zero cell.
+    amount : float
+        Events added to each cell ("constant"), or half the sum of both arms' corrections.
 
     Returns
     -------
@@ -55,7 +67,7 @@ def pool_mantel_haenszel(table: pd.DataFrame, measure: str, *, correction: str =
         raise AnalysisError(
             "Mantel-Haenszel is for two-by-two tables.", found=measure, expected=", ".join(MEASURES)
         )
-    cells = read_counts(table, correction)
+    cells = read_counts(table, correction, amount)
     estimators = {
         Measure.RISK_RATIO: _risk_ratio,
         Measure.ODDS_RATIO: _odds_ratio,
@@ -118,19 +130,10 @@ def _refuse_empty(r: FloatArray, s: FloatArray, name: str) -> None:
         )
 
 
-def _own_effects(x: Counts, measure: Measure) -> tuple[FloatArray, FloatArray]:
-    """Effect and variance of each trial; not finite where it has none."""
-    with np.errstate(divide="ignore", invalid="ignore"):
-        if measure is Measure.RISK_RATIO:
-            return np.log(x.a * x.n2 / (x.c * x.n1)), 1 / x.a - 1 / x.n1 + 1 / x.c - 1 / x.n2
-        if measure is Measure.ODDS_RATIO:
-            return np.log(x.a * x.d / (x.b * x.c)), 1 / x.a + 1 / x.b + 1 / x.c + 1 / x.d
-        return x.a / x.n1 - x.c / x.n2, x.a * x.b / x.n1**3 + x.c * x.d / x.n2**3
-
-
 def _cochran_q(x: Counts, measure: Measure, estimate: float) -> tuple[float, float, tuple[str, ...]]:
-    y, v = _own_effects(x, measure)
-    usable = np.isfinite(y) & np.isfinite(v) & (v > 0.0)
+    own = _OWN_EFFECTS[measure](x.rows())
+    y, v = own.estimate, own.variance
+    usable = np.isfinite(y) & np.isfinite(v) & (v > 0.0)  # an effect without variance has no weight
     count = int(usable.sum())
     q = float(((y[usable] - estimate) ** 2 / v[usable]).sum())
     remark = f"Q and what follows from it rest on the {count} of {y.size} trials without a zero cell."
@@ -165,28 +168,9 @@ def cochran_mantel_haenszel(table: pd.DataFrame, *, continuity: bool = False) ->
     AnalysisError
         A count that cannot be right, or no trial that compares anything.
     """
-    x = read_counts(table)
-    deviation, variance = hypergeometric(x)
+    deviation, variance = deviations(table)
     if not variance.sum() > 0.0:
         raise AnalysisError("No trial has both events and non-events: there is nothing to test.")
     gap = max(abs(deviation.sum()) - (0.5 if continuity else 0.0), 0.0)
     statistic = float(gap**2 / variance.sum())
     return ChiSquare(statistic, float(special.chdtrc(1.0, statistic)))
-
-
-def hypergeometric(x: Counts) -> tuple[FloatArray, FloatArray]:
-    """Observed minus expected intervention events, and their variance with all margins fixed.
-
-    Parameters
-    ----------
-    x : Counts
-        Cells of the trials.
-
-    Returns
-    -------
-    tuple of ndarray, shape (k,)
-        O - E and V = n1 n2 m (n - m) / (n^2 (n - 1)), m the events of both arms.
-    """
-    deviation = x.a - x.n1 * x.events / x.n
-    variance = x.n1 * x.n2 * x.events * (x.b + x.d) / (x.n**2 * np.maximum(x.n - 1.0, 1.0))
-    return deviation, variance

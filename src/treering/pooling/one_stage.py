@@ -31,9 +31,9 @@ from scipy.stats import norm
 from treering.errors import AnalysisError
 from treering.pooling.binomial import Arms
 from treering.pooling.checks import check_level, choose
+from treering.pooling.counts import read_counts
 from treering.pooling.likelihood_fit import Fit, Problem, profile_interval
 from treering.pooling.one_stage_models import DEFAULT_NODES, OneStageModel, fit_model, refuse_infinite
-from treering.pooling.tables import two_arm_counts
 from treering.terms import Measure
 
 
@@ -157,7 +157,8 @@ def pool_one_stage(
         When no proper maximum is found.
     """
     chosen, wanted = _options(model, measure, interval, level)
-    arms = two_arm_counts(table, whole=chosen is OneStageModel.HYPERGEOMETRIC_NORMAL)
+    x = read_counts(table, whole=chosen is OneStageModel.HYPERGEOMETRIC_NORMAL)
+    arms = Arms(x.a, x.n1, x.c, x.n2)
     events, total = arms.events_1 + arms.events_2, arms.total_1 + arms.total_2
     informative = (
         (events > 0) & (events < total) if chosen.within_trial else np.ones(events.shape, dtype=bool)

@@ -6,8 +6,7 @@ import numpy as np
 import pandas as pd
 
 from treering.errors import AnalysisError
-from treering.pooling.counts import common_effect, read_counts, silent_trials
-from treering.pooling.mantel_haenszel import hypergeometric
+from treering.pooling.counts import common_effect, deviations, silent_trials
 from treering.pooling.result import PooledEffect
 
 
@@ -34,7 +33,7 @@ def pool_peto(table: pd.DataFrame) -> PooledEffect:
     ----------
     Yusuf S et al. (1985), Prog Cardiovasc Dis 27:335. Cited from memory.
     """
-    deviation, variance = hypergeometric(read_counts(table))
+    deviation, variance = deviations(table)
     informative = variance > 0.0
     if not informative.any():
         raise AnalysisError("No trial has both events and non-events: there is no odds ratio to pool.")

@@ -14,8 +14,7 @@ from scipy import special, stats
 
 from treering.errors import AnalysisError
 from treering.pooling.checks import ArrayLike, check_effects
-from treering.pooling.counts import read_counts
-from treering.pooling.mantel_haenszel import hypergeometric
+from treering.pooling.counts import deviations, read_counts
 from treering.pooling.result import FloatArray
 
 FEW_TRIALS = 10
@@ -100,7 +99,7 @@ def harbord(table: pd.DataFrame) -> RegressionTest:
     AnalysisError
         A count that cannot be right, fewer than three usable trials, or all equally precise.
     """
-    score, information = hypergeometric(read_counts(table))
+    score, information = deviations(table)
     used = information > 0.0
     root = np.sqrt(information[used])
     return _line(root, score[used] / root, np.ones(root.size), "intercept", int((~used).sum()))

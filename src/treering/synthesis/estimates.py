@@ -113,7 +113,9 @@ def pool_planned(estimated: Estimated, rows: Sequence[TrialRow], outcome: Outcom
         return None
     plan = outcome.pooling
     if plan.method == "mantel-haenszel":
-        return pool_mantel_haenszel(values_table(rows), outcome.measure, correction=plan.correction)
+        return pool_mantel_haenszel(
+            values_table(rows), outcome.measure, correction=plan.correction, amount=plan.correction_amount
+        )
     return pool_by(plan, *estimated.numbers(rows))
 
 
@@ -176,7 +178,10 @@ def repool_rows(outcome: Outcome, rows: Sequence[Mapping[str, Any]]) -> float | 
         return None
     if outcome.pooling.method == "mantel-haenszel":
         table = pd.DataFrame([row["values"] for row in usable], index=[row["trial"] for row in usable])
-        return pool_mantel_haenszel(table, outcome.measure, correction=outcome.pooling.correction).estimate
+        plan = outcome.pooling
+        return pool_mantel_haenszel(
+            table, outcome.measure, correction=plan.correction, amount=plan.correction_amount
+        ).estimate
     estimates = np.array([row["estimate"] for row in usable], dtype=float)
     errors = np.array([row["standard_error"] for row in usable], dtype=float)
     return pool_by(outcome.pooling, estimates, errors**2).estimate
