@@ -12,18 +12,17 @@ from pathlib import Path
 #: Nothing phones out, and the telemetry task that disturbs a first start is gone.
 PRIVATE = {"DO_NOT_TRACK": "1", "PREFECT_SERVER_ANALYTICS_ENABLED": "false"}
 #: The first start on a new machine migrates the engine's own database and takes about 20 s, its limit.
-PATIENT = {"PREFECT_SERVER_EPHEMERAL_STARTUP_TIMEOUT_SECONDS": "120"}
+PATIENT = {"PREFECT_SERVER_EPHEMERAL_STARTUP_TIMEOUT_SECONDS": "120", "PREFECT_CLI_PROMPT": "false"}
 #: The temporary server writes to our stderr; harmless tracebacks of its recorder would frighten people. The
 #: client would print each refusal as a traceback, twice; the command says it in one sentence.
 QUIET = {
     "PREFECT_SERVER_LOGGING_LEVEL": "CRITICAL",
     "PREFECT_LOGGING_LEVEL": "CRITICAL",
-    "PREFECT_CLI_PROMPT": "false",
+    "PREFECT_LOGGING_ROOT_LEVEL": "CRITICAL",  # its workers log under names of their own
+    "PREFECT_LOGGING_INTERNAL_LEVEL": "CRITICAL",
 }
-
-
 #: A schedule runs unwatched: what fails must stand in its log.
-LOGGED = {**QUIET, "PREFECT_LOGGING_LEVEL": "WARNING"}
+LOGGED = {"PREFECT_SERVER_LOGGING_LEVEL": "CRITICAL", "PREFECT_LOGGING_LEVEL": "WARNING"}
 
 
 def prepare_engine(*, verbose: bool = False, unwatched: bool = False) -> None:
