@@ -12,7 +12,7 @@ Body = Mapping[str, Any]
 SCENARIOS = {
     "no effect": "if there is no effect",
     "effect to detect": "if the effect to detect is true",
-    "present estimate": "if the present estimate is true",
+    "present trend": "if the present estimate is true",
 }
 
 
@@ -35,10 +35,11 @@ def outlook_words(body: Body, names: Mapping[str, str]) -> dict[str, Any] | None
     found = (body.get("monitoring") or {}).get("outlook")
     if not found:
         return None
-    scenarios = list(found["steps"][0]["benefit"]) if found["steps"] else []
+    known = found["steps"][0]["benefit"] if found["steps"] else {}
+    scenarios = [name for name in SCENARIOS if name in known]
     return {
         "rows": [_row(step, scenarios, names) for step in found["steps"]],
-        "heads": [SCENARIOS.get(name, name) for name in scenarios],
+        "heads": [SCENARIOS[name] for name in scenarios],
         "reaches": _reaches(found),
         "next_lines": _next_lines(found.get("next_trial"), body),
         "not_dated": [names.get(trial, trial) for trial in found["not_dated"]],
@@ -76,7 +77,8 @@ def _next_lines(trial: Body | None, body: Body) -> list[str]:
         ("to_undo", "to undo the standing crossing"),
     )
     return [
-        f"Its own estimate would have to be {effect(trial[name], body['scale'], body['measure'])} {words}."
+        "The next trial's own estimate would have to be "
+        f"{effect(trial[name], body['scale'], body['measure'])} or further that way {words}."
         for name, words in ways
         if trial.get(name) is not None
     ]
