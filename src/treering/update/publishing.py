@@ -12,7 +12,7 @@ from treering.report import ReportView, render, render_index
 from treering.store import EvidenceStore, State
 from treering.terms import EntryKind
 from treering.update.context import Review, RunContext
-from treering.update.views import folder_name, index_rows, version_view
+from treering.update.views import folder_name, index_rows, still_ongoing, version_view
 
 
 def unpublished(store: EvidenceStore) -> list[dict[str, Any]]:
@@ -142,7 +142,7 @@ def status_of(state: State, context_day: str, review: Review, waiting: int) -> d
         "searches": dict(sorted(searches.items())),
         "planned_sources": dict(sorted(review.protocol.living.search_every_days.items())),
         "waiting": waiting,
-        "ongoing": len(state.live(EntryKind.ONGOING)),
+        "ongoing": len(still_ongoing(state)),
         "update_every_days": review.protocol.living.update_every_days,
         "last_run": runs[-1].body if runs else None,
     }

@@ -18,7 +18,6 @@ LISTS = {
     "waivers": EntryKind.WAIVER,
     "integrity": EntryKind.INTEGRITY,
     "searches": EntryKind.SEARCH,
-    "ongoing": EntryKind.ONGOING,
     "studies": EntryKind.STUDY,
     "reports": EntryKind.REPORT,
     "screening": EntryKind.SCREENING,
@@ -107,6 +106,7 @@ def view_from(store: EvidenceStore, basis: Basis, analyses: Mapping[str, dict[st
         changes=changes_of(basis, ordered),
         status=_status(basis),
         waiting=settled.waiting,
+        ongoing=_bodies(still_ongoing(basis.state)),
         third_readings=settled.third_readings,
         agreement_by_field=agreed["fields"],
         agreement_by_pair=agreed["pairs"],
@@ -121,6 +121,12 @@ def _resting(analyses: Mapping[str, dict[str, Any]]) -> list[str]:
     """Return the trials whose removal would undo a crossing: a third person reads them again."""
     blocks = [(body["monitoring"] or {}).get("rests_on") or {} for body in analyses.values()]
     return sorted({trial for block in blocks for group in block.get("sets", ()) for trial in group})
+
+
+def still_ongoing(state: State) -> list[StoredEntry]:
+    """Return the ongoing trials of which no result is verified yet."""
+    reported = {entry.body["trial"] for entry in state.live(EntryKind.RESULT)}
+    return [entry for entry in state.live(EntryKind.ONGOING) if entry.body["trial"] not in reported]
 
 
 def _bodies(entries: Sequence[StoredEntry]) -> list[dict[str, Any]]:
