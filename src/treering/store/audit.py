@@ -27,14 +27,14 @@ from sqlalchemy import Engine
 
 from treering.errors import StoreError
 from treering.store import comparing, reader
-from treering.store.audit_chain import ChainPass, pages
+from treering.store.audit_chain import ChainPass, chain_of, pages
 from treering.store.audit_roles import check_roles
 from treering.store.audit_rules import check_references, check_versions
 from treering.store.audit_schema import audit_engine, check_schema
-from treering.store.chain import ChainRow
 from treering.store.checkpoint import Checkpoint
 from treering.store.checks import RESTORE, Check, Findings, undecodable
 from treering.store.connection import place_of, reading, store_url
+from treering.store.entries import LedgerRow
 
 NEEDS_TABLES = range(2, 11)
 """Checks that cannot be made on a database without the tables of a store."""
@@ -110,10 +110,11 @@ def _walk(engine: Engine, limit: int, walk: ChainPass, findings: Findings) -> No
     """Read the ledger page by page, and compare the tables with each page."""
     count = 0
     for page in pages(engine, limit):
-        walk.links(page)
-        walk.grow(page)
-        for first, last in _runs(page):
-            for found in comparing.differences(engine, first, last + 1):
+        chain = chain_of(page)
+        walk.links(chain)
+        walk.grow(chain)
+        for rows in _runs(page):
+            for found in comparing.row_differences(engine, rows, rows[0][0], rows[-1][0] + 1):
                 findings.add(
                     5,
                     f"{found.table}.{found.column} is not what its canonical bytes say.",
@@ -126,15 +127,14 @@ def _walk(engine: Engine, limit: int, walk: ChainPass, findings: Findings) -> No
     findings.seen[5] = f"{count} entries"
 
 
-def _runs(page: Sequence[ChainRow]) -> Iterator[tuple[int, int]]:
-    """Yield first and last number of each stretch without a gap."""
+def _runs(page: Sequence[LedgerRow]) -> Iterator[Sequence[LedgerRow]]:
+    """Yield each stretch of rows without a gap in their numbers."""
     if page[-1][0] - page[0][0] == len(page) - 1:
-        yield page[0][0], page[-1][0]
+        yield page
         return
-    first = last = page[0][0]
-    for seq, *_ in page[1:]:
-        if seq != last + 1:
-            yield first, last
-            first = seq
-        last = seq
-    yield first, last
+    first = 0
+    for place in range(1, len(page)):
+        if page[place][0] != page[place - 1][0] + 1:
+            yield page[first:place]
+            first = place
+    yield page[first:]

@@ -13,17 +13,35 @@ from treering.store.chain import ChainRow, check_links, stated_previous, stated_
 from treering.store.checkpoint import Checkpoint
 from treering.store.checks import RESTORE, Findings
 from treering.store.connection import reading
+from treering.store.entries import ROW_FIELDS, LedgerRow
 from treering.store.merkle import Frontier
 from treering.store.plan import KEPT_LEVEL
 from treering.store.reader import fetch
 
 PAGE = 5000
 _LOWEST = -(2**63)
-_PAGE_QUERY = f"SELECT seq, canonical, hash FROM entry WHERE seq >= ? AND seq < ? ORDER BY seq LIMIT {PAGE}"
+_COLUMNS = ", ".join(f'"{name}"' for name in ROW_FIELDS)
+_PAGE_QUERY = f"SELECT {_COLUMNS} FROM entry WHERE seq >= ? AND seq < ? ORDER BY seq LIMIT {PAGE}"
 _VERSION = b'"kind":"version","known_at":"'
 
 
-def pages(engine: Engine, limit: int) -> Iterator[list[ChainRow]]:
+def chain_of(page: Sequence[LedgerRow]) -> list[ChainRow]:
+    """Return what the chain rules need of the rows of a page.
+
+    Parameters
+    ----------
+    page : sequence of LedgerRow
+        Rows of the ledger.
+
+    Returns
+    -------
+    list of (seq, canonical bytes, hash)
+        In the same order.
+    """
+    return [(row[0], row[10], row[9]) for row in page]
+
+
+def pages(engine: Engine, limit: int) -> Iterator[list[LedgerRow]]:
     """Yield the ledger a page at a time, whatever numbers its entries bear.
 
     Parameters
@@ -35,7 +53,7 @@ def pages(engine: Engine, limit: int) -> Iterator[list[ChainRow]]:
 
     Yields
     ------
-    list of (seq, canonical bytes, hash)
+    list of LedgerRow
         In order. Pages follow the entries, not their numbers: one entry numbered a billion must not make
         the audit walk through a billion places.
     """

@@ -12,7 +12,7 @@ from __future__ import annotations
 import json
 import math
 import re
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from json.encoder import encode_basestring
 from typing import Any
 
@@ -20,7 +20,27 @@ import rfc8785
 
 from treering.errors import CanonicalError
 
-_ENCODE = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False).encode
+
+def sorted_encoder() -> Callable[[Any], str]:
+    """Return a function that writes JSON with sorted keys and without spaces.
+
+    `json.JSONEncoder.encode` makes its C encoder anew for each value, which takes longer than writing a short
+    one; here it is made once.
+
+    Returns
+    -------
+    callable
+        Value to text; raises TypeError, ValueError or RecursionError for what is no JSON.
+    """
+    encoder = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
+    make: Any = getattr(json.encoder, "c_make_encoder", None)
+    if make is None:  # an interpreter without the accelerator
+        return encoder.encode
+    write = make(None, encoder.default, encode_basestring, None, ":", ",", True, False, False)
+    return lambda value: "".join(write(value, 0))
+
+
+_ENCODE = sorted_encoder()
 _LARGEST = 2**53 - 1
 _LONG = 16  # digits from which a whole number may lie beyond 2**53 - 1
 

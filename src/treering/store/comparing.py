@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
+from functools import cache
 from typing import Any
 
 from sqlalchemy import JSON, Engine
@@ -59,20 +60,45 @@ def differences(engine: Engine, since: int, until: int) -> Iterator[Difference]:
     Difference
         None for a sound store.
     """
-    queries = {kind: _typed_query(engine.dialect.name, kind) for kind in EntryKind}
     for start in range(since, until, _CHUNK):
         stop = min(start + _CHUNK, until)
-        rows = list(reader.ledger_rows(engine, start, stop))
-        with reading(engine) as connection:
-            typed = {
-                kind: {row[0]: tuple(row) for row in reader.fetch(connection, query, start, stop)}
-                for kind, query in queries.items()
-            }
-        for row in rows:
-            yield from _entry_differences(row, typed)
-        for kind, left in typed.items():
-            for seq in left:
-                yield Difference(seq, str(TABLES[kind].__tablename__), "row", "a row", "no row")
+        yield from row_differences(engine, list(reader.ledger_rows(engine, start, stop)), start, stop)
+
+
+def row_differences(
+    engine: Engine, rows: Iterable[LedgerRow], since: int, until: int
+) -> Iterator[Difference]:
+    """Compare ledger rows that were read already with their canonical bytes, and typed rows with both.
+
+    Parameters
+    ----------
+    engine : Engine
+        Engine of the store.
+    rows : iterable of LedgerRow
+        All rows from `since` on, before `until`; a few thousand.
+    since, until : int
+        First sequence number, and the one after the last.
+
+    Yields
+    ------
+    Difference
+        None for a sound store.
+    """
+    with reading(engine) as connection:
+        typed = {
+            kind: {row[0]: row for row in reader.fetch(connection, query, since, until)}
+            for kind, query in _typed_queries(engine.dialect.name).items()
+        }
+    for row in rows:
+        yield from _entry_differences(row, typed)
+    for kind, left in typed.items():
+        for seq in left:
+            yield Difference(seq, str(TABLES[kind].__tablename__), "row", "a row", "no row")
+
+
+@cache
+def _typed_queries(dialect: str) -> dict[EntryKind, str]:
+    return {kind: _typed_query(dialect, kind) for kind in EntryKind}
 
 
 def _typed_query(dialect: str, kind: EntryKind) -> str:

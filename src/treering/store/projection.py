@@ -2,18 +2,18 @@
 
 from __future__ import annotations
 
-import json
 from collections.abc import Callable, Mapping
 from typing import Any
 
 from sqlalchemy import JSON, BigInteger, Boolean, Column, Float, Integer
 
 from treering.errors import StoreError
+from treering.store.canonical import sorted_encoder
 from treering.store.models import KEY_PREFIXES, TABLES
 from treering.terms import EntryKind
 
 _LARGEST = 2**53 - 1
-_ENCODE = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False).encode
+_ENCODE = sorted_encoder()
 
 
 class _Unfit(ValueError):
