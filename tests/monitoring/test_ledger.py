@@ -2,6 +2,7 @@
 
 import json
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -263,6 +264,15 @@ def test_h22_what_is_new_does_not_hang_on_the_order_of_the_trials_or_the_last_di
     assert not holds_new_data(plan, [look], **turned)
     assert holds_new_data(plan, [look], trials="ABC", estimates=y + 0.001 * np.eye(3)[2], variances=v)
     assert holds_new_data(plan, [look], trials="ABD", estimates=y, variances=v)
+
+
+def test_h22_a_look_stored_with_ten_digits_is_not_new_however_precise_its_estimate():
+    plan = MonitoringPlan(effect=0.3, better="higher")
+    data = {"trials": "AB", "estimates": [98.7654321987, 98.7654329876], "variances": [1e-6, 1e-6]}
+    look = next_look(plan, [], date="2031-01-01", version=1, **data)
+    stored = replace(look, estimate=float(f"{look.estimate:.9e}"))
+    assert abs(stored.estimate - look.estimate) > 1e-8 * look.standard_error
+    assert not holds_new_data(plan, [stored], **data)
 
 
 def test_past_the_required_information_all_alpha_is_spent_once(review):

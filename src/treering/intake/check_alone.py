@@ -168,7 +168,8 @@ def _number_faults(record: Extraction, result: Result, outcome: Outcome) -> list
         if record.third_reading and not result.numbers():
             return [Finding("outcome", "a third reading needs at least one number.")]
         return impossible_numbers(result.numbers(), is_ratio=outcome.is_ratio)
-    return number_faults(result.numbers(), outcome, randomised=record.randomised)
+    arms = [(arm.side, arm.randomised) for arm in record.arms]
+    return number_faults(result.numbers(), outcome, randomised=record.randomised, arms=arms)
 
 
 def _arms(located: Located, record: Extraction) -> Iterator[Fault]:

@@ -130,7 +130,7 @@ def trial_faults(scene: Scene, located: Located, record: Extraction) -> Iterator
         if same:
             sentence = (
                 f"{record.registration} is also the register number of trial {', '.join(same)}; "
-                "one trial counts once, however many reports it has."
+                "one trial counts once, however many reports or arms it has."
             )
             yield located.fault("registration", sentence)
     if record.appeared() is None and scene.view.get(f"report/{record.report.id}") is None:

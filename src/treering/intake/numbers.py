@@ -25,7 +25,13 @@ class Finding(NamedTuple):
     sentence: str
 
 
-def number_faults(values: Numbers, outcome: Outcome, *, randomised: int | None = None) -> list[Finding]:
+def number_faults(
+    values: Numbers,
+    outcome: Outcome,
+    *,
+    randomised: int | None = None,
+    arms: Sequence[tuple[str, int | None]] = (),
+) -> list[Finding]:
     """Find what can't be in the numbers of one usable result.
 
     Parameters
@@ -36,6 +42,8 @@ def number_faults(values: Numbers, outcome: Outcome, *, randomised: int | None =
         The outcome of the protocol, whose measure says what is needed.
     randomised : int, optional
         How many the trial randomised.
+    arms : sequence of (side, randomised)
+        Side and number randomised of each arm that was read.
 
     Returns
     -------
@@ -45,6 +53,8 @@ def number_faults(values: Numbers, outcome: Outcome, *, randomised: int | None =
     return [
         *impossible_numbers(values, is_ratio=outcome.measure in RATIO_MEASURES),
         *_more_than_randomised(values, randomised),
+        *_more_than_the_arms(values, arms),
+        *_no_cluster_size(values),
         *_not_enough(values, outcome),
     ]
 
@@ -72,7 +82,7 @@ def _sign_faults(values: Numbers) -> list[Finding]:
     limits: dict[str, tuple[float, float]] = {
         "p_value": (0.0, 1.0),
         "ci_level": (0.5, 0.9999),
-        "icc": (-1.0, 1.0),
+        "icc": (0.0, 1.0),
         "mean_cluster_size": (1.0, math.inf),
     }
     faults = [
@@ -114,6 +124,26 @@ def _more_than_randomised(values: Numbers, randomised: int | None) -> list[Findi
     if randomised is None or analysed <= randomised:
         return []
     return [Finding("intervention_total", f"{analysed} people analysed, but only {randomised} randomised.")]
+
+
+def _more_than_the_arms(values: Numbers, arms: Sequence[tuple[str, int | None]]) -> Iterator[Finding]:
+    """Find a side that analyses more people than its arms, joined, randomised."""
+    for side in ARMS:
+        sizes = [size for of, size in arms if of == side]
+        total = values.get(f"{side}_total")
+        if total is None or not sizes or None in sizes:
+            continue
+        joined = sum(size for size in sizes if size is not None)
+        if total > joined:
+            sentence = (
+                f"{total} people analysed, but the {side} side randomised {joined}: nobody counts twice."
+            )
+            yield Finding(f"{side}_total", sentence)
+
+
+def _no_cluster_size(values: Numbers) -> Iterator[Finding]:
+    if "icc" in values and "mean_cluster_size" not in values:
+        yield Finding("icc", "it allows for clustering only with mean_cluster_size beside it.")
 
 
 def _not_enough(values: Numbers, outcome: Outcome) -> list[Finding]:

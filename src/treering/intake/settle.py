@@ -129,7 +129,8 @@ def _held(final: Final, protocol: Protocol) -> Final | Waiting:
     if not _is_usable(final):
         return final
     randomised = final.reading["study"].get("randomised")
-    faults = number_faults(final.reading["values"], outcome, randomised=randomised)
+    arms = [(arm["side"], arm["randomised"]) for arm in final.reading["arms"]]
+    faults = number_faults(final.reading["values"], outcome, randomised=randomised, arms=arms)
     return _unsound(final, faults) if faults else final
 
 

@@ -222,8 +222,10 @@ def _same_data(last: Look, trials: Sequence[str], test: PlannedTest | None) -> b
     if test is None or last.estimate is None or last.standard_error is None:
         return test is None and last.estimate is None
     error, information = test.pooled.standard_error, test.information
+    # Rounding moves an estimate by a share of itself, which may be far more than such a share of its error.
+    size = max(error, abs(last.estimate))
     return (
-        abs(test.pooled.estimate - last.estimate) <= SAME_DATA * error
+        abs(test.pooled.estimate - last.estimate) <= SAME_DATA * size
         and math.isclose(error, last.standard_error, rel_tol=SAME_DATA)
         and math.isclose(information, last.information, rel_tol=SAME_DATA)
     )

@@ -6,13 +6,13 @@ import math
 from collections.abc import Sequence
 from typing import Any
 
-from treering.errors import AnalysisError
 from treering.monitoring import (
     PER_TAIL_CONVENTION,
     Look,
     MonitoringPlan,
     RestsOn,
     hindsight,
+    holds_new_data,
     information_per_participant,
     minimum_trials,
     next_look,
@@ -24,9 +24,6 @@ from treering.synthesis.estimates import Estimated
 from treering.synthesis.outlook import ongoing_trials, outlook
 from treering.synthesis.trials import StateView
 from treering.terms import CROSSED, Measure
-
-#: Looks are stored with 10 significant digits; data that differ by less have not changed.
-SAME_DATA = 1e-8
 
 
 def plan_of(outcome: Outcome) -> MonitoringPlan | None:
@@ -93,7 +90,9 @@ def monitoring_block(
     trials = [row.trial for row in estimated.main]
     ledger = list(earlier)
     per_participant = _per_participant(outcome, estimated)
-    fresh = not _unchanged(plan, ledger, trials, estimates, variances)
+    fresh = _plan_changed(plan, ledger) or holds_new_data(
+        plan, ledger, trials=trials, estimates=estimates, variances=variances
+    )
     if fresh:
         amendment = protocol.amendments[-1].date.isoformat() if protocol.amendments else None
         ledger.append(
@@ -131,32 +130,6 @@ def monitoring_block(
 
 def _plan_changed(plan: MonitoringPlan, ledger: Sequence[Look]) -> bool:
     return bool(ledger) and ledger[-1].plan_digest != plan.digest()
-
-
-def _unchanged(
-    plan: MonitoringPlan, ledger: Sequence[Look], trials: Sequence[str], estimates: Any, variances: Any
-) -> bool:
-    """Say whether there is nothing to look at: no trial ever, or the data of the last look under its plan."""
-    if not ledger:
-        return not trials
-    last = ledger[-1]
-    if _plan_changed(plan, ledger) or list(last.trials) != list(trials):
-        return False
-    if last.estimate is None:
-        return not trials
-    probe = next_test(plan, estimates, variances)
-    pairs = zip(probe, (last.estimate, last.information), strict=True)
-    return all(math.isclose(now, then, rel_tol=SAME_DATA, abs_tol=0.0) for now, then in pairs)
-
-
-def next_test(plan: MonitoringPlan, estimates: Any, variances: Any) -> tuple[float, float]:
-    """Return planned estimate and information of the data, to compare with a stored look."""
-    from treering.monitoring.planned import planned_test
-
-    test = planned_test(plan, estimates, variances)
-    if test is None:
-        raise AnalysisError("no trial to test")
-    return test.pooled.estimate, test.information
 
 
 def _inputs(outcome: Outcome, protocol: Protocol, estimated: Estimated) -> dict[str, Any]:
