@@ -105,7 +105,7 @@ def test_a_review_without_a_store_says_how_to_get_one(
 ) -> None:
     ran = run(*(part.format(review.folder) for part in command))
     assert (ran.status, ran.out) == (1, "")
-    assert "no evidence store" in ran.err
+    assert "there is no evidence store yet. Run `treering update` once" in ran.err
     assert not (review.folder / "store").exists()
 
 

@@ -78,6 +78,8 @@ def test_a_filled_in_config_passes(run: Callable[..., Any], tmp_path: Path) -> N
     ran = run("check", tmp_path)
     assert ran.status == 0, ran.err
     assert "An update would lay down no version." in ran.out
+    assert "names 1 person as extractor; verification needs 2." in ran.out
+    assert "names no person as adjudicator; verification needs 1." in ran.out
     assert read_review(tmp_path).protocol.outcomes[0].monitoring is not None
 
 

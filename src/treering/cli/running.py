@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -133,6 +134,8 @@ def update(folder: Path = Path(), /, *, verbose: bool = False, json: bool = Fals
     from treering.update import read_review
 
     read_review(folder)  # a fault in the config is told before the engine starts
+    if sys.stderr.isatty():
+        remark("The engine starts first; on a new machine that takes half a minute.")
     summary = _flow(verbose)(folder, datetime.now(UTC))
     if json:
         say_json(_as_dict(summary))

@@ -110,9 +110,13 @@ def open_evidence(review: Review, *, make: bool = False) -> EvidenceStore:
     place = review.store_place
     try:
         store = open_store(place)
-    except NoStoreError:
+    except NoStoreError as error:
         if not make:
-            raise
+            raise NoStoreError(
+                "there is no evidence store yet.",
+                file=error.file,
+                next_step="Run `treering update` once, or correct [store] url in config/review.toml.",
+            ) from error
         return create(place, review=review.protocol.review.id)
     if store.review != review.protocol.review.id:
         store.close()

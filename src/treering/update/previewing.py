@@ -6,8 +6,9 @@ from pathlib import Path
 from typing import Any
 
 from treering.errors import NoStoreError
+from treering.protocol import Protocol
 from treering.store import State
-from treering.terms import EntryKind
+from treering.terms import EntryKind, PersonRole
 from treering.update.context import open_evidence, read_review
 from treering.update.taking_in import moved, read_intake, verify
 from treering.update.versions import TRIGGERS
@@ -45,7 +46,7 @@ def preview(folder: Path, known_at: str) -> dict[str, Any]:
     return {
         "files": [dropped.shown for dropped in (*moved(taken.checked), *taken.checked.returned)],
         "returned": taken.returned,
-        "remarks": taken.remarks,
+        "remarks": [*_team_remarks(review.protocol), *taken.remarks],
         "verified": [
             {"trial": entry.body["trial"], "outcome": entry.body["outcome"]}
             for entry in fresh
@@ -54,3 +55,14 @@ def preview(folder: Path, known_at: str) -> dict[str, Any]:
         "waiting": list(taken.waiting),
         "new_version": any(entry.kind in TRIGGERS for entry in fresh),
     }
+
+
+def _team_remarks(protocol: Protocol) -> list[str]:
+    """Say which roles nobody holds yet that every verified result needs."""
+    needed = {PersonRole.EXTRACTOR: protocol.verification.extractors, PersonRole.ADJUDICATOR: 1}
+    held = {role: sum(role in person.roles for person in protocol.people) for role in needed}
+    return [
+        f"config/review.toml names {held[role] or 'no'} person as {role.value}; verification needs {number}."
+        for role, number in needed.items()
+        if held[role] < number
+    ]
