@@ -278,6 +278,7 @@ def test_a_changed_byte_of_the_file_is_found_unless_nothing_in_the_store_changed
         ("DELETE FROM entry WHERE seq = 9", 2, "entry 9 is missing before it"),
         ("UPDATE entry SET hash = zeroblob(32) WHERE seq = 9", 3, "entry 9 (version 1)"),
         ("UPDATE entry SET canonical = 'text' WHERE seq = 9", 3, "entry 9 (version 1)"),
+        ("UPDATE entry SET canonical = 0.5, hash = 7 WHERE seq = 9", 3, "entry 9 (version 1)"),
         ("UPDATE study SET title = 'other' WHERE entry = 0", 5, "study.title"),
         ("DELETE FROM tree_node", 6, "node 0 of level 8"),
         ("INSERT INTO tree_node VALUES (8, 5, zeroblob(32))", 6, "node 5 of level 8 belongs to no entries"),
@@ -410,6 +411,13 @@ def test_a_file_that_is_no_store_fails_the_first_check(tmp_path, data):
     path = tmp_path / "evidence.db"
     path.write_bytes(data)
     assert list(failed(path)) == [1]
+
+
+def test_a_schema_that_is_no_text_fails_the_first_check(damaged):
+    content = damaged.read_bytes()
+    assert b"CREATE TABLE entry (" in content
+    damaged.write_bytes(content.replace(b"CREATE TABLE entry (", b"CREATE TABLE entr\xa7 (", 1))
+    assert list(failed(damaged)) == [1]
 
 
 def test_a_store_of_an_earlier_release_is_left_as_it_is(damaged, monkeypatch):

@@ -113,6 +113,7 @@ def _walk(engine: Engine, limit: int, walk: ChainPass, findings: Findings) -> No
         chain = chain_of(page)
         walk.links(chain)
         walk.grow(chain)
+        walk.clock(page)
         for rows in _runs(page):
             for found in comparing.row_differences(engine, rows, rows[0][0], rows[-1][0] + 1):
                 findings.add(

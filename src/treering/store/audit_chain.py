@@ -1,4 +1,4 @@
-"""Checks 2, 3, 4, 6 and 10 in one pass over the canonical bytes; memory does not grow with the store."""
+"""Checks 2, 3, 4, 6, 10 and the clock in one pass over the ledger; memory does not grow with it."""
 
 from __future__ import annotations
 
@@ -92,10 +92,11 @@ class ChainPass:
         self._nodes = nodes
         self._kept = len(nodes)
         self._hash = ""
+        self._known = ""
         self._frontier = Frontier()
         self._waiting = sorted(checkpoints, key=lambda checkpoint: checkpoint.size, reverse=True)
         self._met = (0, len(self._waiting))  # size of the last checkpoint that agreed; how many there are
-        for check in (2, 3, 4, 6, 10):
+        for check in (2, 3, 4, 6, 7, 10):
             findings.seen[check] = ""
 
     def links(self, page: Sequence[ChainRow]) -> None:
@@ -140,6 +141,24 @@ class ChainPass:
                 expected=self._hash or "no hash",
             )
         self._hash = made.hexdigest()
+
+    def clock(self, page: Sequence[LedgerRow]) -> None:
+        """Check that nothing was known before the entry before it (part of check 7).
+
+        Parameters
+        ----------
+        page : sequence of LedgerRow
+            The same entries.
+        """
+        times = [str(row[4]) for row in page]
+        if times[0] < self._known or times != sorted(times):
+            earlier = self._known
+            for row, known in zip(page, times, strict=True):
+                if known < earlier:
+                    text = "it was known before the entry before it."
+                    self._findings.add(7, text, seq=row[0], found=known, expected=f"{earlier} or later")
+                earlier = known
+        self._known = times[-1]
 
     def grow(self, page: Sequence[ChainRow]) -> None:
         """Let the tree grow over one page (checks 6 and 10).

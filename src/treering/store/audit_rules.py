@@ -29,14 +29,9 @@ WHERE CASE
        OR kind NOT IN (kind_before, 'withdrawal')
 END ORDER BY seq"""
 
-_CLOCK = """
-SELECT seq, known_at, earlier FROM (
-  SELECT seq, known_at, lag(known_at) OVER (ORDER BY seq) AS earlier FROM entry) AS ordered
-WHERE known_at < earlier ORDER BY seq"""
-
 
 def check_references(connection: Connection, findings: Findings) -> None:
-    """Check the rule of live entries, the order of the clock, keys, and what entries name (check 7).
+    """Check the rule of live entries, keys, and what entries name (check 7).
 
     Parameters
     ----------
@@ -51,8 +46,6 @@ def check_references(connection: Connection, findings: Findings) -> None:
         findings.add(
             7, "it breaks the rule of one live entry on a key.", seq=seq, found=found, expected=expected
         )
-    for seq, known, earlier in _some(connection, _CLOCK):
-        findings.add(7, "it was known before the entry before it.", seq=seq, found=known, expected=earlier)
     for seq, kind, key in _some(connection, _key_query()):
         findings.add(7, "its key is not of its kind.", seq=seq, found=f"{kind} {key}")
     for kind in EntryKind:

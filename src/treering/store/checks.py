@@ -162,6 +162,9 @@ class Findings:
             if undecodable(error):
                 raise
             self.add(check, f"The check could not be made: {error}", step="")
+        except UnicodeDecodeError as error:
+            # SQLite's own message quotes the damaged place, and Python cannot read that.
+            self.add(check, f"The check could not be made: the database is damaged ({error}).")
 
     def checks(self, versions: Sequence[tuple[int, int]] = ()) -> list[Check]:
         """Return the checks begun so far.
