@@ -196,10 +196,16 @@ def _pool_runs(
         return columns
 
     runs = list(chunks(counts))
-    if len(runs) == 1:
-        return [one(runs[0])]
-    with ThreadPoolExecutor(min(len(runs), os.cpu_count() or 1)) as workers:
+    workers_wanted = min(len(runs), cores())
+    if workers_wanted == 1:
+        return [one(run) for run in runs]
+    with ThreadPoolExecutor(workers_wanted) as workers:
         return list(workers.map(one, runs))
+
+
+def cores() -> int:
+    """Cores that this process may use, which can be fewer than the machine has."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
 def split_weights(weights: FloatArray, counts: IntArray) -> npt.NDArray[np.object_]:

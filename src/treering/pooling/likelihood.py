@@ -7,9 +7,11 @@ sum w (ML) or sum w - sum w^2 / sum w (REML).
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 import numpy as np
 
-from treering.pooling.batch import Batch
+from treering.pooling.batch import Batch, IntArray
 from treering.pooling.moments import Fit, dot, fit
 from treering.pooling.result import FloatArray
 
@@ -33,8 +35,21 @@ def slope_terms(now: Fit, *, restricted: bool) -> tuple[FloatArray, FloatArray]:
     return dot(now.pull, now.pull), expected
 
 
-def slope_changes(now: Fit, *, restricted: bool) -> tuple[FloatArray, FloatArray]:
-    """Return minus the derivatives of A and B in tau2; from dP/dt = -PP for the projection P.
+class Slope(NamedTuple):
+    """Twice the slope of the likelihood is a - b; fall_a = -a' and fall_b = -b' in tau2, shape (g,) each."""
+
+    a: FloatArray
+    b: FloatArray
+    fall_a: FloatArray
+    fall_b: FloatArray
+
+    def columns(self, which: IntArray) -> Slope:
+        """Take the syntheses at these positions."""
+        return Slope(*(field[which] for field in self))
+
+
+def slope(now: Fit, *, restricted: bool) -> Slope:
+    """Return the terms of the slope and how fast they fall; from dP/dt = -PP for the projection P.
 
     Parameters
     ----------
@@ -45,17 +60,17 @@ def slope_changes(now: Fit, *, restricted: bool) -> tuple[FloatArray, FloatArray
 
     Returns
     -------
-    tuple of ndarray, shape (g,)
-        -A' = 2 y'PPPy and -B' = trace PP.
+    Slope
+        A = y'PPy, B (see the module's text), -A' = 2 y'PPPy, and -B' = trace PP, or sum w^2 for ML.
     """
-    shift = dot(now.w, now.pull)
-    bend = np.einsum("ij,ij,ij->j", now.w, now.pull, now.pull) - shift * shift / now.total
-    square = dot(now.w, now.w)
+    a, square = dot(now.pull, now.pull), dot(now.w, now.w)
+    inner = now.w * now.pull
+    shift = inner.sum(axis=0)
+    fall_a = 2.0 * (dot(inner, now.pull) - shift * shift / now.total)
     if not restricted:
-        return 2.0 * bend, square
-    cube = np.einsum("ij,ij,ij->j", now.w, now.w, now.w)
-    ratio = square / now.total
-    return 2.0 * bend, square - 2.0 * cube / now.total + ratio * ratio
+        return Slope(a, now.total, fall_a, square)
+    cube, ratio = dot(np.multiply(now.w, now.w, out=inner), now.w), square / now.total
+    return Slope(a, now.total - ratio, fall_a, square - 2.0 * cube / now.total + ratio * ratio)
 
 
 def log_likelihood(batch: Batch, tau2: FloatArray, *, restricted: bool) -> FloatArray:

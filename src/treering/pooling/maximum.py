@@ -1,9 +1,9 @@
 """ML and REML estimates of tau2 as the global maximum of the profile likelihood.
 
 The likelihood can have two maxima in tau2, one of them at zero (the aspirin trials of Fleiss 1993 under ML
-are an example), so an iteration that climbs from one start may end on the lower one. Here the slope is read
-along the whole range that can hold a maximum, every descent through zero is refined, and the highest maximum
-is taken.
+are an example), so an iteration that climbs from one start may end on the lower one. Where `ascent` proves
+that there is one maximum at most it is climbed to. Everywhere else the slope is read along the whole range
+that can hold a maximum, every descent through zero is refined, and the highest maximum is taken.
 
 Range. On contrasts free of the mean the model has variances lambda_j + tau2 with every lambda_j between the
 smallest and the largest v. The slope of the restricted likelihood is proportional to
@@ -24,9 +24,9 @@ from collections.abc import Iterator
 import numpy as np
 import numpy.typing as npt
 
-from treering.errors import NotConvergedError
+from treering.pooling.ascent import TINY, refine, single_maximum
 from treering.pooling.batch import CHUNK_NUMBERS, Batch
-from treering.pooling.likelihood import log_likelihood, slope_changes, slope_terms
+from treering.pooling.likelihood import log_likelihood, slope_terms
 from treering.pooling.moments import Fit, fit
 from treering.pooling.qroot import newton_step
 from treering.pooling.result import FloatArray
@@ -35,9 +35,6 @@ GRID_STEP = 1.0
 DENSER = 4
 LEVEL = 0.4
 NEAR = 0.5
-MAX_STEPS = 200
-RELATIVE_STEP = 1e-6
-TINY = np.finfo(np.float64).tiny
 
 
 def maximise(batch: Batch, at_zero: Fit, *, restricted: bool) -> FloatArray:
@@ -62,6 +59,14 @@ def maximise(batch: Batch, at_zero: Fit, *, restricted: bool) -> FloatArray:
     NotConvergedError
         A maximum could not be refined.
     """
+    best, left = single_maximum(batch, at_zero, restricted=restricted)
+    if left.size:
+        best[left] = _highest(batch.columns(left), at_zero.columns(left), restricted)
+    return best
+
+
+def _highest(batch: Batch, at_zero: Fit, restricted: bool) -> FloatArray:
+    """Read the slope along the whole range and take the highest of all maxima."""
     lowest, reach = _range(batch, at_zero)
     best, doubt = _search(batch, at_zero, lowest, reach, GRID_STEP, restricted)
     if doubt.size:
@@ -182,7 +187,7 @@ def _maxima(
     start = _first_guess(grid, a, b, at, which)
     every = which.size == batch.k.size and bool((which == np.arange(which.size)).all())
     part = batch if every else batch.columns(which)
-    return _refine(part, low, high, start, restricted), which, ~above[0]
+    return refine(part, low, high, start, restricted=restricted), which, ~above[0]
 
 
 def _first_guess(
@@ -199,32 +204,6 @@ def _first_guess(
     bend = ((t2 - t1) / (r2 - r1) - straight) / (r2 - r0)
     guess = t0 - r0 * straight + r0 * r1 * bend
     return np.where((guess > t0) & (guess < t1), guess, t0 - r0 * straight)
-
-
-def _refine(batch: Batch, low: FloatArray, high: FloatArray, t: FloatArray, restricted: bool) -> FloatArray:
-    """Newton on B / A = 1 inside brackets that shrink at every step; halving where Newton leaves them."""
-    for _ in range(MAX_STEPS):
-        now = fit(batch, t)
-        a, b = slope_terms(now, restricted=restricted)
-        fall_a, fall_b = slope_changes(now, restricted=restricted)
-        low, high = np.where(a > b, t, low), np.where(a > b, high, t)
-        turn = b * fall_a - a * fall_b
-        moved = t + (a - b) * a / np.where(turn == 0.0, TINY, turn)
-        moved = np.where((moved >= low) & (moved <= high), moved, 0.5 * (low + high))
-        unsettled = np.flatnonzero(np.abs(moved - t) > RELATIVE_STEP * (batch.k / now.total))
-        t = moved
-        if unsettled.size == 0:
-            return t
-        if 2 * unsettled.size < t.size:
-            # The few slow ones go on alone.
-            rest = batch.columns(unsettled)
-            t[unsettled] = _refine(rest, low[unsettled], high[unsettled], t[unsettled], restricted)
-            return t
-    raise NotConvergedError(
-        "The likelihood of the between-trial variance could not be maximised.",
-        found=f"{unsettled.size} syntheses open after {MAX_STEPS} steps",
-        next_step="Check the units of estimates and variances.",
-    )
 
 
 def _settle(

@@ -39,7 +39,7 @@ class Fit(NamedTuple):
 
     def columns(self, which: IntArray) -> Fit:
         """Take the syntheses at these positions."""
-        return Fit(*(field[..., which] for field in self))
+        return Fit(*(field.take(which, axis=-1) for field in self))
 
 
 def dot(a: FloatArray, b: FloatArray) -> FloatArray:
@@ -63,7 +63,8 @@ def fit(batch: Batch, tau2: FloatArray) -> Fit:
     Fit
         Weights and sums.
     """
-    w = np.reciprocal(batch.v + tau2)
+    w = batch.v + tau2
+    np.reciprocal(w, out=w)
     total = w.sum(axis=0)
     mean = dot(w, batch.y) / total
     residual = batch.y - mean
