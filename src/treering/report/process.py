@@ -3,16 +3,16 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Mapping
 from datetime import date
 from typing import Any
 
-from treering.report.labels import value_words
 from treering.report.numbers import count, plural
+from treering.report.process_parts import Table, table, title_of
+from treering.report.readers import agreement, pairs, third_readings, verification, waiting, waivers
 from treering.report.view import ReportView
 
 Body = Mapping[str, Any]
-Table = dict[str, Any]
 
 
 def process_tables(view: ReportView) -> list[Table]:
@@ -30,13 +30,13 @@ def process_tables(view: ReportView) -> list[Table]:
         ``after``.
     """
     return [
-        _waiting(view),
-        _waivers(view),
+        waiting(view),
+        waivers(view),
         _left_out(view),
-        _verification(view),
-        _agreement(view),
-        _pairs(view),
-        _third_readings(view),
+        verification(view),
+        agreement(view),
+        pairs(view),
+        third_readings(view),
         _ongoing(view),
         _searches(view),
         _flow(view),
@@ -49,104 +49,6 @@ def process_tables(view: ReportView) -> list[Table]:
     ]
 
 
-def _table(
-    title: str,
-    heads: Sequence[str],
-    rows: Iterable[Sequence[Any]],
-    none: str,
-    caption: str,
-    *,
-    anchor: str = "",
-    after: str = "",
-) -> Table:
-    texts = [[_cell(cell) for cell in row] for row in rows]
-    return {
-        "title": title,
-        "heads": heads,
-        "rows": texts,
-        "none": none,
-        "caption": caption,
-        "anchor": anchor,
-        "after": after,
-    }
-
-
-def _cell(value: Any) -> str:
-    return "not given" if value is None or value == "" else value_words(value)
-
-
-def _title(view: ReportView, outcome: str | None) -> str:
-    body = view.analyses.get(outcome or "")
-    return str(body["title"]) if body else (outcome or "all outcomes")
-
-
-def _waiting(view: ReportView) -> Table:
-    rows = [(w["trial"], _title(view, w.get("outcome")), w["why"]) for w in view.listed("waiting")]
-    return _table(
-        "Waiting items",
-        ("Trial", "Outcome", "Waits because"),
-        rows,
-        "Nothing waits.",
-        "Results that are not verified yet stand in no analysis.",
-    )
-
-
-def _waivers(view: ReportView) -> Table:
-    rows = [
-        (w["trial"], _title(view, w["outcome"]), w["person"], w["reason"]) for w in view.listed("waivers")
-    ]
-    heads = ("Trial", "Outcome", "Waived by", "Reason")
-    return _table(
-        "Waivers of the second reading",
-        heads,
-        rows,
-        "No waiver: every result was read by two people.",
-        "Each result here was let in on one reading, by a named person.",
-    )
-
-
-def _agreement(view: ReportView) -> Table:
-    rows = [
-        (value_words(a["field"]), a["compared"], a["differed"]) for a in view.listed("agreement_by_field")
-    ]
-    return _table(
-        "Agreement of the two readers, by field",
-        ("Field", "Compared", "Differed"),
-        rows,
-        "No number was read by two people yet.",
-        "What differed was settled by a third person at the source.",
-    )
-
-
-def _pairs(view: ReportView) -> Table:
-    rows = [
-        (f"{a['first']} and {a['second']}", a["compared"], a["differed"])
-        for a in view.listed("agreement_by_pair")
-    ]
-    return _table(
-        "Agreement of the two readers, by pair",
-        ("Readers", "Numbers compared", "Differed"),
-        rows,
-        "No pair of readers yet.",
-        "Counted over the live verifications.",
-    )
-
-
-def _third_readings(view: ReportView) -> Table:
-    rows = [
-        (t["trial"], _title(view, t["outcome"]), ", ".join(value_words(name) for name in t["fields"]))
-        for t in view.listed("third_readings")
-    ]
-    return _table(
-        "To be read again by a third person",
-        ("Trial", "Outcome", "Fields"),
-        rows,
-        "No agreed number is drawn for another reading.",
-        "A share of the agreed numbers (by the protocol), drawn by a fixed rule, and every trial that a "
-        "crossing rests on. They hold nothing back.",
-    )
-
-
 def _left_out(view: ReportView) -> Table:
     rows = [
         (row["label"], body["title"], row["left_out"])
@@ -155,35 +57,12 @@ def _left_out(view: ReportView) -> Table:
         if not row["in_main"]
     ]
     heads = ("Trial", "Outcome", "Reason")
-    return _table(
+    return table(
         "Trials left out of a main analysis",
         heads,
         rows,
         "No trial with a verified result is left out.",
         "They stay in the store and in the tables of this page.",
-    )
-
-
-def _verification(view: ReportView) -> Table:
-    done = view.listed("verifications")
-    bases = Counter(v["basis"] for v in done)
-    fields = sum(v.get("fields") or 0 for v in done)
-    differ = sum(len(v.get("differences") or ()) for v in done)
-    reread = sum(bool(v.get("reread")) for v in done)
-    rows = [(basis, bases[basis]) for basis in sorted(bases)]
-    after = (
-        ""
-        if not done
-        else f"{plural(fields, 'field')} compared, {differ} differed; {plural(reread, 'result')} read again."
-    )
-    return _table(
-        "How results were verified",
-        ("Basis", "Results"),
-        rows,
-        "No verified result in the store.",
-        "Two people read each result apart; a third settles what differs.",
-        anchor="verification",
-        after=after,
     )
 
 
@@ -195,12 +74,12 @@ def _ongoing(view: ReportView) -> Table:
             count(o.get("planned")),
             o.get("expected_end"),
             _overdue(view, o),
-            ", ".join(_title(view, name) for name in o.get("outcomes") or ()),
+            ", ".join(title_of(view, name) for name in o.get("outcomes") or ()),
         )
         for o in view.listed("ongoing")
     ]
     heads = ("Trial", "Registration", "Planned people", "Expected end", "State", "Outcomes")
-    return _table(
+    return table(
         "Ongoing trials",
         heads,
         rows,
@@ -234,7 +113,7 @@ def _searches(view: ReportView) -> Table:
         outcome = run.get("error") or f"{count(run.get('new_hits'))} new of {count(run.get('hits'))}"
         rows.append((source, f"{run['date']}, {ago}{late}", due, run.get("strategy"), run.get("by"), outcome))
     heads = ("Source", "Last run", "Planned", "Strategy", "By", "Found")
-    return _table(
+    return table(
         "Searches",
         heads,
         rows,
@@ -256,7 +135,7 @@ def _flow(view: ReportView) -> Table:
     heads = ("Decision", "Reason", "Reports")
     rows = [(d, r if r or d != "exclude" else None, n) for d, r, n in rows]
     shown = [(d, r if r else ("not given" if d == "exclude" else "none"), n) for d, r, n in rows]
-    return _table(
+    return table(
         "Flow, counted from the decisions",
         heads,
         shown,
@@ -285,7 +164,7 @@ def _studies(view: ReportView) -> Table:
         for study in view.listed("studies")
     ]
     heads = ("Trial", "Registration", "Design", "Randomised", "Funding", "Interests", "Reports")
-    return _table(
+    return table(
         "Trials and their reports",
         heads,
         rows,
@@ -309,7 +188,7 @@ def _amendments(view: ReportView) -> Table:
     heads = ("Date", "Author", "Clauses", "Reason", "Results seen")
     none = "The protocol has not been amended."
     caption = "Dated changes of the plan, and whether results had been seen."
-    return _table("Amendments of the protocol", heads, rows, none, caption, anchor="amendments")
+    return table("Amendments of the protocol", heads, rows, none, caption, anchor="amendments")
 
 
 def _people(view: ReportView) -> Table:
@@ -317,7 +196,7 @@ def _people(view: ReportView) -> Table:
     funding = view.protocol.review.funding
     after = f"Support: {funding}." if funding else "Support: the protocol names none."
     heads = ("Person", "Roles", "Own trials (kept away from)")
-    return _table(
+    return table(
         "People",
         heads,
         rows,
@@ -336,7 +215,7 @@ def _living(view: ReportView) -> Table:
         ("Certainty read again", f"every {living.certainty_reread_days} days"),
         ("Retirement rule", living.retirement_rule or "none: the protocol states no rule"),
     ]
-    return _table(
+    return table(
         "Living mode",
         ("Step", "Plan"),
         rows,
@@ -348,10 +227,11 @@ def _living(view: ReportView) -> Table:
 
 def _notices(view: ReportView) -> Table:
     rows = [
-        (n["event"], _title(view, n["synthesis"]), n["person"], n["channel"]) for n in view.listed("notices")
+        (n["event"], title_of(view, n["synthesis"]), n["person"], n["channel"])
+        for n in view.listed("notices")
     ]
     heads = ("Event", "Outcome", "Person", "Channel")
-    return _table(
+    return table(
         "Notices to the panel for this version",
         heads,
         rows,
@@ -365,7 +245,7 @@ def _defects(view: ReportView) -> Table:
         (d["id"], d["description"], ", ".join(str(v) for v in d["versions"])) for d in view.listed("defects")
     ]
     heads = ("Defect", "What", "Versions")
-    return _table(
+    return table(
         "Defects of the tool that touch published versions",
         heads,
         rows,
