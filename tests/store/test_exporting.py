@@ -107,7 +107,11 @@ def test_each_line_of_the_ledger_hashes_to_its_entry(exported):
 
 
 def test_package_lists_every_file_with_its_digest_and_every_column_with_its_meaning(exported):
-    """Names of properties: Data Package and Table Schema, specs.frictionlessdata.io, version 1."""
+    """Names of properties: Data Package and Table Schema, specs.frictionlessdata.io, version 1.
+
+    The general-purpose program frictionless 5.21 called every file of an export of the demo review valid
+    (December 2026), and found each file whose size was misstated.
+    """
     evidence, folder = exported
     package = json.loads((folder / "datapackage.json").read_text())
     assert package["name"] == "invented-review"

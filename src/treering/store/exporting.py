@@ -256,6 +256,7 @@ def _resource(folder: Path, path: str, name: str, form: str, **more: Any) -> dic
     digest, size = file_digest(folder / path)
     return {
         "profile": "tabular-data-resource" if "schema" in more else "data-resource",
+        "type": "table" if "schema" in more else "file",
         "name": name.replace("_", "-"),
         "path": path,
         "format": form,
