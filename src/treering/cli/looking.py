@@ -68,7 +68,7 @@ def history(
     if json:
         say_json(rows)
     else:
-        say_table(rows, columns)
+        say_table(rows, columns, short=("root",))
         if not rows:
             remark("Nothing in the store fits.")
     return EXIT_DONE

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import json
 import sys
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from typing import Any
 
 EXIT_DONE = 0
 EXIT_REFUSED = 1
 EXIT_WRONG_USE = 2
+#: A column of single words up to this length, dates among them, is never broken over lines.
+_WHOLE = 20
 
 
 def say(text: str) -> None:
@@ -29,7 +31,9 @@ def say_json(value: Any) -> None:
     print(json.dumps(plain(value), indent=2, ensure_ascii=False, allow_nan=False))
 
 
-def say_table(rows: Sequence[Mapping[str, Any]], columns: Mapping[str, str], *, title: str = "") -> None:
+def say_table(
+    rows: Sequence[Mapping[str, Any]], columns: Mapping[str, str], *, short: Collection[str] = ()
+) -> None:
     """Print rows as a table: plain tab-separated text when piped, ruled on a terminal.
 
     Parameters
@@ -38,31 +42,49 @@ def say_table(rows: Sequence[Mapping[str, Any]], columns: Mapping[str, str], *, 
         The data.
     columns : mapping of str to str
         Field name to column head, in order.
-    title : str
-        Printed above on a terminal.
+    short : collection of str
+        Fields with long hashes, of which a terminal shows the beginning; a pipe gets the whole.
     """
-    cells = [[_cell(row.get(field)) for field in columns] for row in rows]
-    if not sys.stdout.isatty():
-        print("\t".join(columns.values()))
-        for row in cells:
-            print("\t".join(row))
+    if sys.stdout.isatty():
+        _rule(rows, columns, short)
         return
+    print("\t".join(columns.values()))
+    for row in rows:
+        print("\t".join(_cell(row.get(field)) for field in columns))
+
+
+def _rule(rows: Sequence[Mapping[str, Any]], columns: Mapping[str, str], short: Collection[str]) -> None:
+    from rich.box import SIMPLE_HEAD
     from rich.console import Console
     from rich.table import Table
 
-    table = Table(title=title or None, title_justify="left")
-    for head in columns.values():
-        table.add_column(head, overflow="fold")
-    for row in cells:
-        table.add_row(*row)
-    Console().print(table)
+    cells = [[_on_terminal(row, field, short) for field in columns] for row in rows]
+    table = Table(box=SIMPLE_HEAD, pad_edge=False)
+    for number, (field, head) in enumerate(columns.items()):
+        figures = bool(rows) and all(isinstance(row.get(field), int | float) for row in rows)
+        words = [line[number] for line in cells]
+        table.add_column(
+            head,
+            overflow="fold",
+            justify="right" if figures else "left",
+            no_wrap=all(len(word) <= _WHOLE and " " not in word for word in words),
+        )
+    for line in cells:
+        table.add_row(*line)
+    # Cells are data: a square bracket in a reason is no markup.
+    Console(markup=False, highlight=False).print(table)
 
 
-def _cell(value: Any) -> str:
+def _on_terminal(row: Mapping[str, Any], field: str, short: Collection[str]) -> str:
+    text = _cell(row.get(field), "\n")
+    return f"{text[:12]}\u2026" if field in short and len(text) > 12 else text
+
+
+def _cell(value: Any, between: str = ", ") -> str:
     if value is None:
         return "-"
     if isinstance(value, float):
         return f"{value:.4g}"
     if isinstance(value, list | tuple):
-        return ", ".join(_cell(item) for item in value)
+        return between.join(_cell(item) for item in value)
     return str(value)
