@@ -24,11 +24,19 @@ def remark(text: str) -> None:
     print(text, file=sys.stderr)
 
 
-def say_json(value: Any) -> None:
-    """Print a value as JSON to stdout; what is not finite is null, never a word that JSON lacks."""
+def say_json(value: Any, *, line: bool = False) -> None:
+    """Print a value as JSON to stdout; what is not finite is null, never a word that JSON lacks.
+
+    Parameters
+    ----------
+    value : object
+        Plain values.
+    line : bool
+        On one line, for commands that print several values one after another.
+    """
     from treering.synthesis.numbers import plain
 
-    print(json.dumps(plain(value), indent=2, ensure_ascii=False, allow_nan=False))
+    print(json.dumps(plain(value), indent=None if line else 2, ensure_ascii=False, allow_nan=False))
 
 
 def say_table(

@@ -24,7 +24,7 @@ def demo(folder: Path, /, *, verbose: bool = False, json: bool = False) -> int:
     verbose : bool
         Show the engine's own log.
     json : bool
-        Print one JSON object per week.
+        Print one JSON object per line: one for each week, then the place of the reports.
     """
     run = _flow(verbose)
     from treering.demo import lay_out, play
@@ -36,7 +36,7 @@ def demo(folder: Path, /, *, verbose: bool = False, json: bool = False) -> int:
 
     def tell(week: Week, summary: Summary) -> None:
         if json:
-            say_json({"story": week.story, **_as_dict(summary)})
+            say_json({"story": week.story, **_as_dict(summary)}, line=True)
         else:
             say(f"{week.day}  {week.story}")
             _tell(summary, indent="            ")
@@ -45,7 +45,7 @@ def demo(folder: Path, /, *, verbose: bool = False, json: bool = False) -> int:
     remark("A report informs a panel; it is no treatment recommendation.")
     index = (folder / "reports" / "index.html").resolve()
     if json:
-        say_json({"index": str(index)})
+        say_json({"index": str(index)}, line=True)
     else:
         say(f"All versions: {index}")
     return EXIT_DONE
