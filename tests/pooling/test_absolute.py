@@ -12,7 +12,7 @@ from scipy import stats
 
 from treering.errors import AnalysisError
 from treering.pooling import pool
-from treering.pooling.absolute import absolute_effects
+from treering.pooling.absolute import absolute_effects, distance
 
 
 def log(*values: float) -> tuple[float, float, float]:
@@ -89,3 +89,30 @@ def test_risk_difference_is_added() -> None:
 def test_unusable_input_is_refused(effect: tuple, measure: str, risk: float, words: str) -> None:
     with pytest.raises(AnalysisError, match=words):
         absolute_effects(effect, measure, risk)
+
+
+@pytest.mark.parametrize(
+    ("value", "measure", "expected"),
+    [
+        (0.8, "risk-ratio", -math.log(0.8)),
+        (1.25, "odds-ratio", math.log(1.25)),
+        (-2.0, "mean-difference", 2.0),
+    ],
+)
+def test_a_minimally_important_difference_is_a_distance(value: float, measure: str, expected: float) -> None:
+    assert distance(value, measure) == pytest.approx(expected)
+
+
+@pytest.mark.parametrize(
+    ("value", "measure"),
+    [
+        (1.0, "risk-ratio"),
+        (0.0, "risk-ratio"),
+        (-1.0, "odds-ratio"),
+        (0.0, "mean-difference"),
+        (1.0, "magic"),
+    ],
+)
+def test_what_is_no_distance_is_refused(value: float, measure: str) -> None:
+    with pytest.raises(AnalysisError):
+        distance(value, measure)

@@ -18,6 +18,7 @@ from treering.pooling.priors import (
     LogNormal,
     LogStudent,
     TauPrior,
+    read_prior,
     tau_prior,
 )
 
@@ -212,3 +213,24 @@ def test_a_bad_variance_names_its_trial() -> None:
 def test_unusable_options_are_refused(options: dict[str, object]) -> None:
     with pytest.raises(AnalysisError):
         pool_bayesian(Y, V, HalfNormal(0.5), **options)
+
+
+@pytest.mark.parametrize(
+    ("words", "prior"),
+    [
+        ("half-normal 0.5", HalfNormal(0.5)),
+        ("half-cauchy 1", HalfCauchy(1.0)),
+        ("log-normal -1.28 0.87", LogNormal(-1.28, 0.87)),
+        ("turner-2012-any-outcome", "turner-2012-any-outcome"),
+    ],
+)
+def test_a_prior_can_be_written_out(words: str, prior: object) -> None:
+    assert read_prior(words) == prior
+
+
+@pytest.mark.parametrize(
+    "words", ["", "flat", "half-normal", "half-normal x", "half-normal 1 2", "log-normal 1"]
+)
+def test_words_that_are_no_prior_are_refused(words: str) -> None:
+    with pytest.raises(AnalysisError):
+        read_prior(words)

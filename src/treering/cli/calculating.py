@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 from treering.cli.output import EXIT_DONE, remark, say, say_json, say_table
+from treering.errors import AnalysisError
 from treering.terms import CAUTION
 
 
@@ -105,12 +106,22 @@ def pool(
     tau2: str = "reml",
     interval: str = "modified-knapp-hartung",
     level: float = 0.95,
+    prediction_df: str = "k-2",
     correction: str = "none",
-    comparator_risk: float | None = None,
+    correction_amount: float = 0.5,
+    subgroup: str | None = None,
+    between_variance: str = "separate",
+    covariates: list[str] | None = None,
+    order: str | None = None,
+    comparator_risk: list[float] | None = None,
+    prior: str | None = None,
+    better: str | None = None,
+    mid: float | None = None,
+    one_stage: str = "rare",
     force_small_study: bool = False,
     json: bool = False,
 ) -> int:
-    """Pool a table of trials outside any review.
+    """Pool a table of trials outside any review, in every way that fits its measure.
 
     Parameters
     ----------
@@ -124,26 +135,62 @@ def pool(
         modified-knapp-hartung, knapp-hartung or wald.
     level : float
         Confidence level.
+    prediction_df : str
+        Degrees of freedom of the prediction interval: k-2 or k-1.
     correction : str
         For zero cells: none, constant or treatment-arm.
-    comparator_risk : float, optional
-        For effects per 1000 people.
+    correction_amount : float
+        Events added to each cell (constant), or half of what both arms get together.
+    subgroup : str, optional
+        Column with the subgroup; the column "subgroup" when there is one.
+    between_variance : str
+        Between-trial variance of the subgroups: separate or common.
+    covariates : list of str, optional
+        Columns of a meta-regression; give the option once for each.
+    order : str, optional
+        Column by which trials are added up; "date" or "year" when there is one.
+    comparator_risk : list of float, optional
+        For effects per 1000 people; give the option once for each risk.
+    prior : str, optional
+        Of tau: "half-normal 0.5", "half-cauchy 0.5", "log-normal MEAN SD" of log tau, or the name of a
+        published one.
+    better : str, optional
+        Which direction is good: lower or higher.
+    mid : float, optional
+        Minimally important difference; for ratios as a ratio, for example 0.8.
+    one_stage : str
+        Models of the counts themselves: rare (when events are rare), always or never.
     force_small_study : bool
         Do the small-study tests with fewer than ten trials, marked as such.
     json : bool
         Print JSON.
     """
-    from treering.cli.tables import pooled_lines, read_table
-    from treering.pooling import analyse_table
+    from treering.cli.pooled import pooled_lines
+    from treering.cli.tables import read_table
+    from treering.pooling import analyse_table, distance, read_prior
 
+    table = read_table(file)
+    for column in (subgroup, order, *(covariates or ())):
+        if column is not None and column not in table.columns:
+            raise AnalysisError("The table lacks a column that was asked for.", file=str(file), found=column)
     result = analyse_table(
-        read_table(file),
+        table,
         measure,
         tau2=tau2,
         interval=interval,
         level=level,
+        prediction_df=prediction_df,
         correction=correction,
-        comparator_risk=comparator_risk,
+        amount=correction_amount,
+        subgroup=subgroup or "subgroup",
+        between_variance=between_variance,
+        covariates=covariates or (),
+        order=order,
+        comparator_risk=comparator_risk or None,
+        prior=None if prior is None else read_prior(prior),
+        better=better,
+        mid=None if mid is None else distance(mid, measure),
+        one_stage=one_stage,
         force_small_study=force_small_study,
     ).to_dict()
     if json:

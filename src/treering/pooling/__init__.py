@@ -3,7 +3,7 @@
 The numeric core: arrays or pandas in, frozen values out, effects on the analysis scale.
 """
 
-from treering.pooling.absolute import AbsoluteEffect, absolute_effects
+from treering.pooling.absolute import AbsoluteEffect, absolute_effects, distance
 from treering.pooling.analyse import analyse_table
 from treering.pooling.analysis_result import TableAnalysis
 from treering.pooling.bayes import BayesianEffect, pool_bayesian
@@ -16,7 +16,15 @@ from treering.pooling.mantel_haenszel import ChiSquare, cochran_mantel_haenszel,
 from treering.pooling.one_stage import OneStageEffect, pool_one_stage
 from treering.pooling.one_stage_models import OneStageModel
 from treering.pooling.peto import pool_peto
-from treering.pooling.priors import EMPIRICAL_PRIORS, HalfCauchy, HalfNormal, LogNormal, LogStudent, tau_prior
+from treering.pooling.priors import (
+    EMPIRICAL_PRIORS,
+    HalfCauchy,
+    HalfNormal,
+    LogNormal,
+    LogStudent,
+    read_prior,
+    tau_prior,
+)
 from treering.pooling.regression import MetaRegression, meta_regression
 from treering.pooling.result import PooledEffect
 from treering.pooling.small_study import RankTest, RegressionTest, egger, harbord, peters, rank_correlation
@@ -50,6 +58,7 @@ __all__ = [
     "analyse_table",
     "cochran_mantel_haenszel",
     "cumulative",
+    "distance",
     "egger",
     "harbord",
     "heterogeneity_p",
@@ -65,6 +74,7 @@ __all__ = [
     "pool_one_stage",
     "pool_peto",
     "rank_correlation",
+    "read_prior",
     "subgroup_analysis",
     "tau_prior",
     "trim_and_fill",

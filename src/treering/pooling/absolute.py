@@ -20,7 +20,8 @@ from dataclasses import dataclass
 from typing import Protocol
 
 from treering.errors import AnalysisError
-from treering.terms import Measure
+from treering.pooling.checks import choose
+from treering.terms import RATIO_MEASURES, Measure
 
 
 class Estimated(Protocol):
@@ -125,6 +126,37 @@ def absolute_effects(
         raise AnalysisError("The number of people must be at least 1.", found=per)
     risks = [comparator_risk] if isinstance(comparator_risk, int | float) else list(comparator_risk)
     return tuple(_one(Measure(measure), values, float(risk), per) for risk in risks)
+
+
+def distance(value: float, measure: str | Measure) -> float:
+    """Turn a minimally important difference into a distance on the analysis scale.
+
+    Parameters
+    ----------
+    value : float
+        As people state it: a ratio other than 1 for ratios (0.8 and 1.25 are equally far), else a difference.
+    measure : str
+        A ``treering.terms.Measure``.
+
+    Returns
+    -------
+    float
+        Above zero.
+
+    Raises
+    ------
+    AnalysisError
+        An unknown measure, or no distance.
+    """
+    ratio = choose(Measure, measure, "measure") in RATIO_MEASURES
+    found = abs(math.log(value)) if ratio and value > 0 else (0.0 if ratio else abs(value))
+    if not (math.isfinite(found) and found > 0):
+        raise AnalysisError(
+            "This is no minimally important difference.",
+            found=value,
+            expected="a ratio above 0 other than 1" if ratio else "a number other than 0",
+        )
+    return found
 
 
 def _one(measure: Measure, values: tuple[float, float, float], risk: float, per: int) -> AbsoluteEffect:

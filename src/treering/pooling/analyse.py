@@ -8,11 +8,10 @@ import numpy as np
 import pandas as pd
 from scipy.stats import norm
 
-from treering.errors import AnalysisError
 from treering.pooling import analysis_classical as classical
 from treering.pooling import analysis_models as models
 from treering.pooling.absolute import AbsoluteEffect
-from treering.pooling.analysis_input import Inputs, Ledger, Plan, prepare, tuple_of
+from treering.pooling.analysis_input import Inputs, Ledger, Plan, check_words, prepare, tuple_of
 from treering.pooling.analysis_result import TableAnalysis, TrialEffect
 from treering.pooling.influence import influence, leave_one_out
 from treering.pooling.inverse_variance import pool
@@ -105,10 +104,7 @@ def analyse_table(
         one_stage=one_stage,
         force_small_study=force_small_study,
     )
-    if one_stage not in ("rare", "always", "never"):
-        raise AnalysisError(
-            "one_stage is not a known word.", found=one_stage, expected="rare, always or never"
-        )
+    check_words(plan)
     return _analyse(prepare(table, measure, plan))
 
 

@@ -12,9 +12,9 @@ import pandas as pd
 from treering.effects import LeftOut, usable
 from treering.effects.zero_cells import COUNTS
 from treering.errors import AnalysisError
-from treering.pooling.checks import check_level
+from treering.pooling.checks import check_level, choose
 from treering.pooling.priors import TauPrior
-from treering.terms import RATIO_MEASURES, Measure
+from treering.terms import RATIO_MEASURES, Better, Measure
 
 BINARY = frozenset(
     {
@@ -156,6 +156,33 @@ class Ledger:
         except AnalysisError as error:
             self.not_done[part] = str(error)
             return None
+
+
+def check_words(plan: Plan) -> None:
+    """Refuse options that no part would understand, before any part is computed.
+
+    Parameters
+    ----------
+    plan : Plan
+        Options.
+
+    Raises
+    ------
+    AnalysisError
+        An unknown word, or a comparator risk that is none.
+    """
+    if plan.better is not None:
+        choose(Better, plan.better, "better")
+    known = {"one_stage": ("rare", "always", "never"), "between_variance": ("separate", "common")}
+    for field, words in known.items():
+        found = getattr(plan, field)
+        if found not in words:
+            raise AnalysisError(
+                f"{field} is not a known word.", found=found, expected=f"one of {', '.join(words)}"
+            )
+    for risk in plan.comparator_risk:
+        if not 0 < risk < 1:
+            raise AnalysisError("comparator_risk must lie strictly between 0 and 1.", found=risk)
 
 
 def prepare(table: pd.DataFrame, measure: str, plan: Plan) -> Inputs:

@@ -225,6 +225,42 @@ EMPIRICAL_PRIORS: Mapping[str, EmpiricalPrior] = {
 }
 
 
+def read_prior(words: str) -> TauPrior | str:
+    """Read a prior of tau written out: a family and its numbers, or the name of a published one.
+
+    Parameters
+    ----------
+    words : str
+        "half-normal SCALE", "half-cauchy SCALE", "log-normal LOCATION SPREAD" (of log tau), or a name in
+        ``EMPIRICAL_PRIORS``.
+
+    Returns
+    -------
+    TauPrior or str
+        The distribution; a published one stays a name, so that its source is told with the result.
+
+    Raises
+    ------
+    AnalysisError
+        Unknown words, or numbers that are missing, too many or out of range.
+    """
+    name, *rest = words.split() or [""]
+    if name in EMPIRICAL_PRIORS and not rest:
+        return name
+    try:
+        given = [float(word) for word in rest]
+    except ValueError:
+        raise AnalysisError(
+            "A prior is a name and numbers.", found=words, expected="half-normal 0.5"
+        ) from None
+    fields = ("location", "spread") if name == "log-normal" else ("scale",)
+    if len(given) > len(fields):
+        raise AnalysisError(
+            f"The prior {name} takes fewer numbers.", found=words, expected=f"{name} {' '.join(fields)}"
+        )
+    return tau_prior(name, **dict(zip(fields, given, strict=False)))
+
+
 def tau_prior(
     name: str, *, scale: float | None = None, location: float | None = None, spread: float | None = None
 ) -> TauPrior:
