@@ -31,6 +31,7 @@ from treering.store.audit_chain import ChainPass, chain_of, pages
 from treering.store.audit_roles import check_roles
 from treering.store.audit_rules import check_references, check_versions
 from treering.store.audit_schema import audit_engine, check_schema
+from treering.store.audit_tree import TreePass
 from treering.store.checkpoint import Checkpoint
 from treering.store.checks import RESTORE, Check, Findings, undecodable
 from treering.store.connection import place_of, reading, store_url
@@ -92,28 +93,29 @@ def _audit(engine: Engine, review: str | None, checkpoints: Sequence[Checkpoint]
         with reading(engine) as connection:
             limit = reader.size_of(connection)
             rows = reader.fetch(connection, "SELECT level, position, hash FROM tree_node")
-        walk = ChainPass(findings, {(level, position): made for level, position, made in rows}, checkpoints)
+        nodes = {(level, position): made for level, position, made in rows}
+        chain, tree = ChainPass(findings), TreePass(findings, nodes, checkpoints)
         with findings.guarded(5):
-            _walk(engine, limit, walk, findings)
-        walk.finish()
+            _walk(engine, limit, chain, tree, findings)
+        chain.finish()
+        tree.finish()
         with findings.guarded(7), reading(engine) as connection:
             check_references(connection, findings)
         with findings.guarded(8), reading(engine) as connection:
             check_roles(connection, findings)
         with findings.guarded(9), reading(engine) as connection:
             check_versions(connection, findings)
-        return findings.checks(walk.versions)
+        return findings.checks(tree.versions)
     return findings.checks()
 
 
-def _walk(engine: Engine, limit: int, walk: ChainPass, findings: Findings) -> None:
+def _walk(engine: Engine, limit: int, chain: ChainPass, tree: TreePass, findings: Findings) -> None:
     """Read the ledger page by page, and compare the tables with each page."""
-    count = 0
     for page in pages(engine, limit):
-        chain = chain_of(page)
-        walk.links(chain)
-        walk.grow(chain)
-        walk.clock(page)
+        bare = chain_of(page)
+        chain.links(bare)
+        chain.clock(page)
+        tree.grow(bare)
         for rows in _runs(page):
             for found in comparing.row_differences(engine, rows, rows[0][0], rows[-1][0] + 1):
                 findings.add(
@@ -124,8 +126,7 @@ def _walk(engine: Engine, limit: int, walk: ChainPass, findings: Findings) -> No
                     expected="nothing" if found.expected is None else found.expected,
                     step=RESTORE,
                 )
-        count += len(page)
-    findings.seen[5] = f"{count} entries"
+    findings.seen[5] = f"{chain.count} entries"
 
 
 def _runs(page: Sequence[LedgerRow]) -> Iterator[Sequence[LedgerRow]]:

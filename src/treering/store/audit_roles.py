@@ -89,8 +89,25 @@ def _check_page(connection: Connection, page: _Rows, findings: Findings) -> None
     readings = _named(connection, "extraction", [seq for _, _, seqs in parsed for seq in seqs])
     settled = _named(connection, "adjudication", [row[7] for row in page if row[7] is not None])
     for row, extractors, extractions in parsed:
-        for fault in _faults(row, extractors, [readings.get(seq) for seq in extractions], settled):
+        seen = [readings.get(seq) for seq in extractions]
+        if _is_plain(row, extractors, seen):
+            continue
+        for fault in _faults(row, extractors, seen, settled):
             findings.add(8, fault, seq=row[0], step=_REREAD)
+
+
+def _is_plain(row: tuple[Any, ...], extractors: list[Any], readings: list[tuple[Any, ...] | None]) -> bool:
+    """Tell whether two readings by the two people named agreed: most verifications, and nothing to tell."""
+    seq, trial, outcome, basis, _, adjudicator, _, adjudication = row
+    if basis != "agreed" or adjudicator is not None or adjudication is not None or len(extractors) != 2:
+        return False
+    first, second = extractors
+    return (
+        first != second
+        and len(readings) == 2
+        and all(reading is not None and reading[0] < seq for reading in readings)
+        and readings == [(readings[0][0], trial, outcome, first), (readings[1][0], trial, outcome, second)]  # type: ignore[index]
+    )
 
 
 def _faults(

@@ -123,8 +123,8 @@ def _entry_differences(row: LedgerRow, typed: _Typed) -> Iterator[Difference]:
         kind, body = EntryKind(expected[1]), value["body"]
         wanted = project(kind, seq, body, key=expected[2])
     except (KeyError, TypeError, ValueError, AttributeError, StoreError) as error:
-        found = canonical[:80] if isinstance(canonical, bytes) else canonical
-        yield Difference(seq, "entry", "canonical", found, f"an entry in canonical form ({error})")
+        start: object = canonical[:80] if isinstance(canonical, bytes) else canonical
+        yield Difference(seq, "entry", "canonical", start, f"an entry in canonical form ({error})")
         return
     if row[:-2] != expected[:-2]:
         for name, found, right in zip(ROW_FIELDS, row, expected, strict=True):
