@@ -1,6 +1,8 @@
 """Change from baseline: its SD from the SDs of both time points and their correlation.
 
 Cochrane Handbook for Systematic Reviews of Interventions, version 5.1 (2011), section 16.1.3.2.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

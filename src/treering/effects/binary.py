@@ -2,6 +2,8 @@
 
 Every function takes checked :class:`~treering.effects.rows.Rows` and returns
 :class:`~treering.effects.rows.Effects` of shape (k,).
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -2,6 +2,8 @@
 
 Cochrane Handbook for Systematic Reviews of Interventions, version 5.1 (2011), sections 16.3.4 to 16.3.6; for
 clusters of varying size Eldridge, Ashby and Kerry 2006, Int J Epidemiol 35:1292.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -1,4 +1,7 @@
-"""Effects of trials with continuous outcomes, on the analysis scale."""
+"""Effects of trials with continuous outcomes, on the analysis scale.
+
+Sources, formulas and equation numbers are cited from memory.
+"""
 
 from __future__ import annotations
 

@@ -2,6 +2,8 @@
 
 Every function returns a :class:`~treering.effects.record.Conversion`. Where ``scale`` is "log", estimates and
 limits are ratios on their natural scale and standard errors are those of the log ratio.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations
@@ -38,7 +40,8 @@ def z_from_p(
     p_value : float
         Between 0 and 1.
     method : str
-        "exact" (normal quantile) or "approximate", :math:`-0.862 + \sqrt{0.743 - 2.404 \log P}`.
+        "exact" (normal quantile) or "approximate", :math:`-0.862 + \sqrt{0.743 - 2.404 \log P}`
+        (from memory).
     trial, origin : str
         For messages, and where the figure stands in the report.
 
@@ -138,7 +141,7 @@ def standard_error_from_interval(
         Confidence level.
     method : str
         P value from the "exact" normal distribution or the "approximate" formula
-        :math:`\exp(-0.717 z - 0.416 z^2)`.
+        :math:`\exp(-0.717 z - 0.416 z^2)` (from memory).
     trial, origin : str
         For messages, and where the figures stand in the report.
 
@@ -254,11 +257,13 @@ def _z(p_value: float, method: str, trial: str | None) -> float:
     _known_method(method, trial)
     if method == "exact":
         return float(norm.isf(p_value / 2))
+    # Altman and Bland 2011, from memory.
     return -0.862 + math.sqrt(0.743 - 2.404 * math.log(p_value))
 
 
 def _p(z: float, method: str, trial: str | None) -> float:
     _known_method(method, trial)
+    # Altman and Bland 2011, from memory.
     return float(2 * norm.sf(z)) if method == "exact" else math.exp(-0.717 * z - 0.416 * z**2)
 
 

@@ -2,6 +2,8 @@
 
 Elbourne, Altman, Higgins, Curtin, Worthington and Vail 2002, Int J Epidemiol 31:140; Cochrane Handbook,
 version 5.1 (2011), section 16.4.6. Whether both periods or only the first are used is a rule of the protocol.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -2,6 +2,8 @@
 
 Cochrane Handbook for Systematic Reviews of Interventions, chapter 6 (in the edition of 2011, section 7.7.3).
 All results are on the scale of the measurement.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

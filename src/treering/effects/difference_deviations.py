@@ -1,6 +1,8 @@
 """The common standard deviation of two arms from SE, interval, t or P value of their mean difference.
 
 Cochrane Handbook, version 5.1 (2011), section 7.7.3.3. All results are on the scale of the measurement.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

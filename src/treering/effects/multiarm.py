@@ -3,6 +3,8 @@
 Cochrane Handbook for Systematic Reviews of Interventions, version 5.1 (2011), sections 7.7.3.8 and 16.5.4.
 Which of the two is done is a rule of the protocol; :func:`treering.effects.arms.arm_ledger` proves
 afterwards that nobody is counted twice.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

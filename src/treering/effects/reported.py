@@ -1,4 +1,7 @@
-"""Effects that a report already gives: an estimate with its interval, standard error or P value."""
+"""Effects that a report already gives: an estimate with its interval, standard error or P value.
+
+Sources, formulas and equation numbers are cited from memory.
+"""
 
 from __future__ import annotations
 

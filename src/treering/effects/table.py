@@ -1,4 +1,7 @@
-"""One table of trials to estimates and variances on the analysis scale."""
+"""One table of trials to estimates and variances on the analysis scale.
+
+Sources, formulas and equation numbers are cited from memory.
+"""
 
 from __future__ import annotations
 

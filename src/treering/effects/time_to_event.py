@@ -3,6 +3,8 @@
 Parmar, Torri and Stewart 1998 (Stat Med 17:2815) and Tierney, Stewart, Ghersi, Burdett and Sydes 2007
 (Trials 8:16): the log-rank observed minus expected events O - E with variance V give the log hazard ratio
 (O - E)/V with variance 1/V.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -3,6 +3,8 @@
 On relative measures a zero cell leaves the ratio or its variance undefined. Nothing is added unless the
 protocol asks for it: a fixed half event biases ratios when arms differ in size (Sweeting, Sutton and
 Lambert 2004, Stat Med 23:1351).
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -10,6 +10,8 @@ With comparator risk c the risk in the intervention group is
 and the absolute effect is that risk minus c (Schuenemann et al., Cochrane Handbook for Systematic Reviews of
 Interventions, chapters 14 and 15; Altman and Andersen 1999, BMJ 319:1492 for the hazard ratio). The interval
 maps the limits of the relative effect; the comparator risk is taken as known.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

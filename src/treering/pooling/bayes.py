@@ -5,6 +5,8 @@ deviation tau. Given tau the posterior of the mean effect is normal in closed fo
 numerically: the posterior of the effect is a mixture of normals over tau (Spiegelhalter, Abrams and Myles
 2004, ch. 8; Higgins, Thompson and Spiegelhalter 2009, JRSS A 172:137). Nothing is sampled; the same input
 gives the same digits.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -5,6 +5,8 @@ distribution with a mean that depends on the arm and with one intra-class correl
 (Kuss 2015, Stat Med 34:1097). There is no trial intercept to be estimated and none to be conditioned on,
 so a trial without any event counts in full. The price: both arms of a trial are treated as independent,
 and the comparison within trials is given up; the result is best read beside a model that keeps it.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -4,6 +4,8 @@ Coding: logit(risk, intervention) = a + theta / 2 and logit(risk, comparator) = 
 the trial's intercept and ``theta`` its log odds ratio. The symmetric coding is deliberate: with 0/1 coding
 the random effect would add variance to the intervention arm only, and the estimated between-trial variance
 is then badly low (Jackson, Law, Stijnen, Viechtbauer and White 2018, Stat Med 37:1059, models 4 and 5).
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

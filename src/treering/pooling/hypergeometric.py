@@ -5,6 +5,8 @@ follow Fisher's non-central hypergeometric distribution, which depends on the lo
 trial's own intercept is gone (Fisher 1935; Stijnen, Hamza and Ozdemir 2010, Stat Med 29:3046, eq. 12).
 A trial with no event at all, or with events in everyone, has one possible table only and so says nothing
 about the odds ratio in this model.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

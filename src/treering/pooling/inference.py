@@ -1,4 +1,7 @@
-"""From sums to statements: tests, intervals, heterogeneity and prediction."""
+"""From sums to statements: tests, intervals, heterogeneity and prediction.
+
+Sources, formulas and equation numbers are cited from memory.
+"""
 
 from __future__ import annotations
 
@@ -96,7 +99,7 @@ def heterogeneity_p(q: float | FloatArray, df: float | FloatArray) -> FloatArray
 
 
 def i2_interval(q: FloatArray, df: FloatArray, level: float) -> tuple[FloatArray, FloatArray]:
-    """Inference-based interval of I2 (Higgins and Thompson 2002, Stat Med 21:1539, appendix).
+    """Inference-based interval of I2 (Higgins and Thompson 2002, Stat Med 21:1539; from memory).
 
     ln H has standard error (ln Q - ln df) / (2 (sqrt(2 Q) - sqrt(2 k - 3))) for Q > k, otherwise
     sqrt(1 / (2 (k - 2)) (1 - 1 / (3 (k - 2)^2))); I2 = (H^2 - 1) / H^2, H cut off at one.

@@ -1,4 +1,7 @@
-"""Do two estimates differ? The test of interaction (Altman and Bland 2003, BMJ 326:219)."""
+"""Do two estimates differ? The test of interaction (Altman and Bland 2003, BMJ 326:219).
+
+Sources, formulas and equation numbers are cited from memory.
+"""
 
 from __future__ import annotations
 

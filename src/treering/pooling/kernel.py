@@ -1,6 +1,8 @@
 """The one implementation behind `pool`, `pool_many`, leave-one-out and cumulative pooling.
 
 A batch of syntheses goes in, one column for each field of `PooledEffect` comes out.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations
@@ -142,7 +144,7 @@ def _between_trials(batch: Batch, common: Fit, lone: BoolArray, options: Options
 def _q_profile(
     batch: Batch, common: Fit, tau2: FloatArray, chosen: Fit, level: float
 ) -> tuple[FloatArray, FloatArray]:
-    """Interval of tau2 by Q-profile (Viechtbauer 2007, Stat Med 26:37); NaN for one trial."""
+    """Interval of tau2 by Q-profile (Viechtbauer 2007, from memory); NaN for one trial."""
     outside, df = (1.0 - level) / 2.0, np.maximum(batch.k - 1.0, 1.0)
     limits = (
         solve_q(batch, chi2_quantile(df, tail), common, tau2, chosen) for tail in (outside, 1.0 - outside)
@@ -152,7 +154,7 @@ def _q_profile(
 
 
 def _test(estimate: FloatArray, chosen: Fit, k: FloatArray, options: Options) -> tuple[FloatArray, Inference]:
-    """Return standard error and test (Knapp and Hartung 2003, Stat Med 22:2693; modified: Roever 2015)."""
+    """Return standard error and test (Knapp and Hartung 2003; modified: Roever 2015; both from memory)."""
     ordinary = 1.0 / np.sqrt(chosen.total)
     if options.interval_used is IntervalMethod.WALD:
         return ordinary, normal_test(estimate, ordinary, options.level)

@@ -5,6 +5,8 @@ Estimators of the residual tau2: method of moments (Thompson and Sharp 1999, Sta
 DerSimonian-Laird kind), Hedges' unweighted moments, Paule-Mandel (residual Q equal to its degrees of
 freedom), ML and REML (Raudenbush 2009, in Cooper, Hedges and Valentine). Likelihoods can have more than one
 maximum; every sign change of the score is found and the best maximum is taken.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -2,6 +2,8 @@
 
 With weights w = 1 / (v + t) and mu their weighted mean, the generalised Q is Q(t) = sum w (y - mu)^2
 (DerSimonian and Kacker 2007, Contemp Clin Trials 28:105, eq. 6). Q(0) is Cochran's Q.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -17,6 +17,8 @@ in either arm can say:
 
 Sources: Stijnen, Hamza and Ozdemir 2010, Stat Med 29:3046; Jackson et al. 2018, Stat Med 37:1059 (models 4
 and 5); Kuss 2015, Stat Med 34:1097.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

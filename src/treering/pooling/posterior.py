@@ -2,6 +2,8 @@
 
 The integral runs over log(tau) by the trapezoidal rule, whose error falls faster than any power of the step
 for a density that dies out at both ends (Trefethen and Weideman 2014, SIAM Rev 56:385).
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

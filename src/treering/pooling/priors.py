@@ -203,6 +203,7 @@ _DRUG_CONTROL, _DRUG_DRUG, _OTHER = (
     "any comparison with a non-pharmacological intervention",
 )
 
+# Means and SDs of log(tau squared), every one of them from memory (see ``from_memory``).
 EMPIRICAL_PRIORS: Mapping[str, EmpiricalPrior] = {
     "turner-2012-any-outcome": _binary(-2.56, 1.74, "any", "any", _TURNER_2012),
     "turner-2015-mortality-drug-control": _binary(-4.06, 1.45, _MORTALITY, _DRUG_CONTROL, _TURNER_2015),

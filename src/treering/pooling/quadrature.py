@@ -7,6 +7,8 @@ module integrates the second out of the first for all trials at once.
 The rule is centred at the mode of each trial's integrand and scaled by its curvature (Liu and Pierce 1994,
 Biometrika 81:624; Pinheiro and Bates 1995, J Comput Graph Stat 4:12), which is why few nodes suffice. All
 of it works in z = (theta - mean) / sd, so that a variance of exactly 0 is an ordinary point.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -3,6 +3,8 @@
 Tests and intervals by Knapp and Hartung 2003 (Stat Med 22:2693): the covariance is multiplied by
 s2 = Q(tau2) / (k - p) and Student's t with k - p degrees of freedom is used. "modified" keeps s2 from
 falling below 1, so that the interval is never narrower than the ordinary one by chance.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

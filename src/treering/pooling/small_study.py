@@ -2,6 +2,8 @@
 
 Readers take these tests with ten or more trials only; fewer are computed all the same and marked
 (`few_trials`), so that the report can hold them back.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations
@@ -18,7 +20,7 @@ from treering.pooling.counts import deviations, read_counts
 from treering.pooling.result import FloatArray
 
 FEW_TRIALS = 10
-"""Below this number a test for small-study effects is marked (Sterne et al. 2011, BMJ 343:d4002)."""
+"""Below this number a test for small-study effects is marked (Sterne et al. 2011, from memory)."""
 
 
 @dataclass(frozen=True)
@@ -56,7 +58,7 @@ class RegressionTest:
 
 
 def egger(estimates: ArrayLike, variances: ArrayLike) -> RegressionTest:
-    """Regress y / se on 1 / se; the intercept is the test (Egger et al. 1997, BMJ 315:629).
+    """Regress y / se on 1 / se; the intercept is the test (Egger et al. 1997, BMJ 315:629, from memory).
 
     Parameters
     ----------
@@ -79,7 +81,7 @@ def egger(estimates: ArrayLike, variances: ArrayLike) -> RegressionTest:
 
 
 def harbord(table: pd.DataFrame) -> RegressionTest:
-    """Regress Z / sqrt(V) on sqrt(V); the intercept is the test (Harbord et al. 2006, Stat Med 25:3443).
+    """Regress Z / sqrt(V) on sqrt(V); the intercept is the test (Harbord et al. 2006, from memory).
 
     Z is observed minus expected events, V their hypergeometric variance (score and information of the log
     odds ratio at zero). Trials with V = 0 are left out.
@@ -106,7 +108,7 @@ def harbord(table: pd.DataFrame) -> RegressionTest:
 
 
 def peters(table: pd.DataFrame) -> RegressionTest:
-    """Regress the log odds ratio on 1 / n; the slope is the test (Peters et al. 2006, JAMA 295:676).
+    """Regress the log odds ratio on 1 / n; the slope is the test (Peters et al. 2006, from memory).
 
     Weights are m (n - m) / n with m the events of both arms. Trials with a zero cell have no log odds ratio
     and are left out; nothing is added to their cells.
@@ -167,7 +169,7 @@ class RankTest:
 
 
 def rank_correlation(estimates: ArrayLike, variances: ArrayLike) -> RankTest:
-    """Rank correlation of effect and variance (Begg and Mazumdar 1994, Biometrics 50:1088).
+    """Rank correlation of effect and variance (Begg and Mazumdar 1994, Biometrics 50:1088; from memory).
 
     Effects are standardized as (y - mu) / sqrt(v - 1 / sum(1 / v)), mu the common-effect mean.
 

@@ -4,6 +4,8 @@ The question is always answered by the interaction test, never by one subgroup b
 another not (Altman and Bland 2003, BMJ 326:219). The common-effect Q splits exactly into a part within and a
 part between subgroups (Hedges and Olkin 1985); with random effects the groups are compared by their own
 pooled effects (separate tau2) or in one model (common tau2).
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations

@@ -1,6 +1,8 @@
 """Trim and fill: how many trials would make the funnel symmetric, and where the effect would then be.
 
 A sensitivity analysis, not a correction: asymmetry has more causes than missing trials.
+
+Sources, formulas and equation numbers are cited from memory.
 """
 
 from __future__ import annotations
