@@ -1,9 +1,10 @@
 """ML and REML estimates of tau2 as the global maximum of the profile likelihood.
 
-The likelihood can have two maxima in tau2, one of them at zero (the aspirin trials of Fleiss 1993
-under ML are an example, from memory), so an iteration that climbs from one start may end on the lower one. Where `ascent` proves
-that there is one maximum at most it is climbed to. Everywhere else the slope is read along the whole range
-that can hold a maximum, every descent through zero is refined, and the highest maximum is taken.
+The likelihood can have two maxima in tau2, one of them at zero (the aspirin trials of Fleiss 1993 under ML
+are an example, from memory), so an iteration that climbs from one start may end on the lower one. Where
+`ascent` proves that there is one maximum at most it is climbed to. Everywhere else the slope is read along
+the whole range that can hold a maximum, every descent through zero is refined, and the highest maximum is
+taken.
 
 Range. On contrasts free of the mean the model has variances lambda_j + tau2 with every lambda_j between the
 smallest and the largest v. The slope of the restricted likelihood is proportional to
