@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from functools import cache
+from itertools import pairwise
 
 import pytest
 from hypothesis import given
@@ -19,14 +20,20 @@ ROWS = [(seq, b"entry %d" % seq, b"") for seq in range(SIZE)]
 
 
 @cache
+def node(level: int, index: int) -> bytes:
+    """A full subtree by its definition (RFC 9162, 2.1.1)."""
+    if level == 0:
+        return merkle.leaf_hash(ROWS[index][1])
+    return merkle.node_hash(node(level - 1, 2 * index), node(level - 1, 2 * index + 1))
+
+
+@cache
 def root(size: int) -> str:
-    leaves = [merkle.leaf_hash(data) for _, data, _ in ROWS]
-    return merkle.root(size, merkle.nodes_of(leaves)).hex()
+    return merkle.root(size, node).hex()
 
 
 def kept(size: int) -> dict[tuple[int, int], bytes]:
     """The kept nodes of a tree, each by its definition."""
-    node = merkle.nodes_of([merkle.leaf_hash(data) for _, data, _ in ROWS])
     levels = range(KEPT_LEVEL, size.bit_length())
     return {(level, place): node(level, place) for level in levels for place in range(size >> level)}
 
@@ -35,7 +42,7 @@ def grown(size: int, cuts: list[int], points: list[Checkpoint]) -> dict[int, tup
     findings = Findings()
     tree = TreePass(findings, kept(size), points)
     edges = sorted({0, size, *(cut for cut in cuts if cut < size)})
-    for first, last in zip(edges, edges[1:], strict=False):
+    for first, last in pairwise(edges):
         tree.grow(ROWS[first:last])
     tree.finish()
     return {check.number: check.faults for check in findings.checks() if not check.holds}
