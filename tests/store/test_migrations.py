@@ -100,6 +100,13 @@ def test_migration_changes_no_hash_and_drops_no_guard(earlier, later_code):
         assert again.head() == GOLDEN_HEAD
 
 
+def test_opening_to_look_never_migrates(earlier, later_code):
+    later_code()
+    with pytest.raises(StoreError, match="treering update"):
+        store.open_store(earlier, upgrade=False)
+    assert revision_of(earlier) == "0001"
+
+
 def test_code_of_before_refuses_a_migrated_store(golden, later_code, monkeypatch):
     later_code()
     store.open_store(golden).close()

@@ -43,13 +43,16 @@ def create(target: str | Path, *, review: str) -> EvidenceStore:
     return EvidenceStore(engine)
 
 
-def open_store(target: str | Path) -> EvidenceStore:
-    """Open a store, and bring its tables up to date when an earlier version of treering made it.
+def open_store(target: str | Path, *, upgrade: bool = True) -> EvidenceStore:
+    """Open a store.
 
     Parameters
     ----------
     target : str or Path
         Path of a SQLite file or a PostgreSQL URL.
+    upgrade : bool, optional
+        Bring the tables up to date when an earlier version of treering made the store; without it such a
+        store is refused, so that looking never writes.
 
     Returns
     -------
@@ -72,6 +75,13 @@ def open_store(target: str | Path) -> EvidenceStore:
         if revision is None:
             raise _absent(place)
         if check_revision(revision):
+            if not upgrade:
+                raise StoreError(
+                    "An earlier version of treering made this store.",
+                    file=place,
+                    found=f"revision {revision}",
+                    next_step="Run `treering update` once: it brings the tables up to date, and changes no hash.",
+                )
             with writing(engine, lock="entry") as connection:
                 migrate(connection)
     except BaseException:
@@ -84,7 +94,7 @@ def _absent(place: str) -> NoStoreError:
     return NoStoreError(
         "There is no evidence store here.",
         file=place,
-        next_step="Make one with treering start, or correct store in config/review.toml.",
+        next_step="Run `treering update` once to make one, or correct [store] in config/review.toml.",
     )
 
 

@@ -18,6 +18,7 @@ from treering.update.context import Review, read_review
 from treering.update.views import folder_name
 
 _REPORT = "report.json"
+_FOLDERS = "[0-9]*-v[0-9]*"  # not the draft that an update which died left behind: it begins with a dot
 _RENDER = "Run treering replay on the version: it makes the page again; keep what is there for the inquiry."
 _STRAY = "Find out who put it there; a released version is never added to."
 
@@ -63,7 +64,7 @@ def audit_review(folder: Path, *, checkpoint: str | None = None, report: Path | 
 
 def _heads_on_disk(review: Review) -> list[Checkpoint]:
     points = []
-    for path in sorted(review.reports.glob(f"*-v[0-9]*/{_REPORT}")):
+    for path in sorted(review.reports.glob(f"{_FOLDERS}/{_REPORT}")):
         try:
             point = checkpoint_of_report(path)
         except AuditError:
@@ -80,7 +81,7 @@ def _check_pages(review: Review) -> Check:
     releases: dict[int, StoredEntry] = {}
     try:
         # Check 1 found the tables up to date, so that opening the store migrates nothing.
-        with open_store(review.store_place) as store:
+        with open_store(review.store_place, upgrade=False) as store:
             versions = {int(body["version"]): body for body in store.versions()}
             releases = {int(e.body["version"]): e for e in store.state().live(EntryKind.RELEASE)}
     except (StoreError, ValueError, KeyError, TypeError) as error:
@@ -119,7 +120,7 @@ def _check_strays(
 ) -> None:
     """Check that every folder that bears the name of a version is one that was released."""
     known = {folder_name(body): number for number, body in versions.items()}
-    for path in sorted(review.reports.glob("*-v[0-9]*")):
+    for path in sorted(review.reports.glob(_FOLDERS)):
         number = known.get(path.name)
         if number in releases:
             continue

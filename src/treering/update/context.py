@@ -98,7 +98,15 @@ def read_review(folder: Path) -> Review:
 
 
 def open_evidence(review: Review, *, make: bool = False) -> EvidenceStore:
-    """Open the evidence store of `review`; with `make`, lay down an empty one where there is none.
+    """Open the evidence store of `review`.
+
+    Parameters
+    ----------
+    review : Review
+        The review.
+    make : bool
+        Lay down an empty store where there is none, and bring one of an earlier version up to date. Only
+        an update does; looking never writes.
 
     Raises
     ------
@@ -109,7 +117,7 @@ def open_evidence(review: Review, *, make: bool = False) -> EvidenceStore:
     """
     place = review.store_place
     try:
-        store = open_store(place)
+        store = open_store(place, upgrade=make)
     except NoStoreError as error:
         if not make:
             raise NoStoreError(
