@@ -104,6 +104,18 @@ def test_a_folder_of_a_version_the_store_does_not_know_is_named(folder: Path) ->
     assert "2026-02-01-v003: the store knows no such version" in faults[0]
 
 
+def test_a_draft_that_a_dead_update_left_is_no_fault(folder: Path) -> None:
+    shutil.copytree(pages(folder, 2), folder / "reports" / ".2026-01-19-v003.draft")
+    assert failed(folder) == {}
+
+
+def test_damaged_entries_leave_the_pages_to_a_fault_of_their_own(folder: Path) -> None:
+    alter(folder, "UPDATE entry SET canonical = x'00' WHERE kind = 'release'")
+    found = failed(folder)
+    assert {3, 5, 11} <= set(found)
+    assert "The releases cannot be read" in found[11][0]
+
+
 def test_a_review_of_another_name_is_named(folder: Path) -> None:
     plan = folder / "config" / "review.toml"
     plan.write_text(plan.read_text().replace('id = "small"', 'id = "other"'))
