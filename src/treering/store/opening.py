@@ -80,7 +80,7 @@ def open_store(target: str | Path, *, upgrade: bool = True) -> EvidenceStore:
                     "An earlier version of treering made this store.",
                     file=place,
                     found=f"revision {revision}",
-                    next_step="Run `treering update` once: it brings the tables up to date, and changes no hash.",
+                    next_step="Run `treering update` once: it updates the tables and changes no hash.",
                 )
             with writing(engine, lock="entry") as connection:
                 migrate(connection)
