@@ -66,7 +66,7 @@ def test_store_is_never_made_over_another(place):
 
 
 def test_absent_store_is_named(place, tmp_path):
-    with pytest.raises(StoreError, match=r"There is no evidence store here.*treering start"):
+    with pytest.raises(StoreError, match=r"There is no evidence store here.*treering update"):
         store.open_store(place)
     assert not (tmp_path / "new").exists()
 
