@@ -78,7 +78,8 @@ def single_maximum(batch: Batch, at_zero: Fit, *, restricted: bool) -> tuple[Flo
             proved[some] = _nothing_hidden_in_parts(batch.columns(some), *ends, t[some], parts, restricted)
     climb = np.flatnonzero(proved & rising)
     part = batch if climb.size == go.size else batch.columns(climb)
-    best[go[climb]] = _climb(part, t[climb], now.total[climb], there.columns(climb), restricted)
+    ends = zero.columns(climb), there.columns(climb)
+    best[go[climb]] = _climb(part, t[climb], now.total[climb], ends, restricted)
     return best, go[~proved]
 
 
@@ -121,11 +122,28 @@ def newton(there: Slope, t: FloatArray) -> FloatArray:
     return t + (there.a - there.b) * there.a / np.where(turn == 0.0, TINY, turn)
 
 
-def _climb(batch: Batch, t: FloatArray, total: FloatArray, there: Slope, restricted: bool) -> FloatArray:
-    """Climb to the one maximum from a slope that is known at t and rises at zero."""
+def _between(zero: Slope, there: Slope, t: FloatArray) -> FloatArray:
+    """Where B / A = 1 by cubic inverse interpolation through value and slope of B / A at 0 and at t."""
+    (r0, d0), (r1, d1) = (
+        (at.b / at.a - 1.0, at.a * at.a / (at.b * at.fall_a - at.a * at.fall_b)) for at in (zero, there)
+    )
+    wide = r1 - r0
+    share = -r0 / wide
+    rest = 1.0 - share
+    back = -(1.0 + 2.0 * share) * rest * t + wide * share * (rest * d0 - share * d1)
+    guess: FloatArray = t + rest * back
+    # Beyond t the cubic is no better than the straight line at t, and further out it is worse.
+    return np.where((share > 0.0) & (share < 1.5), guess, newton(there, t))
+
+
+def _climb(
+    batch: Batch, t: FloatArray, total: FloatArray, ends: tuple[Slope, Slope], restricted: bool
+) -> FloatArray:
+    """Climb to the one maximum from slopes that are known at 0, where it rises, and at t."""
+    zero, there = ends
     below = there.a > there.b
     low, high = np.where(below, t, 0.0), np.where(below, np.inf, t)
-    moved = newton(there, t)
+    moved = _between(zero, there, t)
     inside = (moved >= low) & (moved <= high)
     # Outside the bracket: halve it, or where it has no upper end step on by the weighted mean of v + tau2.
     aside = np.where(below, 2.0 * t + batch.k / total, 0.5 * t)
