@@ -50,7 +50,7 @@ def report(folder: Path) -> Path:
 def test_help_lists_the_commands_of_the_group(run: Run) -> None:
     status, out, _ = run("store", "--help")
     assert status == 0
-    names = ("copy", "export", "import", "prove", "prove-extends", "verify", "make-key", "sign")
+    names = ("audit", "copy", "export", "import", "prove", "prove-extends", "verify", "make-key", "sign")
     assert [name for name in names if f" {name} " not in out] == []
 
 
@@ -67,6 +67,19 @@ def test_copy_is_audited_and_its_head_printed(run: Run, folder: Path, tmp_path: 
     copy = json.loads(out)
     assert (status, copy["sound"]) == (0, True)
     assert run("store", "copy", tmp_path / "copy.db", folder)[0] == 1
+
+
+def test_a_copy_is_audited_by_itself(run: Run, folder: Path, report: Path, tmp_path: Path) -> None:
+    run("store", "copy", tmp_path / "copy.db", folder)
+    status, out, _ = run("store", "audit", tmp_path / "copy.db", "--report", report)
+    assert (status, len(out.splitlines())) == (0, 10)
+    status, out, _ = run(
+        "store", "audit", tmp_path / "copy.db", "--checkpoint", f"9999 {'ab' * 32}", "--json"
+    )
+    failed = [check for check in json.loads(out) if not check["holds"]]
+    assert (status, [check["number"] for check in failed]) == (1, [10])
+    assert "tail was cut" in failed[0]["faults"][0]
+    assert run("store", "audit", tmp_path / "none.db")[0] == 1
 
 
 def test_an_entry_is_proved_against_the_head_of_an_old_report(

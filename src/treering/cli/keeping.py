@@ -1,4 +1,4 @@
-"""Commands that keep the store: copies, exports, proofs and signatures."""
+"""Commands that keep the store: copies, exports, proofs; those that sign are in `treering.cli.signing`."""
 
 from __future__ import annotations
 
@@ -28,7 +28,7 @@ def copy_store(target: Path, folder: Path = Path(), /, *, json: bool = False) ->
     """
     from treering.store.audit import audit_store
 
-    with _store(folder) as opened:
+    with open_store_of(folder) as opened:
         review = opened.review
         opened.copy(target)
     failed = [check for check in audit_store(target, review=review) if not check.holds]
@@ -40,8 +40,38 @@ def copy_store(target: Path, folder: Path = Path(), /, *, json: bool = False) ->
 
     with open_store(target) as made:
         head = made.head()
-    _tell({"file": str(target), "size": head.size, "root": head.root, "sound": not failed}, json)
+    tell({"file": str(target), "size": head.size, "root": head.root, "sound": not failed}, json)
     return EXIT_REFUSED if failed else EXIT_DONE
+
+
+@store.command(name="audit")
+def audit_copy(
+    target: str, /, *, checkpoint: str | None = None, report: Path | None = None, json: bool = False
+) -> int:
+    """Audit a store by itself, such as a copy or an import, without its review folder.
+
+    Parameters
+    ----------
+    target : str
+        SQLite file or PostgreSQL URL.
+    checkpoint : str, optional
+        A head as printed, "SIZE ROOT", that the store must extend.
+    report : Path, optional
+        An old report.json to take that head from.
+    json : bool
+        Print JSON.
+    """
+    from treering.store.audit import audit_store
+
+    checks = audit_store(target, checkpoints=_heads(checkpoint, report))
+    if json:
+        say_json([check.to_dict() for check in checks])
+    else:
+        for check in checks:
+            say(check.line())
+            for fault in check.faults:
+                say(f"    {fault}")
+    return EXIT_DONE if all(check.holds for check in checks) else EXIT_REFUSED
 
 
 @store.command(name="export")
@@ -63,9 +93,9 @@ def export_store(
     """
     from treering.store.exporting import export
 
-    with _store(folder) as opened:
+    with open_store_of(folder) as opened:
         made = export(opened, target, version=version)
-    _tell({"folder": str(target), **asdict(made.head), "tables": made.tables}, json)
+    tell({"folder": str(target), **asdict(made.head), "tables": made.tables}, json)
     remark("The export holds every entry, addresses of panel members included: think before handing it on.")
     return EXIT_DONE
 
@@ -86,7 +116,7 @@ def import_store(source: Path, target: str, /, *, json: bool = False) -> int:
     from treering.store.importing import import_export
 
     package = import_export(source, target)
-    _tell({"review": package.review, "version": package.version, **asdict(package.head)}, json)
+    tell({"review": package.review, "version": package.version, **asdict(package.head)}, json)
     return EXIT_DONE
 
 
@@ -117,9 +147,9 @@ def prove(
     """
     from treering.store.proofs import inclusion_document
 
-    with _store(folder) as opened:
-        place = _seq_of(opened, entry)
-        return _give(inclusion_document(opened, place, _size_of(opened, version, size)), to)
+    with open_store_of(folder) as opened:
+        place = seq_of(opened, entry)
+        return _give(inclusion_document(opened, place, size_of(opened, version, size)), to)
 
 
 @store.command(name="prove-extends")
@@ -149,8 +179,8 @@ def prove_extends(
     """
     from treering.store.proofs import consistency_document
 
-    with _store(folder) as opened:
-        return _give(consistency_document(opened, first, _size_of(opened, version, size)), to)
+    with open_store_of(folder) as opened:
+        return _give(consistency_document(opened, first, size_of(opened, version, size)), to)
 
 
 @store.command
@@ -178,114 +208,64 @@ def verify(
     json : bool
         Print JSON.
     """
-    from treering.store.checkpoint import checkpoint_of_report, parse_checkpoint
     from treering.store.verifying import verify_path
 
-    heads = [parse_checkpoint(checkpoint)] if checkpoint else []
-    heads += [checkpoint_of_report(report)] if report else []
+    heads = _heads(checkpoint, report)
     shown = verify_path(file, heads=heads, public_key=key)
-    _tell(shown, json)
+    tell(shown, json)
     if not heads and "signed by" not in shown:
         remark("It holds in itself. Compare its head with a printed one: --checkpoint or --report.")
     return EXIT_DONE
 
 
-@store.command(name="make-key")
-def make_signing_key(key: Path, folder: Path = Path(), /, *, json: bool = False) -> int:
-    """Make a key for signatures, outside the review folder.
-
-    Parameters
-    ----------
-    key : Path
-        File of the private key; the public one is written beside it with .pub added.
-    folder : Path
-        The review folder.
-    json : bool
-        Print JSON.
-    """
-    from treering.store.keys import make_key
-
-    name = make_key(key, review_folder=folder)
-    _tell({"key": name, "private": str(key), "public": f"{key}.pub"}, json)
-    return EXIT_DONE
+# Loaded only when used, so that their help stands here.
+_SIGNING = {
+    "make-key": ("make_signing_key", "Make a key for signatures, outside the review folder."),
+    "sign": ("sign", "Sign the head of today, the head of a version, or one entry in a person's name."),
+}
+for _name, (_function, _help) in _SIGNING.items():
+    store.command(f"treering.cli.signing:{_function}", name=_name, help=_help)
 
 
-@store.command
-def sign(
-    key: Path,
-    folder: Path = Path(),
-    /,
-    *,
-    version: int | None = None,
-    entry: str | None = None,
-    person: str | None = None,
-    to: Path | None = None,
-) -> int:
-    """Sign the head of today, the head of a version, or one entry in a person's name.
-
-    Parameters
-    ----------
-    key : Path
-        File of the private key, outside the review folder.
-    folder : Path
-        The review folder.
-    version : int, optional
-        Sign the head that this version states.
-    entry : str, optional
-        Number or key of an entry to sign off.
-    person : str, optional
-        Id of the person who signs it off.
-    to : Path, optional
-        File to write; printed when left out.
-    """
-    from datetime import UTC, datetime
-
-    from treering.store.signing import sign_entry, sign_head
-
-    if (entry is None) != (person is None):
-        raise _wrong("a sign-off needs both an entry and a person.", "--entry and --person")
-    today = datetime.now(UTC).date().isoformat()
-    with _store(folder) as opened:
-        review = opened.review
-        if entry is not None and person is not None:
-            place = _seq_of(opened, entry)
-            (signed,) = opened.entries(since=place, until=place + 1)
-            text = sign_entry(signed, person=person, review=review, date=today, key=key, review_folder=folder)
-        else:
-            head = opened.head(_size_of(opened, version, None))
-            text = sign_head(head, review=review, date=today, key=key, review_folder=folder)
-    return _write(text, to)
-
-
-def _store(folder: Path) -> Any:
+def open_store_of(folder: Path) -> Any:
+    """Open the evidence store of a review."""
     from treering.update import open_evidence, read_review
 
     return open_evidence(read_review(folder))
 
 
-def _seq_of(opened: Any, entry: str) -> int:
+def _heads(checkpoint: str | None, report: Path | None) -> list[Any]:
+    """Return the heads from trusted sources that were given."""
+    from treering.store.checkpoint import checkpoint_of_report, parse_checkpoint
+
+    heads = [parse_checkpoint(checkpoint)] if checkpoint else []
+    return heads + ([checkpoint_of_report(report)] if report else [])
+
+
+def seq_of(opened: Any, entry: str) -> int:
     """Return the number of an entry that is named by number or key."""
     if entry.isdigit():
         return int(entry)
     found = opened.state().get(entry)
     if found is None:
-        raise _wrong(
+        raise wrong(
             "there is no live entry on this key.", "a number or key that treering history lists", entry
         )
     return int(found.seq)
 
 
-def _size_of(opened: Any, version: int | None, size: int | None) -> int:
+def size_of(opened: Any, version: int | None, size: int | None) -> int:
     """Return the size of the head asked for."""
     if version is None:
         return int(opened.head().size) if size is None else size
     versions = opened.versions()
     if not 1 <= version <= len(versions):
-        raise _wrong("there is no such version.", f"1 to {len(versions)}", version)
+        raise wrong("there is no such version.", f"1 to {len(versions)}", version)
     return int(versions[version - 1]["entries"])
 
 
-def _wrong(text: str, expected: str, found: object = None) -> Exception:
+def wrong(text: str, expected: str, found: object = None) -> Exception:
+    """Return the error for something that was asked for and is not there."""
     from treering.errors import StoreError
 
     return StoreError(text, found=found, expected=expected)
@@ -294,10 +274,11 @@ def _wrong(text: str, expected: str, found: object = None) -> Exception:
 def _give(document: dict[str, Any], to: Path | None) -> int:
     from json import dumps
 
-    return _write(dumps(document, indent=2, ensure_ascii=False) + "\n", to)
+    return write_out(dumps(document, indent=2, ensure_ascii=False) + "\n", to)
 
 
-def _write(text: str, to: Path | None) -> int:
+def write_out(text: str, to: Path | None) -> int:
+    """Print a text, or write it to a new file."""
     if to is None:
         say(text.rstrip("\n"))
         return EXIT_DONE
@@ -305,12 +286,13 @@ def _write(text: str, to: Path | None) -> int:
         with to.open("x", encoding="utf-8", newline="\n") as file:
             file.write(text)
     except OSError as error:
-        raise _wrong("the file cannot be written.", "a new file in a folder that is there", error) from error
+        raise wrong("the file cannot be written.", "a new file in a folder that is there", error) from error
     remark(f"Written to {to}.")
     return EXIT_DONE
 
 
-def _tell(facts: dict[str, Any], json: bool) -> None:
+def tell(facts: dict[str, Any], json: bool) -> None:
+    """Print facts, one a line or as JSON."""
     if json:
         say_json(facts)
         return
