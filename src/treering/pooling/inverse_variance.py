@@ -152,15 +152,14 @@ def pool_many(
         model=model, tau2=tau2, interval=interval, level=level, prediction_df=prediction_df
     )
     y, v = check_effects(estimates, variances)
-    codes, names = _groups(groups, y.size)
-    counts = np.bincount(codes)
-    if (codes[1:] < codes[:-1]).any():
-        order = np.argsort(codes, kind="stable")
+    counts, names, order = _groups(groups, y.size)
+    if order is not None:
         y, v = y[order], v[order]
     return _frame(_pool_runs(y, v, counts, options, list(names)), names)
 
 
-def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd.Index]:
+def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd.Index, IntArray | None]:
+    """Trials in each group, the groups, and the order that puts a group's trials together if needed."""
     values = groups if isinstance(groups, pd.Series) else np.asarray(groups)
     if len(values) != count:
         raise AnalysisError(
@@ -170,12 +169,13 @@ def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd
         )
     if isinstance(values, np.ndarray) and values.dtype.kind in "iu" and (values[1:] >= values[:-1]).all():
         # Sorted whole numbers, the usual case in bulk, need no hashing.
-        fresh = np.concatenate([[True], values[1:] != values[:-1]])
-        return np.cumsum(fresh) - 1, pd.Index(values[fresh], name="group")
+        starts = np.concatenate([[0], np.flatnonzero(values[1:] != values[:-1]) + 1])
+        return np.diff(starts, append=count), pd.Index(values[starts], name="group"), None
     codes, names = pd.factorize(values, sort=True)
     if (codes < 0).any():
         raise AnalysisError("group is missing.", trial=str(int(np.argmax(codes < 0)) + 1))
-    return codes, pd.Index(names, name="group")
+    order = np.argsort(codes, kind="stable") if (codes[1:] < codes[:-1]).any() else None
+    return np.bincount(codes), pd.Index(names, name="group"), order
 
 
 def _pool_runs(
