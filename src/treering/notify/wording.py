@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping
 from typing import Any
 
 from treering.notify.event import Body, Event
-from treering.terms import EventClass
+from treering.terms import EventClass, NoticeKind
 
 MINUS = "\u2212"
 ASK = (
@@ -72,15 +72,20 @@ def _left(event: Event) -> list[str]:
 
 
 def _notices(event: Event) -> str:
-    """Name the flags that trials have now and had not before."""
+    """Name the notices that stand about trials now and did not before."""
     before = _rows(event.previous)
     fresh = [
         f"{row.get('label') or trial}: {flag}"
         for trial, row in _rows(event.body).items()
         for flag in row.get("flags") or ()
-        if flag not in (before.get(trial, {}).get("flags") or ())
+        if _is_notice(flag) and flag not in (before.get(trial, {}).get("flags") or ())
     ]
     return "; ".join(fresh) or "see the report"
+
+
+def _is_notice(flag: str) -> bool:
+    """Tell a published notice ("retraction, 2026-01-17") from what else is flagged beside a trial."""
+    return flag.split(",")[0] in {kind.value for kind in NoticeKind}
 
 
 def effect(body: Body, *, without: str = "no intervention") -> Iterator[str]:

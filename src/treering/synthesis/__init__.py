@@ -4,6 +4,7 @@ from treering.synthesis.analyse import analyse
 from treering.synthesis.estimates import repool_rows
 from treering.synthesis.looks import plan_of
 from treering.synthesis.numbers import plain, rounded
-from treering.synthesis.trials import StateView, TrialRow, trial_rows
+from treering.synthesis.standing import StateView
+from treering.synthesis.trials import TrialRow, trial_rows
 
 __all__ = ["StateView", "TrialRow", "analyse", "plain", "plan_of", "repool_rows", "rounded", "trial_rows"]

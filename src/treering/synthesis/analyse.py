@@ -8,12 +8,15 @@ from typing import Any
 
 from scipy.special import ndtri
 
+from treering.intake.view import StateView as StoredState
 from treering.monitoring import Look
 from treering.pooling import PooledEffect
 from treering.protocol import Outcome, Protocol
+from treering.synthesis.arms import arms_body, without_double_counting
 from treering.synthesis.estimates import Estimated, estimate_trials, method_words, pool_by, pool_planned
 from treering.synthesis.looks import monitoring_block
 from treering.synthesis.numbers import plain
+from treering.synthesis.remarks import imputed_share, warnings
 from treering.synthesis.robustness import (
     absolute_effects,
     leave_one_out_rows,
@@ -22,7 +25,8 @@ from treering.synthesis.robustness import (
     small_study,
     subgroup_blocks,
 )
-from treering.synthesis.trials import StateView, TrialRow, trial_rows
+from treering.synthesis.trials import TrialRow, trial_rows
+from treering.synthesis.unresolved import open_readings
 
 POOLED_FIELDS = tuple(
     field.name for field in fields(PooledEffect) if field.name not in ("weights", "remarks", "level")
@@ -30,7 +34,7 @@ POOLED_FIELDS = tuple(
 
 
 def analyse(
-    state: StateView,
+    state: StoredState,
     outcome: Outcome,
     protocol: Protocol,
     *,
@@ -65,25 +69,36 @@ def analyse(
     AnalysisError
         When the verified numbers of a trial cannot be analysed.
     """
-    estimated = estimate_trials(trial_rows(state, outcome, protocol), outcome)
-    main = estimated.main
-    planned = pool_planned(estimated, main, outcome)
+    rows = without_double_counting(trial_rows(state, outcome, protocol))
+    estimated = estimate_trials(rows, outcome)
+    planned = pool_planned(estimated, estimated.main, outcome)
+    unsettled = open_readings(state, rows, outcome, protocol)
+    imputed = imputed_share(estimated, planned)
     body = {
         **_head(outcome, version),
         **_people(estimated.main),
+        "arms": arms_body(estimated.rows, outcome.id),
+        "imputed": imputed,
         "trials": _trials(estimated, planned, outcome),
         "pooled": pooled_body(planned, method_words(outcome)),
         "common": _common(estimated, outcome),
         "others": other_methods(estimated, outcome),
         "leave_one_out": leave_one_out_rows(estimated, outcome),
         "absolute": absolute_effects(planned, outcome),
-        "sensitivity": sensitivity(estimated, outcome),
+        "sensitivity": sensitivity(estimated, outcome, unsettled),
         "subgroups": subgroup_blocks(estimated, outcome),
         "small_study": small_study(estimated),
         "monitoring": monitoring_block(
-            estimated, outcome, protocol, state=state, earlier=earlier, version=version, date=date
+            estimated,
+            outcome,
+            protocol,
+            state=state,
+            earlier=earlier,
+            version=version,
+            date=date,
+            unsettled=unsettled,
         ),
-        "warnings": list(planned.remarks) if planned else ["no trial with a usable result"],
+        "warnings": warnings(estimated, planned, imputed, unsettled, date),
     }
     return plain(body)  # type: ignore[no-any-return]
 
@@ -116,6 +131,11 @@ def _people(rows: Sequence[TrialRow]) -> dict[str, Any]:
     return {
         "k": len(rows),
         "participants": sum(total for total in totals if total is not None),
+        "effective_participants": sum(
+            (arm_total(row, side) or 0) / row.design_effect
+            for row in rows
+            for side in ("intervention", "comparator")
+        ),
         "participants_unknown": sum(1 for total in totals if total is None) // 2,
         "events": None if any(e is None for e in events) or not events else sum(e or 0 for e in events),
     }
@@ -155,6 +175,7 @@ def _trial(row: TrialRow, estimated: Estimated, weight: float | None, reach: flo
         "risk_of_bias": row.risk_of_bias,
         "basis": row.basis,
         "imputed": row.imputed,
+        "design_effect": row.design_effect,
         "subgroup": row.subgroup,
     }
 

@@ -10,13 +10,18 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from treering.effects import effect_sizes, effective_table
+from treering.effects import effect_sizes
 from treering.pooling import PooledEffect, pool, pool_mantel_haenszel
 from treering.protocol import Outcome, Pooling
+from treering.synthesis.arms import COUNTED_TWICE
+from treering.synthesis.clusters import effective_values, with_clusters
 from treering.synthesis.trials import TrialRow
 from treering.terms import PoolingModel
 
 Floats = NDArray[np.float64]
+
+#: Standings of a trial that gives this synthesis no number at all.
+UNUSABLE = frozenset({"no usable result", COUNTED_TWICE})
 
 
 @dataclass(frozen=True)
@@ -64,33 +69,27 @@ def estimate_trials(rows: Sequence[TrialRow], outcome: Outcome) -> Estimated:
     AnalysisError
         When a verified number cannot be analysed; names trial and field.
     """
-    usable = [row for row in rows if row.status != "no usable result"]
+    usable = [row for row in rows if row.status not in UNUSABLE]
     if not usable:
         return Estimated(tuple(rows), pd.DataFrame({"estimate": [], "variance": []}, dtype=float))
+    table = values_table(usable)
     effects = effect_sizes(
-        values_table(usable),
+        table,
         outcome.measure,
         correction=outcome.pooling.correction,
         amount=outcome.pooling.correction_amount,
     )
     reasons = {row.trial: row.reason for row in effects.attrs.get("left_out", ())}
-    marked = tuple(
+    marked = [
         replace(row, left_out=reasons[row.trial]) if row.left_out is None and row.trial in reasons else row
-        for row in rows
-    )
-    return Estimated(marked, effects)
+        for row in with_clusters(rows, table)
+    ]
+    return Estimated(tuple(marked), effects)
 
 
 def values_table(rows: Sequence[TrialRow]) -> pd.DataFrame:
-    """Return the verified numbers of `rows`, one row per trial, ready for effects.
-
-    The numbers of cluster trials are divided by their design effects, so that effective and not raw
-    numbers reach the estimate and the information.
-    """
-    table = pd.DataFrame([dict(row.values) for row in rows], index=[row.trial for row in rows])
-    if "icc" not in table:
-        return table
-    return effective_table(table.rename(columns={"icc": "intracluster_correlation"}))
+    """Return the verified numbers of `rows`, one row per trial, ready for effects; see `effective_values`."""
+    return effective_values({row.trial: row.values for row in rows})
 
 
 def pool_planned(estimated: Estimated, rows: Sequence[TrialRow], outcome: Outcome) -> PooledEffect | None:
@@ -177,7 +176,7 @@ def repool_rows(outcome: Outcome, rows: Sequence[Mapping[str, Any]]) -> float | 
     if not usable:
         return None
     if outcome.pooling.method == "mantel-haenszel":
-        table = pd.DataFrame([row["values"] for row in usable], index=[row["trial"] for row in usable])
+        table = effective_values({row["trial"]: row["values"] for row in usable})
         plan = outcome.pooling
         return pool_mantel_haenszel(
             table, outcome.measure, correction=plan.correction, amount=plan.correction_amount

@@ -6,6 +6,8 @@ import math
 from collections.abc import Sequence
 from typing import Any
 
+import numpy as np
+
 from treering.monitoring import (
     PER_TAIL_CONVENTION,
     Look,
@@ -19,10 +21,12 @@ from treering.monitoring import (
     rests_on,
     second_opinions,
 )
+from treering.monitoring.verdict import standing
 from treering.protocol import Outcome, Protocol
 from treering.synthesis.estimates import Estimated
 from treering.synthesis.outlook import ongoing_trials, outlook
-from treering.synthesis.trials import StateView
+from treering.synthesis.standing import StateView
+from treering.synthesis.unresolved import OpenReading, withheld
 from treering.terms import CROSSED, Measure
 
 
@@ -60,6 +64,7 @@ def monitoring_block(
     earlier: Sequence[Look],
     version: int,
     date: str,
+    unsettled: Sequence[OpenReading] = (),
 ) -> dict[str, Any] | None:
     """Make the look that the evidence calls for and what is printed beside it.
 
@@ -77,6 +82,8 @@ def monitoring_block(
         The ledger so far.
     version, date
         Of the version that is being made.
+    unsettled : sequence of OpenReading
+        Readings that wait for a decision: no crossing is declared while the verdict hangs on them.
 
     Returns
     -------
@@ -93,25 +100,35 @@ def monitoring_block(
     fresh = _plan_changed(plan, ledger) or holds_new_data(
         plan, ledger, trials=trials, estimates=estimates, variances=variances
     )
+    tried = [reading for reading in unsettled if fresh and _differs(reading, estimated)]
+    under: list[Look] = []
     if fresh:
         amendment = protocol.amendments[-1].date.isoformat() if protocol.amendments else None
-        ledger.append(
-            next_look(
+        amendment = amendment if _plan_changed(plan, ledger) else None
+
+        def look_at(found: Estimated) -> Look:
+            return next_look(
                 plan,
                 ledger,
                 date=date,
                 version=version,
-                trials=trials,
-                estimates=estimates,
-                variances=variances,
-                amendment=amendment if _plan_changed(plan, ledger) else None,
+                trials=[row.trial for row in found.main],
+                estimates=found.numbers(found.main)[0],
+                variances=found.numbers(found.main)[1],
+                amendment=amendment,
             )
-        )
+
+        under = [look_at(reading.estimated) for reading in tried]
+        ledger.append(withheld(look_at(estimated), standing(ledger).verdict, under))
     return {
         "plan": plan.to_dict(),
         "inputs": _inputs(outcome, protocol, estimated),
         "total_alpha": sum(o.monitoring.alpha for o in protocol.outcomes if o.monitoring),
         "new_look": fresh,
+        "unsettled": [
+            {"trial": reading.trial, "reader": reading.reader, "verdict": look.verdict}
+            for reading, look in zip(tried, under, strict=True)
+        ],
         "look": ledger[-1].to_dict() if ledger else None,
         "looks": [look.to_dict() for look in ledger],
         "hindsight": _hindsight(plan, estimated),
@@ -126,6 +143,14 @@ def monitoring_block(
         ),
         **_beside(plan, ledger, trials, estimates, variances, per_participant),
     }
+
+
+def _differs(reading: OpenReading, estimated: Estimated) -> bool:
+    """Say whether a reading would change the main analysis at all; one that gives no effect does not."""
+    one, other = reading.estimated, estimated
+    if [row.trial for row in one.main] != [row.trial for row in other.main]:
+        return True
+    return not np.array_equal(one.numbers(one.main), other.numbers(other.main))
 
 
 def _plan_changed(plan: MonitoringPlan, ledger: Sequence[Look]) -> bool:

@@ -7,7 +7,7 @@ from typing import Any
 
 from treering.monitoring import Look, MonitoringPlan, OngoingTrial, forecast
 from treering.protocol import Outcome
-from treering.synthesis.trials import StateView
+from treering.synthesis.standing import StateView
 from treering.terms import EntryKind
 
 

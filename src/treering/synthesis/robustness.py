@@ -17,8 +17,9 @@ from treering.pooling import (
 )
 from treering.pooling import absolute_effects as per_people
 from treering.protocol import Outcome
-from treering.synthesis.estimates import Estimated, pool_planned, values_table
+from treering.synthesis.estimates import UNUSABLE, Estimated, pool_planned, values_table
 from treering.synthesis.trials import TrialRow
+from treering.synthesis.unresolved import OpenReading
 from treering.terms import Judgement, Measure
 
 WITH_ABSOLUTE = frozenset(
@@ -107,7 +108,9 @@ def leave_one_out_rows(estimated: Estimated, outcome: Outcome) -> list[dict[str,
     ]
 
 
-def sensitivity(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
+def sensitivity(
+    estimated: Estimated, outcome: Outcome, unsettled: Sequence[OpenReading] = ()
+) -> list[dict[str, Any]]:
     """Pool by the plan on other sets of trials: low risk of bias, with those left out by a notice.
 
     Parameters
@@ -116,6 +119,8 @@ def sensitivity(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
         Effects of the outcome.
     outcome : Outcome
         Its plan.
+    unsettled : sequence of OpenReading
+        Readings that wait for a decision; each is tried in its trial's place.
 
     Returns
     -------
@@ -124,7 +129,7 @@ def sensitivity(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
     """
     main = estimated.main
     with_effect = estimated.effects.dropna().index
-    known = [row for row in estimated.rows if row.trial in with_effect]
+    known = [row for row in estimated.rows if row.trial in with_effect and row.status not in UNUSABLE]
     flagged = [row for row in main if not any("expression of concern" in flag for flag in row.flags)]
     variants: list[tuple[str, Sequence[TrialRow], str]] = [
         ("low risk of bias only", [r for r in main if r.risk_of_bias == Judgement.LOW], ""),
@@ -137,13 +142,22 @@ def sensitivity(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
     for name, rows, note in variants:
         if {r.trial for r in rows} == {r.trial for r in main}:
             continue
-        pooled = pool_planned(estimated, rows, outcome)
-        if pooled is None:
-            result.append({"name": name, "k": 0, "estimate": None, "ci_low": None, "ci_high": None,
-                           "tau2": None, "note": "no trial left"})  # fmt: skip
-        else:
-            result.append(_short(pooled, name, note))
+        result.append(_variant(estimated, rows, outcome, name, note))
+    for reading in unsettled:
+        name = f"with {reading.trial} as {reading.reader} read it"
+        found = reading.estimated
+        result.append(_variant(found, found.main, outcome, name, "the two readings are not settled"))
     return result
+
+
+def _variant(
+    estimated: Estimated, rows: Sequence[TrialRow], outcome: Outcome, name: str, note: str
+) -> dict[str, Any]:
+    pooled = pool_planned(estimated, rows, outcome)
+    if pooled is None:
+        return {"name": name, "k": 0, "estimate": None, "ci_low": None, "ci_high": None,
+                "tau2": None, "note": "no trial left"}  # fmt: skip
+    return _short(pooled, name, note)
 
 
 def subgroup_blocks(estimated: Estimated, outcome: Outcome) -> list[dict[str, Any]]:
