@@ -6,6 +6,8 @@ import hashlib
 from collections.abc import Callable
 from typing import Any
 
+from treering.update.auditing import audit_review
+
 
 def weeks(review: Any) -> dict[str, Any]:
     """Play three weeks and return heads and digests of everything published."""
@@ -48,3 +50,16 @@ def test_where_the_store_lies_stays_out_of_the_ledger(
     with review.store() as store:
         text = store.state().get("protocol").body["text"]
     assert text == plan + "\n"
+
+
+def test_the_whole_audit_of_a_review_on_a_server_holds(
+    make_review: Callable[..., Any], postgres_url: str
+) -> None:
+    review = make_review()
+    plan = (review.folder / "config" / "review.toml").read_text()
+    review.write_plan(plan + f'\n[store]\nurl = "{postgres_url}"\n')
+    review.drop_pair("T1", (24, 110, 33, 108))
+    review.update("2026-01-05")
+    checks = audit_review(review.folder)
+    assert [(check.number, check.faults) for check in checks if not check.holds] == []
+    assert [check.number for check in checks] == list(range(1, 12))
