@@ -37,6 +37,9 @@ class Event:
         Root hash of the store head, hexadecimal.
     told_before : tuple of str
         Persons who were told of the crossing that is now lost; they are told whatever they follow.
+    defect : mapping
+        Of a defect of the program: ``id``, ``description``, ``versions`` (those it touched) and ``again``
+        (what computing them again now gives, a sentence).
     """
 
     event: EventClass
@@ -49,11 +52,13 @@ class Event:
     head_size: int = 0
     head_root: str = ""
     told_before: tuple[str, ...] = ()
+    defect: Body = field(default_factory=dict)
 
     @property
     def slug(self) -> str:
         """The event's name in keys and file names."""
-        return self.event.value.replace(" ", "-")
+        name = self.event.value.replace(" ", "-")
+        return f"{name}-{self.defect['id']}" if self.defect else name
 
     @property
     def title(self) -> str:

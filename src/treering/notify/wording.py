@@ -40,6 +40,8 @@ def happened(event: Event, earlier: str = "an earlier version") -> str:
     -------
     str
     """
+    if event.defect:
+        return _defect(event.defect)
     told = _HAPPENED[event.event].format(
         verdict=_verdict(event.body), notices=_notices(event), earlier=earlier
     )
@@ -50,6 +52,17 @@ def happened(event: Event, earlier: str = "an earlier version") -> str:
     if left:
         told += f" No longer in the main analysis: {'; '.join(left)}."
     return told
+
+
+def _defect(defect: Body) -> str:
+    """Say what was wrong with the program, in which versions, and what they come to now."""
+    numbers = [str(number) for number in defect["versions"]]
+    last = f" and {numbers[-1]}" if len(numbers) > 1 else numbers[-1]
+    named = f"version{'s' if len(numbers) > 1 else ''} {', '.join(numbers[:-1])}{last}"
+    return (
+        f"A defect in the program ({defect['id']}) touched this outcome in {named}: {defect['description']} "
+        f"{defect['again']} What was published stays as it is."
+    )
 
 
 def _verdict(body: Body) -> str:

@@ -9,9 +9,11 @@ from typing import Any
 from treering.errors import ReportError
 from treering.records import NewEntry
 from treering.report import ReportView, render, render_index
+from treering.report.wording import status_words
 from treering.store import EvidenceStore, State
 from treering.terms import EntryKind
 from treering.update.context import Review, RunContext
+from treering.update.rhythm import rhythm, rhythm_words
 from treering.update.views import folder_name, index_rows, still_ongoing, version_view
 
 
@@ -129,20 +131,20 @@ def status_of(state: State, context_day: str, review: Review, waiting: int) -> d
     Returns
     -------
     dict
-        Plain values for the status line.
+        Plain values for the status line, and the line itself as ``text``.
     """
     searches: dict[str, str] = {}
     for entry in state.live(EntryKind.SEARCH):
         if not entry.body.get("error"):
             source = entry.body["source"]
             searches[source] = max(searches.get(source, ""), entry.body["date"])
-    runs = state.live(EntryKind.RUN)
-    return {
+    status: dict[str, Any] = {
         "date": context_day,
         "searches": dict(sorted(searches.items())),
         "planned_sources": dict(sorted(review.protocol.living.search_every_days.items())),
         "waiting": waiting,
         "ongoing": len(still_ongoing(state)),
         "update_every_days": review.protocol.living.update_every_days,
-        "last_run": runs[-1].body if runs else None,
+        "rhythm": rhythm(state, context_day, review.protocol.living.update_every_days),
     }
+    return {**status, "text": "; ".join([status_words(status), *rhythm_words(status["rhythm"])])}

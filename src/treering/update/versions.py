@@ -14,7 +14,7 @@ from treering.store import State, StoredEntry
 from treering.synthesis import analyse, repool_rows
 from treering.terms import EntryKind
 
-#: A version is laid down when one of these is new: evidence, a judgement, or the plan.
+#: A version is laid down when one of these is new: evidence, a judgement, the plan, or a defect made good.
 TRIGGERS = frozenset(
     {
         EntryKind.RESULT,
@@ -23,6 +23,7 @@ TRIGGERS = frozenset(
         EntryKind.INTEGRITY,
         EntryKind.AMENDMENT,
         EntryKind.WITHDRAWAL,
+        EntryKind.DEFECT,
     }
 )
 
