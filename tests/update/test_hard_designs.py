@@ -116,7 +116,7 @@ def test_h7_effective_numbers_are_analysed_and_raw_ones_printed(base: Any, week:
     assert [row["values"][name] for name in ("intervention_events", "comparator_total")] == [180, 600]
     assert (row["intervention_total"], row["design_effect"]) == (600, 1.58)
     assert row["flags"] == ["cluster trial, design effect 1.58: 1200 people count as 759"]
-    # closed form: the log risk ratio's variance is 1.58 times that of the raw counts, the estimate is the same
+    # closed form: the same log risk ratio, with 1.58 times the variance of the raw counts
     variance = 1 / 180 - 1 / 600 + 1 / 210 - 1 / 600
     assert row["estimate"] == pytest.approx(np.log(180 / 210), rel=1e-9)
     assert row["standard_error"] ** 2 == pytest.approx(1.58 * variance, rel=1e-9)

@@ -119,7 +119,7 @@ def monitoring_block(
             )
 
         under = [look_at(reading.estimated) for reading in tried]
-        ledger.append(withheld(look_at(estimated), standing(ledger).verdict, under))
+        ledger.append(withheld(look_at(estimated), ledger, standing(ledger).verdict, under))
     return {
         "plan": plan.to_dict(),
         "inputs": _inputs(outcome, protocol, estimated),

@@ -77,13 +77,19 @@ def open_readings(
     return found
 
 
-def withheld(look: Look, standing: Verdict | None, under: Sequence[Look]) -> Look:
+def withheld(look: Look, earlier: Sequence[Look], standing: Verdict | None, under: Sequence[Look]) -> Look:
     """Declare no new crossing where the verdict hangs on readings that are not settled.
+
+    Such a look spends nothing, so that the crossing can be judged when the readings are settled. The false
+    alarms that this could add come from paths beyond the boundary of this look, and every one of these is
+    counted in the alpha that the look would have spent: the plan's alpha holds.
 
     Parameters
     ----------
     look : Look
         The look on the verified results.
+    earlier : sequence of Look
+        The ledger before it.
     standing : Verdict or None
         Verdict that stood before it: a crossing declared earlier is not taken back by this.
     under : sequence of Look
@@ -92,7 +98,7 @@ def withheld(look: Look, standing: Verdict | None, under: Sequence[Look]) -> Loo
     Returns
     -------
     Look
-        The look itself, or one that cannot be judged. What it spent stays spent.
+        The look itself, or one that cannot be judged and spends nothing.
     """
     if look.verdict not in EFFICACY or look.verdict is standing:
         return look
@@ -102,4 +108,14 @@ def withheld(look: Look, standing: Verdict | None, under: Sequence[Look]) -> Loo
         f"Without the unresolved readings the verdict would be: {look.verdict}. It depends on them, so no "
         "crossing is declared until a third person has settled them."
     )
-    return replace(look, verdict=Verdict.CANNOT_BE_JUDGED, remarks=(why, *look.remarks))
+    return replace(
+        look,
+        verdict=Verdict.CANNOT_BE_JUDGED,
+        spends=False,
+        alpha_spent=earlier[-1].alpha_spent if earlier else 0.0,
+        boundary=None,
+        redrawn_boundary=None,
+        adjusted_low=None,
+        adjusted_high=None,
+        remarks=(why,),
+    )
