@@ -145,17 +145,28 @@ def _listed(before: Body | None, after: Body | None, found: Sequence[Difference]
 def _plan_changes(before: Body | None, after: Body | None, method: Explanation) -> list[dict[str, Any]]:
     if before is None or after is None:
         return []
+    pooled = bool(before.get("pooled") and after.get("pooled"))  # without an estimate no method is named
+    was, now = _plan(before, pooled=pooled), _plan(after, pooled=pooled)
     return [
         {
             "field": name,
-            "before": before.get(name),
-            "after": after.get(name),
+            "before": was.get(name),
+            "after": now.get(name),
             "cause": method.cause and str(method.cause),
             "reason": method.reason,
         }
-        for name in PLAN_FIELDS
-        if before.get(name) != after.get(name)
+        for name in (*now, *(name for name in was if name not in now))
+        if was.get(name) != now.get(name)
     ]
+
+
+def _plan(body: Body, *, pooled: bool) -> dict[str, Any]:
+    """Return what the protocol lays down for a synthesis: definition, method, monitoring."""
+    fields = {name: body.get(name) for name in PLAN_FIELDS}
+    if pooled:
+        fields["method"] = body["pooled"].get("method")
+    plan = (body.get("monitoring") or {}).get("plan") or {}
+    return fields | {f"monitoring {name}": value for name, value in plan.items()}
 
 
 def _split(

@@ -117,5 +117,5 @@ def withheld(look: Look, earlier: Sequence[Look], standing: Verdict | None, unde
         redrawn_boundary=None,
         adjusted_low=None,
         adjusted_high=None,
-        remarks=(why,),
+        remarks=(why, *(told for told in look.remarks if told.startswith("Amendment"))),
     )
