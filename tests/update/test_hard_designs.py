@@ -138,6 +138,29 @@ def test_h7_a_cluster_trial_without_its_correlation_is_taken_as_reported_and_fla
     assert after.trial("Other")["design_effect"] == pytest.approx(1.95)
 
 
+def test_h7_effective_numbers_reach_mantel_haenszel_pooling_and_the_split_of_changes(
+    review: Any, week: Callable[..., Any]
+) -> None:
+    plan = (review.folder / "config" / "review.toml").read_text().split("[outcomes.monitoring]")[0]
+    review.write_plan(plan + '[outcomes.pooling]\nmethod = "mantel-haenszel"\n')
+    review.drop_pair("T1", (24, 110, 33, 108))
+    week(review, "2026-01-05")
+    drop_counts(review, "Wards", (180, 600, 210, 600), design="cluster", mean_cluster_size=30, icc=0.02)
+    after = week(review, "2026-01-12")
+    assert after.changes["failed"]["uncaused"] == []
+    # closed form (Mantel and Haenszel 1959), the counts of the cluster trial divided by 1.58
+    top = 24 * 108 / 218 + 180 * 600 / 1200 / 1.58
+    bottom = 33 * 110 / 218 + 210 * 600 / 1200 / 1.58
+    assert after.failed["pooled"]["estimate"] == pytest.approx(np.log(top / bottom), rel=1e-9)
+
+
+def test_a_crossover_trial_with_figures_for_each_side_is_flagged(base: Any, week: Callable[..., Any]) -> None:
+    drop_counts(base, "Swap", (10, 40, 14, 40), design="crossover")
+    assert week(base, "2026-01-12").trial("Swap")["flags"] == [
+        "crossover trial, analysed side against side: right for the first period only"
+    ]
+
+
 @pytest.mark.parametrize(
     ("figures", "sentence"),
     [

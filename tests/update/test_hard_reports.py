@@ -186,6 +186,21 @@ def test_h12_the_crossing_is_declared_when_the_reading_is_settled(
     assert after.failed["monitoring"]["unsettled"] == []
 
 
+def test_h12_the_crossing_is_declared_when_the_reading_turns_out_unusable(
+    open_case: Any, week: Callable[..., Any]
+) -> None:
+    week(open_case, "2026-01-12")
+    open_case.drop("bias.json", bias("T1", "2026-01-15"))
+    still = week(open_case, "2026-01-19")
+    assert (still.verdict, still.failed["monitoring"]["new_look"]) == ("cannot be judged at this look", False)
+    settled = {"not_usable": "table and text cannot both be right", "unresolved": False}
+    open_case.drop("settled.json", unresolved("Open", **settled))
+    after = week(open_case, "2026-01-26")
+    assert after.verdict == "benefit boundary crossed"
+    assert [look["number"] for look in after.failed["monitoring"]["looks"]] == [1, 2, 3]
+    assert {notice["event"] for notice in after.told} == {"boundary crossed"}
+
+
 def test_h12_a_verdict_that_both_readings_share_is_declared(base: Any, week: Callable[..., Any]) -> None:
     base.drop_pair("Large", (150, 800, 230, 800))
     base.drop("x-AA.json", base.extraction("Open", "AA", (19, 80, 25, 80)))

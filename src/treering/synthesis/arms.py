@@ -16,9 +16,8 @@ from typing import Any
 import pandas as pd
 
 from treering.effects import arm_ledger
-from treering.synthesis.trials import TrialRow
+from treering.synthesis.trials import SIDES, TrialRow
 
-SIDES = ("intervention", "comparator")
 COUNTED_TWICE = "people counted twice"
 WHOLE = "all arms"
 

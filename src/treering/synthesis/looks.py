@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -26,7 +27,7 @@ from treering.protocol import Outcome, Protocol
 from treering.synthesis.estimates import Estimated
 from treering.synthesis.outlook import ongoing_trials, outlook
 from treering.synthesis.standing import StateView
-from treering.synthesis.unresolved import OpenReading, withheld
+from treering.synthesis.unresolved import OpenReading, before_withheld, withheld
 from treering.terms import CROSSED, Measure
 
 
@@ -97,38 +98,18 @@ def monitoring_block(
     trials = [row.trial for row in estimated.main]
     ledger = list(earlier)
     per_participant = _per_participant(outcome, estimated)
-    fresh = _plan_changed(plan, ledger) or holds_new_data(
-        plan, ledger, trials=trials, estimates=estimates, variances=variances
-    )
-    tried = [reading for reading in unsettled if fresh and _differs(reading, estimated)]
-    under: list[Look] = []
-    if fresh:
-        amendment = protocol.amendments[-1].date.isoformat() if protocol.amendments else None
-        amendment = amendment if _plan_changed(plan, ledger) else None
-
-        def look_at(found: Estimated) -> Look:
-            return next_look(
-                plan,
-                ledger,
-                date=date,
-                version=version,
-                trials=[row.trial for row in found.main],
-                estimates=found.numbers(found.main)[0],
-                variances=found.numbers(found.main)[1],
-                amendment=amendment,
-            )
-
-        under = [look_at(reading.estimated) for reading in tried]
-        ledger.append(withheld(look_at(estimated), ledger, standing(ledger).verdict, under))
+    made = _new_look(plan, ledger, estimated, unsettled, protocol, version=version, date=date)
+    fresh = made is not None
+    open_verdicts: list[dict[str, Any]] = []
+    if made is not None:
+        look, open_verdicts = made
+        ledger.append(look)
     return {
         "plan": plan.to_dict(),
         "inputs": _inputs(outcome, protocol, estimated),
         "total_alpha": sum(o.monitoring.alpha for o in protocol.outcomes if o.monitoring),
         "new_look": fresh,
-        "unsettled": [
-            {"trial": reading.trial, "reader": reading.reader, "verdict": look.verdict}
-            for reading, look in zip(tried, under, strict=True)
-        ],
+        "unsettled": open_verdicts,
         "look": ledger[-1].to_dict() if ledger else None,
         "looks": [look.to_dict() for look in ledger],
         "hindsight": _hindsight(plan, estimated),
@@ -143,6 +124,50 @@ def monitoring_block(
         ),
         **_beside(plan, ledger, trials, estimates, variances, per_participant),
     }
+
+
+def _new_look(
+    plan: MonitoringPlan,
+    ledger: Sequence[Look],
+    estimated: Estimated,
+    unsettled: Sequence[OpenReading],
+    protocol: Protocol,
+    *,
+    version: int,
+    date: str,
+) -> tuple[Look, list[dict[str, Any]]] | None:
+    """Make the look that the evidence calls for, with the verdict under each open reading; or none."""
+    tried = [reading for reading in unsettled if _differs(reading, estimated)]
+    before = list(ledger)
+    if not _is_new(plan, before, estimated):
+        before = before_withheld(ledger)
+        if tried or len(before) == len(ledger):
+            return None
+    amended = _plan_changed(plan, before) and bool(protocol.amendments)
+    amendment = protocol.amendments[-1].date.isoformat() if amended else None
+
+    def look_at(found: Estimated) -> Look:
+        names = [row.trial for row in found.main]
+        y, v = found.numbers(found.main)
+        look = next_look(
+            plan, before, date=date, version=version, trials=names, estimates=y, variances=v,
+            amendment=amendment,
+        )  # fmt: skip
+        return replace(look, number=len(ledger) + 1)
+
+    under = [look_at(reading.estimated) for reading in tried]
+    look = withheld(look_at(estimated), before, standing(before).verdict, under)
+    verdicts = [
+        {"trial": reading.trial, "reader": reading.reader, "verdict": other.verdict}
+        for reading, other in zip(tried, under, strict=True)
+    ]
+    return look, verdicts
+
+
+def _is_new(plan: MonitoringPlan, ledger: Sequence[Look], estimated: Estimated) -> bool:
+    y, v = estimated.numbers(estimated.main)
+    names = [row.trial for row in estimated.main]
+    return _plan_changed(plan, ledger) or holds_new_data(plan, ledger, trials=names, estimates=y, variances=v)
 
 
 def _differs(reading: OpenReading, estimated: Estimated) -> bool:

@@ -10,6 +10,8 @@ from treering.protocol import Outcome, Protocol
 from treering.synthesis.standing import Entry, StateView, standing_of
 from treering.terms import EntryKind
 
+SIDES = ("intervention", "comparator")
+
 
 @dataclass(frozen=True)
 class TrialArm:
@@ -152,6 +154,8 @@ def row_of(
     flags = standing.flags
     if bias is not None and bias.known_at < entry.known_at:
         flags = (*flags, "risk of bias was judged before these numbers came")
+    if study.get("design") == "crossover" and {f"{side}_total" for side in SIDES} <= set(body["values"]):
+        flags = (*flags, "crossover trial, analysed side against side: right for the first period only")
     return TrialRow(
         trial=trial,
         label=str(study.get("title") or trial),

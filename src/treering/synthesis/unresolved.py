@@ -19,6 +19,8 @@ from treering.synthesis.estimates import Estimated, estimate_trials
 from treering.synthesis.trials import TrialRow, arms_of, in_order, row_of
 from treering.terms import EntryKind, Verdict
 
+#: How the remark of a look begins at which no crossing was declared for this reason.
+WITHHELD = "Without the unresolved readings the verdict would be: "
 EFFICACY = frozenset({Verdict.BENEFIT_CROSSED, Verdict.HARM_CROSSED})
 
 
@@ -105,8 +107,8 @@ def withheld(look: Look, earlier: Sequence[Look], standing: Verdict | None, unde
     if all(other.verdict is look.verdict for other in under):
         return look
     why = (
-        f"Without the unresolved readings the verdict would be: {look.verdict}. It depends on them, so no "
-        "crossing is declared until a third person has settled them."
+        f"{WITHHELD}{look.verdict}. It depends on them, so no crossing is declared until a third person has "
+        "settled them."
     )
     return replace(
         look,
@@ -119,3 +121,15 @@ def withheld(look: Look, earlier: Sequence[Look], standing: Verdict | None, unde
         adjusted_high=None,
         remarks=(why, *(told for told in look.remarks if told.startswith("Amendment"))),
     )
+
+
+def before_withheld(ledger: Sequence[Look]) -> list[Look]:
+    """Return the ledger without the looks at its end at which a crossing was withheld.
+
+    They spent nothing and judged nothing: when the readings are settled without new numbers (the result turns
+    out not to be usable), the same evidence is looked at as if for the first time.
+    """
+    kept = list(ledger)
+    while kept and kept[-1].remarks and kept[-1].remarks[0].startswith(WITHHELD):
+        kept.pop()
+    return kept
