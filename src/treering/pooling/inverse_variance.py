@@ -17,6 +17,9 @@ from treering.pooling.checks import ArrayLike, check_effects, check_finite_resul
 from treering.pooling.kernel import Columns, Options, pool_batch
 from treering.pooling.result import FIELDS, FloatArray, PooledEffect
 
+WORTH_THREADS = 1_000_000
+"""Trials from which on two threads were seen to gain at all; with fewer they wait for the interpreter."""
+
 
 def pool(
     estimates: ArrayLike,
@@ -181,10 +184,10 @@ def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd
 def _pool_runs(
     y: FloatArray, v: FloatArray, counts: IntArray, options: Options, names: list[object]
 ) -> list[Columns]:
-    """Pool consecutive runs of trials, a cache-sized rectangle at a time, on all cores if there are several.
+    """Pool consecutive runs of trials, a cache-sized rectangle each, on all cores if there are very many.
 
-    NumPy lets go of the interpreter inside its loops, so threads help; parts come back in their order and no
-    sum runs over two of them, so the result does not depend on the number of cores.
+    Parts come back in their order and no sum runs over two of them, so the result does not depend on the
+    number of cores.
     """
     ends = np.concatenate([[0], np.cumsum(counts)])
 
@@ -196,7 +199,7 @@ def _pool_runs(
         return columns
 
     runs = list(chunks(counts))
-    workers_wanted = min(len(runs), cores())
+    workers_wanted = min(len(runs), cores()) if y.size >= WORTH_THREADS else 1
     if workers_wanted == 1:
         return [one(run) for run in runs]
     with ThreadPoolExecutor(workers_wanted) as workers:
