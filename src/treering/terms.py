@@ -218,7 +218,7 @@ class CoverageState(StrEnum):
 
 #: Stands beside every monitoring result (Cochrane expert panel 2018; Cochrane Handbook chapter 22).
 CAUTION = (
-    "A Cochrane expert panel (2018) and chapter 22 of the Cochrane Handbook advise against sequential methods "
-    "for main conclusions in most circumstances. A crossing is an alarm that asks the panel to meet; it is not "
-    "a conclusion."
+    "A Cochrane expert panel (2018) and chapter 22 of the Cochrane Handbook advise against sequential "
+    "methods for main conclusions in most circumstances. A crossing is an alarm that asks the panel to "
+    "meet; it is not a conclusion."
 )
