@@ -96,7 +96,7 @@ def test_h8_the_imputed_share_is_printed_with_the_result_without_it(
     share = after.failed["imputed"]
     assert (share["trials"], share["k"], share["share"]) == (["T4"], 4, 0.25)
     assert share["weight"] == pytest.approx(after.trial("T4")["weight"])
-    percent = f"1 of 4 trials, with {100 * share['weight']:.0f}% of the weight, rest on imputed numbers"
+    percent = f"imputed numbers: 1 of 4 trials, with {100 * share['weight']:.0f}% of the weight"
     assert percent in after.failed["warnings"]
     assert after.variant("without imputed numbers")["k"] == 3
 

@@ -70,7 +70,7 @@ def warnings(
     told = list(planned.remarks) if planned else ["no trial with a usable result"]
     if imputed["trials"]:
         count = f"{len(imputed['trials'])} of {imputed['k']} trials"
-        told.append(f"{count}, with {100 * imputed['weight']:.0f}% of the weight, rest on imputed numbers")
+        told.append(f"imputed numbers: {count}, with {100 * imputed['weight']:.0f}% of the weight")
     for row in estimated.rows:
         if row.status == COUNTED_TWICE:
             told.append(f"{row.label} is left out: {row.left_out}")
