@@ -131,3 +131,19 @@ def test_the_status_line_names_what_was_never_searched():
 def test_the_footer_defers_and_recommends_nothing():
     for words in ("informs a panel", "no treatment recommendation", "licensed clinicians", "statistician"):
         assert words in wording.FOOTER
+
+
+def test_the_page_says_that_nobody_is_counted_twice_or_who_could_not_be_held_against_it():
+    from treering.report.outcome import counted_once_words
+
+    arms = {
+        "checked": 1,
+        "passed": True,
+        "refused": [],
+        "not_checked": [{"trial": "B", "why": "not recorded"}],
+    }
+    words = counted_once_words({"arms": arms}, {"B": "Birch"})
+    assert words == (
+        "1 trial held against what the arms randomised: nobody is counted twice; not checked: Birch (not recorded)."
+    )
+    assert counted_once_words({}, {}) == ""

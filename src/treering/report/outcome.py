@@ -14,7 +14,7 @@ from treering.report.figures.forest import axis_note
 from treering.report.inputs import monitoring_inputs, rests_on_pairs
 from treering.report.labels import field_words, other_words, side_words, value_words
 from treering.report.marks import margin_marks
-from treering.report.numbers import effect, interval, number
+from treering.report.numbers import effect, interval, number, plural
 from treering.report.outlook import outlook_words
 from treering.report.view import ReportView
 
@@ -64,6 +64,7 @@ def outcome_context(view: ReportView, name: str, figures: Mapping[str, str]) -> 
         **_monitoring_words(view, outcome, body, before),
         "certainty": next((j for j in view.listed("certainty") if j["outcome"] == name), None),
         "outlook": outlook_words(body, names),
+        "counted_once": counted_once_words(body, names),
         "bayes": [(field_words(k), value_words(v)) for k, v in (body.get("bayes") or {}).items()],
     }
 
@@ -83,6 +84,19 @@ def _estimate_words(body: Body, view: ReportView, level: float) -> dict[str, Any
         "mid": wording.mid_words(body),
         "common_line": short_estimate(body, body.get("common")),
     }
+
+
+def counted_once_words(body: Body, names: Mapping[str, str]) -> str:
+    """Say what the check found that holds each arm against what was randomised; empty without one."""
+    arms = body.get("arms")
+    if not arms:
+        return ""
+    words = f"{plural(arms['checked'], 'trial')} held against what the arms randomised: "
+    words += "nobody is counted twice" if arms["passed"] else "some are left out for it"
+    refused = [f"{names.get(item['trial'], item['trial'])}: {item['why']}" for item in arms["refused"]]
+    unknown = [f"{names.get(item['trial'], item['trial'])} ({item['why']})" for item in arms["not_checked"]]
+    parts = [words, *refused, *([f"not checked: {', '.join(unknown)}"] if unknown else [])]
+    return "; ".join(parts) + "."
 
 
 def short_estimate(body: Body, pooled: Body | None) -> str:
