@@ -15,11 +15,17 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from hypothesis import settings
 from sqlalchemy import create_engine
 
 # One thread per process: the suite runs in several processes on two cores.
 for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
     os.environ.setdefault(name, "1")
+
+# A deadline measures the machine, not the code; a run that decides about landing repeats its examples.
+settings.register_profile("here", deadline=None)
+settings.register_profile("deciding", deadline=None, derandomize=True)
+settings.load_profile("deciding" if os.environ.get("CI") else "here")
 
 PLAN = """
 format = 1

@@ -14,7 +14,6 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from hypothesis import settings
 from sqlalchemy import create_engine
 
 from treering import store
@@ -24,10 +23,6 @@ from treering.store.models import KEY_PREFIXES, METADATA, TABLES
 from treering.store.projection import BODY_FIELDS
 from treering.store.schema import HEAD_REVISION
 from treering.terms import EntryKind
-
-# How long one example takes says more about the machine than about the code.
-settings.register_profile("unhurried", deadline=None)
-settings.load_profile("unhurried")
 
 REVIEW = "invented review"
 MOMENT = "2026-05-04T06:00:00Z"
