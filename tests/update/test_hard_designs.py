@@ -108,7 +108,7 @@ def test_h6_what_reached_the_store_otherwise_is_left_out_with_the_reason() -> No
 
 
 def test_h7_effective_numbers_are_analysed_and_raw_ones_printed(base: Any, week: Callable[..., Any]) -> None:
-    # JOB.md H7 (calculated there): 1200 people in clusters of 30 with ICC 0.02 count as 759
+    # closed form, 1200 / (1 + 29 * 0.02): 1200 people in clusters of 30 with ICC 0.02 count as 759
     raw = (180, 600, 210, 600)
     drop_counts(base, "Wards", raw, design="cluster", clusters=40, mean_cluster_size=30, icc=0.02)
     after = week(base, "2026-01-12")

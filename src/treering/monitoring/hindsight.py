@@ -1,7 +1,7 @@
 """The curve redrawn by publication date: what it would have looked like, had the team looked then.
 
 It is hindsight. It forgets when the team learned of each trial and what alpha was spent, and it never
-gives a verdict; it stands beside the ledger with its label (DESIGN decision 5).
+gives a verdict; it stands beside the ledger with its label.
 """
 
 from __future__ import annotations

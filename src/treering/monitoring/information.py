@@ -1,6 +1,6 @@
 """How much information a verdict needs, in statistical information, events and trials.
 
-Information is 1/variance of the common-effect estimate on the analysis scale (DESIGN decision 3).
+Information is 1/variance of the common-effect estimate on the analysis scale.
 Participants are a translation for readers and stand in `participants`.
 """
 

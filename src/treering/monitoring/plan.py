@@ -1,7 +1,7 @@
 """The monitoring plan of one outcome: what the protocol fixes before the first look.
 
 The plan holds plain fields only, so that its digest can be stored beside every look: a ledger belongs to
-one plan, and a plan that changed opens a new ledger (JOB.md H14).
+one plan, and a plan that changed opens a new ledger.
 """
 
 from __future__ import annotations

@@ -1,6 +1,6 @@
 """The planned test of one look: pooled estimate, its Z, its information.
 
-The monitored Z is the signed normal quantile of the planned test's two-sided P value (DESIGN decision 4):
+The monitored Z is the signed normal quantile of the planned test's two-sided P value:
 one scale for Wald and Knapp-Hartung tests, on which the boundaries are drawn.
 """
 

@@ -1,7 +1,6 @@
 """Critical values of one ledger: of a look that spends, and redrawn for one that cannot.
 
-Bounds of earlier looks enter as they were used, with the ratios of information as they are (DESIGN
-decision 5).
+Bounds of earlier looks enter as they were used, with the ratios of information as they are.
 """
 
 from __future__ import annotations
@@ -85,7 +84,7 @@ def redrawn_value(
 
     The looks that spent with less information than now and before the required one stay as they were;
     the present look is put after them as if no later one had been made. This is what a crossing is
-    compared with when no new alpha is available (JOB.md H17).
+    compared with when no new alpha is available.
 
     Parameters
     ----------

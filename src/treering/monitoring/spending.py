@@ -1,7 +1,7 @@
 """How much of alpha (or beta) may be used up by a given fraction of the required information.
 
 The convention for two-sided plans is fixed and printed: the function is applied to alpha/2 in each
-tail (DESIGN decision 2). For the O'Brien-Fleming-type function this matters: at five equal looks the
+tail. For the O'Brien-Fleming-type function this matters: at five equal looks the
 first bound is 4.877; applied once to the whole alpha it would be 4.383.
 """
 

@@ -1,6 +1,6 @@
 """Which verdict a look gets, from what stood before and what it found.
 
-The rules (DESIGN decisions 5 to 8 and 12; JOB.md H13 to H17):
+The rules:
 
 * A look that spends is judged against its boundary. Beyond it: crossed. Not beyond it: a crossing that
   stood is no longer supported; otherwise the evidence goes on accruing, or has reached the required
