@@ -267,7 +267,7 @@ def test_repeated_ordinary_tests_have_the_published_error(looks, published):
 
 @pytest.mark.slow
 def test_false_alarm_table_of_the_design():
-    # An earlier simulation of our own, made when the test was chosen: 20 looks, trials of mixed size, share of
+    # An earlier simulation of our own, when the test was chosen: 20 looks, trials of mixed size, share of
     # reviews with a false alarm at tau2 0 and 0.1: ordinary 5% tests 18% and 36%, spending with Wald 3.9%
     # and 11.1%, spending with modified Knapp-Hartung 2.1% and 5.6%. Its sizes, first look and effect to
     # detect were not recorded. Here: looks after 2 to 21 trials, sizes in the ratio 60:200:100:400 in turn,
