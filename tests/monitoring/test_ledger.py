@@ -233,9 +233,9 @@ def test_h17_information_that_grows_but_not_above_the_highest_fraction_spends_no
 
 
 def test_h17_redrawn_boundary_of_the_worked_example():
-    # Worked by hand from the formulas: 3877 people required; at 1000, 2000 and 3000 the last boundary is
-    # 2.32; at 3300 with D2 0.5 the redrawn boundary of a curve with the same four looks is 3.29 (calculated there, per-tail
-    # convention). People stand for information.
+    # Computed apart from this code when the project was planned: 3877 people required; at 1000, 2000 and
+    # 3000 the last boundary is 2.32; at 3300 with D2 0.5 the redrawn boundary of a curve with the same four
+    # looks is 3.29 (per-tail convention). People stand for information.
     from treering.monitoring.redrawn import fresh_values
 
     plan = MonitoringPlan(effect=0.3)
