@@ -150,7 +150,7 @@ def effect_sizes(
     values = _read(table, routes, labels)
     effects, taken = _by_route(values, labels, routes, rule, size)
     _finite(effects, labels)
-    return _frame(table.index, labels, effects, taken, routes, known, rule)
+    return _frame(table.index, labels, effects, taken, known, rule)
 
 
 def usable(
@@ -281,7 +281,6 @@ def _frame(
     labels: TextArray,
     effects: Effects,
     taken: TextArray,
-    routes: tuple[Route, ...],
     measure: Measure,
     rule: Correction,
 ) -> pd.DataFrame:

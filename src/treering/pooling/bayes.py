@@ -90,33 +90,6 @@ class BayesianEffect:
     points: int
 
 
-def posterior_mixtures(
-    estimates: ArrayLike,
-    variances: ArrayLike,
-    prior: TauPrior,
-    *,
-    effect_prior: tuple[float, float] | None = None,
-) -> tuple[Mixture, Mixture]:
-    """Posterior of the mean effect and of the next trial's effect, as mixtures of normals.
-
-    Parameters
-    ----------
-    estimates, variances : array-like, shape (k,)
-        Trial effects on the analysis scale and their variances.
-    prior : TauPrior
-        Prior of tau.
-    effect_prior : tuple of float, optional
-        Mean and standard deviation of a normal prior of the effect; flat when left out.
-
-    Returns
-    -------
-    tuple of Mixture
-        Mean effect; effect in the next trial.
-    """
-    y, v = check_effects(estimates, variances)
-    return mixtures(integrate_tau(y, v, prior, effect_prior))
-
-
 def _beyond(mixture: Mixture, limit: float, better: Better) -> float:
     """Probability of a value beyond ``limit`` (a signed distance towards the good side)."""
     return mixture.below(-limit) if better is Better.LOWER else 1 - mixture.below(limit)

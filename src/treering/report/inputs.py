@@ -38,7 +38,7 @@ def monitoring_inputs(view: ReportView, outcome: Outcome | None, body: Body) -> 
         *_information(outcome, plan, look, (block.get("inputs") or {}).get("information_per_participant")),
         ("Spending function", spending_words(plan)),
         ("Futility", "non-binding bound by beta spending" if plan.get("futility") else "no futility bound"),
-        ("Monitored Z", _test_words(plan, body)),
+        ("Monitored Z", _test_words(body)),
         *_heterogeneity(block),
         ("Amendments", value_words((block.get("inputs") or {}).get("amendments") or "none")),
         ("Data", "looks.csv and trials.csv beside this page"),
@@ -159,6 +159,6 @@ def _information(
     return pairs
 
 
-def _test_words(plan: Body, body: Body) -> str:
+def _test_words(body: Body) -> str:
     method = (body.get("pooled") or {}).get("method") or "not estimable"
     return f"signed normal quantile of the P value of the planned test ({method})"

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any
@@ -60,11 +60,8 @@ class Summary:
 @contextmanager
 def evidence(context: RunContext) -> Iterator[EvidenceStore]:
     """Open the review's evidence store for one step, making it on the first run."""
-    store = open_evidence(context.review, make=True)
-    try:
+    with open_evidence(context.review, make=True) as store:
         yield store
-    finally:
-        store.close()
 
 
 @contextmanager
@@ -160,7 +157,7 @@ def step_close(context: RunContext, taken: TakenIn, failures: tuple[str, ...]) -
     same words as one that was never disturbed.
     """
     with evidence(context) as store:
-        done = run_record(context, store.state(), store.versions())
+        done = run_record(context, store.state())
         run = NewEntry(EntryKind.RUN, f"run/{context.known_at}", done, true_at=context.day)
         store.append([run], known_at=context.known_at)
         state = store.state()
@@ -192,7 +189,7 @@ def _told(context: RunContext, state: State) -> Iterator[dict[str, Any]]:
             yield {name: notice.body[name] for name in ("person", "event", "synthesis", "version")}
 
 
-def run_record(context: RunContext, state: State, versions: Sequence[dict[str, Any]]) -> dict[str, Any]:
+def run_record(context: RunContext, state: State) -> dict[str, Any]:
     """Return what the run at `context.known_at` did, as the store knows it."""
     mine = [entry for entry in state.everything() if entry.known_at == context.known_at]
     version = next((e.body["version"] for e in mine if e.kind is EntryKind.VERSION), None)
