@@ -79,16 +79,20 @@ def weekly_update(folder: str, day: str, as_of: datetime | None = None) -> Summa
     """
     moment = as_of or datetime.now(UTC)
     context = RunContext(read_review(Path(folder)), moment, __version__)
-    with steps.one_writer(context):
+    with steps.one_writer(context) as still_held:
         taken = verify(context, read_intake(context))
+        still_held()
         basis = append(context, taken)
         analyses: Analyses = {}
         changes: dict[str, dict[str, Any]] = {}
         if basis is not None:
             analyses = {outcome.id: analyse(basis, outcome.id) for outcome in basis.protocol.outcomes}
             changes = compare(basis, analyses)
+        still_held()
         publish(context, basis, analyses, changes)
-        summary = steps.step_close(context, taken, notify(context))
+        failures = notify(context)
+        still_held()
+        summary = steps.step_close(context, taken, failures)
     _show(context, summary)
     return summary
 

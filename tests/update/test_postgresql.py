@@ -6,6 +6,10 @@ import hashlib
 from collections.abc import Callable
 from typing import Any
 
+import pytest
+
+from treering.errors import StoreError
+from treering.update import weekly
 from treering.update.auditing import audit_review
 
 
@@ -63,3 +67,32 @@ def test_the_whole_audit_of_a_review_on_a_server_holds(
     checks = audit_review(review.folder)
     assert [(check.number, check.faults) for check in checks if not check.holds] == []
     assert [check.number for check in checks] == list(range(1, 12))
+
+
+def test_a_server_restarted_in_an_update_stops_it_and_the_next_run_completes_it(
+    make_review: Callable[..., Any], cluster: Any, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def on_server(name: str) -> Any:
+        review = make_review(name=name)
+        plan = (review.folder / "config" / "review.toml").read_text()
+        review.write_plan(plan + f'\n[store]\nurl = "{cluster.fresh()}"\n')
+        review.drop_pair("T1", (24, 110, 33, 108))
+        review.drop_pair("T2", (30, 140, 41, 138))
+        return review
+
+    undisturbed, restarted = on_server("undisturbed"), on_server("restarted")
+    undisturbed.update("2026-01-05")
+    inner = weekly.step_basis
+
+    def restart(context: Any) -> Any:
+        cluster.stop()
+        cluster.start()
+        return inner(context)
+
+    with monkeypatch.context() as patch:
+        patch.setattr(weekly, "step_basis", restart)
+        with pytest.raises(StoreError, match="lock of this update was lost"):
+            restarted.update("2026-01-05")
+    assert restarted.update("2026-01-05").version == 1
+    with undisturbed.store() as one, restarted.store() as other:
+        assert one.head() == other.head()

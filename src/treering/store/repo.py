@@ -66,6 +66,17 @@ class EvidenceStore(StoreReader):
             self._lock = None
             lock.release()
 
+    def check_exclusive(self) -> None:
+        """Check that the lock taken by :meth:`exclusive` is still held.
+
+        Raises
+        ------
+        StoreError
+            When it was lost (the server was restarted, the lock file removed): another update may have begun.
+        """
+        if self._lock is not None:
+            self._lock.check()
+
     def append(
         self,
         entries: Iterable[NewEntry],
@@ -101,8 +112,7 @@ class EvidenceStore(StoreReader):
         """
         given, moment = list(entries), known_time(known_at)
         with self._mutex:
-            if self._lock is not None:
-                self._lock.check()
+            self.check_exclusive()
             with writing(self._engine, lock="entry") as connection:
                 tail = reader.read_tail(connection, self._tail)
                 tips = reader.tips_of(connection, [entry.key for entry in given])

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any
@@ -65,8 +65,11 @@ def evidence(context: RunContext) -> Iterator[EvidenceStore]:
 
 
 @contextmanager
-def one_writer(context: RunContext) -> Iterator[None]:
+def one_writer(context: RunContext) -> Iterator[Callable[[], None]]:
     """Hold the store's writer lock for a whole update.
+
+    Each step opens the store for itself, so the steps cannot see the lock: call what this yields before a
+    step that writes, and it raises a StoreError when the lock was lost meanwhile.
 
     Raises
     ------
@@ -74,7 +77,7 @@ def one_writer(context: RunContext) -> Iterator[None]:
         When another update holds it.
     """
     with evidence(context) as store, store.exclusive():
-        yield
+        yield store.check_exclusive
 
 
 def step_read(context: RunContext) -> TakenIn:
@@ -223,13 +226,18 @@ def run_update(context: RunContext) -> Summary:
     TreeringError
         Of the kind that says what stopped the update; what was committed before stays.
     """
-    with one_writer(context):
+    with one_writer(context) as still_held:
         taken = step_verify(context, step_read(context))
+        still_held()
         step_append(context, taken)
         basis = step_basis(context)
         if basis is not None:
             analyses = {o.id: analyse_synthesis(basis, o.id) for o in basis.protocol.outcomes}
-            step_lay_down(context, basis, analyses, changes_of(basis, analyses))
+            changes = changes_of(basis, analyses)
+            still_held()
+            step_lay_down(context, basis, analyses, changes)
+        still_held()
         step_publish(context)
         failures = step_notify(context)
+        still_held()
         return step_close(context, taken, failures)
