@@ -12,6 +12,7 @@ import numpy as np
 from scipy import special
 
 from treering.pooling.result import FloatArray
+from treering.pooling.tails import chi2_tail, t_tail
 
 
 class Inference(NamedTuple):
@@ -37,7 +38,7 @@ def t_test(estimate: FloatArray, error: FloatArray, df: FloatArray, level: float
     """
     half = t_quantile(df, 0.5 + level / 2.0) * error
     t = np.divide(estimate, error, out=np.full_like(estimate, np.nan), where=error > 0.0)
-    tail = special.stdtr(df, -np.abs(t))
+    tail = t_tail(df, t)
     z = np.copysign(-special.ndtri(tail), t)
     far = tail < 1e-300
     if far.any():
@@ -92,10 +93,9 @@ def heterogeneity_p(q: float | FloatArray, df: float | FloatArray) -> FloatArray
     ndarray
         Upper tail of chi-square.
     """
-    freedom = np.asarray(df, dtype=np.float64)
-    tail = special.chdtrc(np.maximum(freedom, 1.0), np.asarray(q, dtype=np.float64))
-    out: FloatArray = np.where(freedom > 0.0, tail, np.nan)
-    return out
+    freedom, spread = (np.atleast_1d(np.asarray(number, dtype=np.float64)) for number in (df, q))
+    tail = np.where(freedom > 0.0, chi2_tail(np.maximum(freedom, 1.0), spread), np.nan)
+    return tail.reshape(np.shape(q))
 
 
 def i2_interval(q: FloatArray, df: FloatArray, level: float) -> tuple[FloatArray, FloatArray]:
