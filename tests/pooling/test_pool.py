@@ -203,7 +203,8 @@ def test_no_grid_point_is_higher_than_the_likelihood_at_the_estimate(random_synt
             centred = single(y[row] - y[row].mean(), v[row])
             height = log_likelihood(centred, found["tau2"].to_numpy()[[row]], restricted=restricted)
             grid = np.concatenate([[0.0], np.geomspace(1e-6, 20.0, 400)])
-            heights = log_likelihood(centred.repeated(grid.size), grid, restricted=restricted)
+            everywhere = centred.columns(np.zeros(grid.size, dtype=int))
+            heights = log_likelihood(everywhere, grid, restricted=restricted)
             assert height >= heights.max() - 1e-9
 
 
@@ -352,7 +353,7 @@ def test_without_between_trial_variance_random_equals_common(data, method):
         assert (random.estimate, random.standard_error) == pytest.approx(
             (common.estimate, common.standard_error)
         )
-    else:
+    elif random.tau2 > 1e-12 * v.max():  # below that v + tau2 is v in double precision
         assert random.standard_error > common.standard_error
 
 
@@ -438,3 +439,15 @@ def test_an_unknown_option_is_refused_by_name(option):
 def test_a_trial_without_a_group_is_refused():
     with pytest.raises(AnalysisError, match="group"):
         pool_many([0.1, 0.2], [1, 1], ["a", None])
+
+
+def test_a_lone_trial_among_many_syntheses_says_that_its_interval_is_the_ordinary_one():
+    counts = np.tile([3, 1, 2], 30_000)  # more than one rectangle of numbers; the first has lone trials too
+    v = np.full(counts.sum(), 0.04)
+    y = np.tile([0.1, 0.3, 0.2, 0.5, 0.0, 0.4], 30_000)
+    many = pool_many(y, v, np.repeat(np.arange(counts.size), counts))
+    assert list(many["interval"][:3]) == ["modified-knapp-hartung", "wald", "modified-knapp-hartung"]
+    assert many["interval"].value_counts().to_dict() == {"modified-knapp-hartung": 60_000, "wald": 30_000}
+    together = pool_many(y[:3], v[:3], [0, 0, 0])
+    assert together["interval"].item() == pool(y[:3], v[:3]).interval == "modified-knapp-hartung"
+    assert pool([0.5], [0.04]).interval == "wald"

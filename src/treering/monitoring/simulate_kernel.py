@@ -16,8 +16,8 @@ from treering.monitoring.checks import FloatArray
 from treering.monitoring.design import BinaryTrials, SimulationDesign
 from treering.monitoring.plan import MonitoringPlan
 from treering.pooling.batch import Batch
-from treering.pooling.moments import fit
-from treering.pooling.tau2 import estimate_tau2
+from treering.pooling.moments import sums
+from treering.pooling.tau2 import estimate_tau2, read_at_zero
 from treering.terms import IntervalMethod, Measure, Tau2
 
 
@@ -148,8 +148,8 @@ def _pool_look(plan: MonitoringPlan, y: FloatArray, v: FloatArray) -> tuple[Floa
 
 def _pool_random(plan: MonitoringPlan, batch: Batch) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Return random-effects mean with its Wald and Knapp-Hartung standard errors."""
-    common = fit(batch, np.zeros(batch.k.size))
-    chosen = fit(batch, estimate_tau2(batch, common, Tau2(plan.tau2)))
+    method = Tau2(plan.tau2)
+    chosen = sums(batch, estimate_tau2(batch, read_at_zero(batch, method), method))
     error = 1.0 / np.sqrt(chosen.total)
     factor = chosen.q / (batch.k - 1.0)
     if plan.interval != IntervalMethod.KNAPP_HARTUNG:

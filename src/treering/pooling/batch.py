@@ -17,8 +17,8 @@ from treering.pooling.result import FloatArray
 
 IntArray = npt.NDArray[np.intp]
 
-CHUNK_NUMBERS = 32_768
-"""Numbers in one rectangle: small enough to stay in a core's second-level cache, which bounds memory too."""
+CHUNK_NUMBERS = 131_072
+"""Numbers in one rectangle, which bounds memory; sums over it are made in smaller blocks."""
 
 
 @dataclass(frozen=True)
@@ -41,10 +41,6 @@ class Batch:
         """Take the syntheses at these positions."""
         # Plain indexing would give arrays laid out the other way round, on which every sum is slow.
         return Batch(self.y.take(which, axis=1), self.v.take(which, axis=1), self.k[which])
-
-    def repeated(self, times: int) -> Batch:
-        """Lay the whole batch side by side several times."""
-        return Batch(np.tile(self.y, times), np.tile(self.v, times), np.tile(self.k, times))
 
 
 def single(y: FloatArray, v: FloatArray) -> Batch:
@@ -87,8 +83,12 @@ def chunks(counts: IntArray) -> Iterator[slice]:
     slice
         Consecutive syntheses; at least one, however long it is.
     """
-    pieces = -(-int(counts.sum()) // CHUNK_NUMBERS)
-    fill = max(int(counts.max()), -(-int(counts.sum()) // pieces))  # pieces of like size share the cores well
+    total, tallest = int(counts.sum()), int(counts.max())
+    pieces = -(-total // CHUNK_NUMBERS)
+    fill = max(tallest, -(-total // pieces))  # pieces of like size share the cores well
+    if total == tallest * counts.size:
+        yield from even(counts.size, max(1, fill // tallest))
+        return
     start = 0
     while start < counts.size:
         # The rectangle is as tall as its longest synthesis, so the running maximum decides the width.
@@ -140,11 +140,14 @@ def spans(count: int, tall: int) -> Iterator[slice]:
     tall : int
         Trials in each.
 
-    Yields
-    ------
-    slice
+    Returns
+    -------
+    iterator of slice
         Consecutive syntheses.
     """
-    wide = max(1, CHUNK_NUMBERS // tall)
-    for start in range(0, count, wide):
-        yield slice(start, min(start + wide, count))
+    return even(count, max(1, CHUNK_NUMBERS // tall))
+
+
+def even(count: int, wide: int) -> Iterator[slice]:
+    """Cut `count` places into slices of `wide` places; the last one may be narrower."""
+    return (slice(start, min(start + wide, count)) for start in range(0, count, wide))

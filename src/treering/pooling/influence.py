@@ -14,8 +14,9 @@ import pandas as pd
 from treering.errors import AnalysisError
 from treering.pooling.batch import from_mask, single, spans
 from treering.pooling.checks import ArrayLike, check_effects, numbers, trial_labels
+from treering.pooling.columns import Columns, join
 from treering.pooling.inverse_variance import pool_checked
-from treering.pooling.kernel import Columns, Options
+from treering.pooling.kernel import Options
 from treering.pooling.result import FIELDS, FloatArray
 
 SELECTION_FIELDS = tuple(name for name in FIELDS if name != "weights")
@@ -126,13 +127,8 @@ def _pool_selections(
         columns = np.arange(span.start, span.stop)
         batch = from_mask(y, v, present(columns))
         parts.append(pool_checked(batch, options, labels[span.start : span.stop]))
-    joined = {
-        name: np.concatenate([part[name] for part in parts])
-        if isinstance(parts[0][name], np.ndarray)
-        else parts[0][name]
-        for name in SELECTION_FIELDS
-    }
-    return pd.DataFrame(joined, index=pd.Index(np.array(labels, dtype=object), name="trial"))
+    index = pd.Index(np.array(labels, dtype=object), name="trial")
+    return pd.DataFrame(join(parts, SELECTION_FIELDS), index=index)
 
 
 def influence(

@@ -14,7 +14,8 @@ import pandas as pd
 from treering.errors import AnalysisError
 from treering.pooling.batch import Batch, IntArray, chunks, pack, single
 from treering.pooling.checks import ArrayLike, check_effects, check_finite_result
-from treering.pooling.kernel import Columns, Options, pool_batch
+from treering.pooling.columns import Columns, join, split_weights
+from treering.pooling.kernel import Options, pool_batch
 from treering.pooling.result import FIELDS, FloatArray, PooledEffect
 
 WORTH_THREADS = 1_000_000
@@ -158,7 +159,7 @@ def pool_many(
     counts, names, order = _groups(groups, y.size)
     if order is not None:
         y, v = y[order], v[order]
-    return _frame(_pool_runs(y, v, counts, options, list(names)), names)
+    return _frame(_pool_runs(y, v, counts, options, names.tolist()), names)
 
 
 def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd.Index, IntArray | None]:
@@ -170,10 +171,12 @@ def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd
             found=f"{len(values)} groups and {count} estimates",
             expected="one group for each estimate",
         )
-    if isinstance(values, np.ndarray) and values.dtype.kind in "iu" and (values[1:] >= values[:-1]).all():
-        # Sorted whole numbers, the usual case in bulk, need no hashing.
-        starts = np.concatenate([[0], np.flatnonzero(values[1:] != values[:-1]) + 1])
-        return np.diff(starts, append=count), pd.Index(values[starts], name="group"), None
+    if isinstance(values, np.ndarray) and values.dtype.kind in "iu":
+        ends = np.concatenate([[0], np.flatnonzero(values[1:] != values[:-1]) + 1, [count]])
+        heads = values[ends[:-1]]
+        if (heads[1:] > heads[:-1]).all():
+            # Sorted whole numbers, the usual case in bulk, need no hashing.
+            return ends[1:] - ends[:-1], pd.Index(heads, name="group"), None
     codes, names = pd.factorize(values, sort=True)
     if (codes < 0).any():
         raise AnalysisError("group is missing.", trial=str(int(np.argmax(codes < 0)) + 1))
@@ -211,20 +214,5 @@ def cores() -> int:
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
-def split_weights(weights: FloatArray, counts: IntArray) -> npt.NDArray[np.object_]:
-    """One array of weights for each synthesis, without the padding."""
-    rows = np.ascontiguousarray(weights.T)
-    if (counts == rows.shape[1]).all():
-        return np.fromiter(rows, dtype=object, count=counts.size)
-    cut = (row[:count] for row, count in zip(rows, counts.tolist(), strict=True))
-    return np.fromiter(cut, dtype=object, count=counts.size)
-
-
 def _frame(parts: list[Columns], names: pd.Index) -> pd.DataFrame:
-    joined = {
-        name: np.concatenate([part[name] for part in parts])
-        if len(parts) > 1 and isinstance(parts[0][name], np.ndarray)
-        else parts[0][name]
-        for name in FIELDS
-    }
-    return pd.DataFrame(joined, index=names, copy=False)
+    return pd.DataFrame(join(parts, FIELDS), index=names, copy=False)

@@ -9,13 +9,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from treering.pooling.batch import Batch
 from treering.pooling.checks import check_finite_result, check_level, choose
+from treering.pooling.columns import Columns
 from treering.pooling.inference import (
     Inference,
     chi2_quantile,
@@ -25,7 +25,7 @@ from treering.pooling.inference import (
     prediction,
     t_test,
 )
-from treering.pooling.moments import Fit, dot, fit
+from treering.pooling.moments import centre, sums, weigh
 from treering.pooling.qroot import solve_q
 from treering.pooling.result import (
     COMMON_EFFECT,
@@ -35,10 +35,9 @@ from treering.pooling.result import (
     ONE_TRIAL,
     FloatArray,
 )
-from treering.pooling.tau2 import estimate_tau2
+from treering.pooling.tau2 import AtZero, estimate_tau2, read_at_zero
 from treering.terms import IntervalMethod, PoolingModel, PredictionDf, Tau2
 
-Columns = dict[str, Any]
 BoolArray = npt.NDArray[np.bool_]
 
 
@@ -97,39 +96,31 @@ def pool_batch(batch: Batch, options: Options, labels: Sequence[object]) -> Colu
     AnalysisError
         Numbers too large or too small for double precision.
     """
-    centred, centre = _centre(batch)
-    common = fit(centred, np.zeros(batch.k.size))
-    check_finite_result((common.mean, common.q, dot(common.pull, common.pull)), labels)
+    centred, origin = centre(batch)
+    common = _read_at_zero(centred, options)
+    check_finite_result((common.mean, common.q, common.a), labels)
     lone = batch.k < 2.0
     tau2 = _between_trials(centred, common, lone, options)
-    chosen = fit(centred, tau2) if tau2.any() else common
+    chosen = sums(centred, tau2) if tau2.any() else common
     tau2_low, tau2_high = _q_profile(centred, common, tau2, chosen, options.level)
-    estimate = centre + chosen.mean
+    estimate = origin + chosen.mean
     error, test = _test(estimate, chosen, batch.k, options)
     columns: Columns = {"estimate": estimate, "standard_error": error}
     columns |= {"ci_low": test.low, "ci_high": test.high, "z": test.z, "p": test.p}
     columns |= {"tau2": np.where(lone, np.nan, tau2), "tau2_low": tau2_low, "tau2_high": tau2_high}
     columns |= _heterogeneity(common, chosen, batch.k, options.level)
     columns |= _prediction(estimate, chosen, tau2, batch.k, options)
-    columns |= {"weights": chosen.w / chosen.total, "k": batch.k.astype(np.intp)}
+    columns |= {"weights": weigh(batch.v, tau2) / chosen.total, "k": batch.k.astype(np.intp)}
     return columns | _words(columns, lone, options)
 
 
-def _centre(batch: Batch) -> tuple[Batch, FloatArray]:
-    """Measure each synthesis from its first trial.
-
-    Squares then keep their digits whatever the level of the estimates, and estimates that are all the same
-    become exact zeros.
-    """
-    centre, present = batch.y[0], np.isfinite(batch.v)
-    if present.all():
-        return Batch(batch.y - centre, batch.v, batch.k), centre
-    first = np.argmax(present, axis=0)
-    centre = batch.y[first, np.arange(first.size)]
-    return Batch(np.where(present, batch.y - centre, 0.0), batch.v, batch.k), centre
+def _read_at_zero(batch: Batch, options: Options) -> AtZero:
+    if options.model is PoolingModel.COMMON:
+        return sums(batch, np.zeros(batch.k.size))
+    return read_at_zero(batch, options.tau2)
 
 
-def _between_trials(batch: Batch, common: Fit, lone: BoolArray, options: Options) -> FloatArray:
+def _between_trials(batch: Batch, common: AtZero, lone: BoolArray, options: Options) -> FloatArray:
     """Tau2; zero where it has no meaning."""
     tau2 = np.zeros(lone.size)
     if options.model is PoolingModel.COMMON or lone.all():
@@ -142,7 +133,7 @@ def _between_trials(batch: Batch, common: Fit, lone: BoolArray, options: Options
 
 
 def _q_profile(
-    batch: Batch, common: Fit, tau2: FloatArray, chosen: Fit, level: float
+    batch: Batch, common: AtZero, tau2: FloatArray, chosen: AtZero, level: float
 ) -> tuple[FloatArray, FloatArray]:
     """Interval of tau2 by Q-profile (Viechtbauer 2007, from memory); NaN for one trial."""
     outside, df = (1.0 - level) / 2.0, np.maximum(batch.k - 1.0, 1.0)
@@ -153,7 +144,9 @@ def _q_profile(
     return low, high
 
 
-def _test(estimate: FloatArray, chosen: Fit, k: FloatArray, options: Options) -> tuple[FloatArray, Inference]:
+def _test(
+    estimate: FloatArray, chosen: AtZero, k: FloatArray, options: Options
+) -> tuple[FloatArray, Inference]:
     """Return standard error and test (Knapp and Hartung 2003; modified: Roever 2015; both from memory)."""
     ordinary = 1.0 / np.sqrt(chosen.total)
     if options.interval_used is IntervalMethod.WALD:
@@ -171,7 +164,7 @@ def _test(estimate: FloatArray, chosen: Fit, k: FloatArray, options: Options) ->
     return error, test
 
 
-def _heterogeneity(common: Fit, chosen: Fit, k: FloatArray, level: float) -> Columns:
+def _heterogeneity(common: AtZero, chosen: AtZero, k: FloatArray, level: float) -> Columns:
     df, q = k - 1.0, np.where(k > 1.0, common.q, 0.0)
     estimable = df > 0.0
     low, high = i2_interval(q, df, level)
@@ -190,7 +183,7 @@ def _heterogeneity(common: Fit, chosen: Fit, k: FloatArray, level: float) -> Col
 
 
 def _prediction(
-    estimate: FloatArray, chosen: Fit, tau2: FloatArray, k: FloatArray, options: Options
+    estimate: FloatArray, chosen: AtZero, tau2: FloatArray, k: FloatArray, options: Options
 ) -> Columns:
     lost = 2.0 if options.prediction_df is PredictionDf.K_MINUS_2 else 1.0
     df = k - lost if options.model is PoolingModel.RANDOM else np.zeros_like(k)
@@ -211,14 +204,21 @@ def _words(columns: Columns, lone: BoolArray, options: Options) -> Columns:
         (np.isnan(columns["i2_high"]) & ~lone, NO_I2_INTERVAL),
         (np.isnan(columns["p"]), NO_SPREAD),
     ):
-        for at in np.flatnonzero(flagged):
-            remarks[at] += (remark,)
-    interval = np.full(count, str(options.interval_used), dtype=object)
-    interval[lone] = str(IntervalMethod.WALD)
+        if flagged.any():
+            for at in np.flatnonzero(flagged):
+                remarks[at] += (remark,)
     return {
         "model": str(options.model),
-        "interval": interval,
+        "interval": _interval_words(lone, options),
         "tau2_method": str(options.tau2),
         "level": options.level,
         "remarks": remarks,
     }
+
+
+def _interval_words(lone: BoolArray, options: Options) -> str | npt.NDArray[np.object_]:
+    """One word if it holds for every synthesis, otherwise a word for each."""
+    word, plain = str(options.interval_used), str(IntervalMethod.WALD)
+    if not lone.any() or word == plain:
+        return word
+    return np.where(lone, plain, word).astype(object)

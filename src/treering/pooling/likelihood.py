@@ -3,6 +3,8 @@
 Full (ML; Hardy and Thompson 1996, Stat Med 15:619) and restricted (REML; Harville 1977, J Am Stat Assoc
 72:320) likelihood, cited from memory. Twice the slope is A - B with A = sum w^2 (y - mu)^2 and B = trace P:
 sum w (ML) or sum w - sum w^2 / sum w (REML).
+
+Syntheses come in as `moments.centre` leaves them: digits are lost where the mean is far from zero.
 """
 
 from __future__ import annotations
@@ -12,32 +14,26 @@ from typing import NamedTuple
 import numpy as np
 
 from treering.pooling.batch import Batch, IntArray
-from treering.pooling.moments import Fit, dot, fit
+from treering.pooling.moments import Terms, dot, read, weigh
 from treering.pooling.result import FloatArray
 
 
-def slope_terms(now: Fit, *, restricted: bool) -> tuple[FloatArray, FloatArray]:
-    """Return the terms A and B of the slope; the likelihood rises where A > B.
-
-    Parameters
-    ----------
-    now : Fit
-        Sums at some tau2.
-    restricted : bool
-        True for REML, False for ML.
-
-    Returns
-    -------
-    tuple of ndarray, shape (g,)
-        A and B, both above zero unless all estimates are the same.
-    """
-    expected = now.total - dot(now.w, now.w) / now.total if restricted else now.total
-    return dot(now.pull, now.pull), expected
-
-
 class Slope(NamedTuple):
-    """Twice the slope of the likelihood is a - b; fall_a = -a' and fall_b = -b' in tau2, shape (g,) each."""
+    """Twice the slope of a likelihood is a - b, at one tau2; shape (g,) each.
 
+    Attributes
+    ----------
+    total, mean, q, a : ndarray
+        As in `Sums`; a is the first term of the slope.
+    b : ndarray
+        The second term.
+    fall_a, fall_b : ndarray
+        -da/dt and -db/dt.
+    """
+
+    total: FloatArray
+    mean: FloatArray
+    q: FloatArray
     a: FloatArray
     b: FloatArray
     fall_a: FloatArray
@@ -45,32 +41,99 @@ class Slope(NamedTuple):
 
     def columns(self, which: IntArray) -> Slope:
         """Take the syntheses at these positions."""
-        return Slope(*(field[which] for field in self))
+        return Slope(*(term[which] for term in self))
 
 
-def slope(now: Fit, *, restricted: bool) -> Slope:
+def slope(batch: Batch, tau2: FloatArray, *, restricted: bool, owner: IntArray | None = None) -> Slope:
     """Return the terms of the slope and how fast they fall; from dP/dt = -PP for the projection P.
 
     Parameters
     ----------
-    now : Fit
-        Sums at some tau2.
+    batch : Batch
+        Syntheses.
+    tau2 : ndarray, shape (g,)
+        Between-trial variances.
     restricted : bool
         True for REML, False for ML.
+    owner : ndarray of int, shape (g,), optional
+        As in `moments.read`.
 
     Returns
     -------
     Slope
         A = y'PPy, B (see the module's text), -A' = 2 y'PPPy, and -B' = trace PP, or sum w^2 for ML.
     """
-    a, square = dot(now.pull, now.pull), dot(now.w, now.w)
-    inner = now.w * now.pull
-    shift = inner.sum(axis=0)
-    fall_a = 2.0 * (dot(inner, now.pull) - shift * shift / now.total)
-    if not restricted:
-        return Slope(a, now.total, fall_a, square)
-    cube, ratio = dot(np.multiply(now.w, now.w, out=inner), now.w), square / now.total
-    return Slope(a, now.total - ratio, fall_a, square - 2.0 * cube / now.total + ratio * ratio)
+    return Slope(*read(_restricted_slope if restricted else _full_slope, batch, tau2, owner))
+
+
+def _full_slope(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    total, mean, q, a, fall_a, square, _ = _moments(y, v, tau2)
+    return total, mean, q, a, total, fall_a, square
+
+
+def _restricted_slope(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    total, mean, q, a, fall_a, square, cube = _moments(y, v, tau2)
+    ratio = square / total
+    return total, mean, q, a, total - ratio, fall_a, square - 2.0 * cube / total + ratio * ratio
+
+
+def _moments(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    """Total, mean, Q, A, -A', sum w^2 and sum w^3, from sums of w^i y^j."""
+    w = weigh(v, tau2)
+    wy, ww = w * y, w * w
+    total, pull, square = w.sum(axis=0), wy.sum(axis=0), ww.sum(axis=0)
+    cube, wwy, wwwy = dot(ww, w), dot(w, wy), dot(ww, wy)
+    mean = pull / total
+    q = dot(wy, y) - pull * mean
+    wwyy = np.multiply(wy, wy, out=ww)
+    a = wwyy.sum(axis=0) - mean * (2.0 * wwy - mean * square)
+    shift = wwy - mean * square
+    fall_a = 2.0 * (dot(wwyy, w) - mean * (2.0 * wwwy - mean * cube) - shift * shift / total)
+    return total, mean, q, a, fall_a, square, cube
+
+
+def slope_terms(
+    batch: Batch, tau2: FloatArray, *, restricted: bool, owner: IntArray | None = None
+) -> tuple[FloatArray, FloatArray]:
+    """Return the terms A and B of the slope; the likelihood rises where A > B.
+
+    Parameters
+    ----------
+    batch : Batch
+        Syntheses.
+    tau2 : ndarray, shape (g,)
+        Between-trial variances.
+    restricted : bool
+        True for REML, False for ML.
+    owner : ndarray of int, shape (g,), optional
+        As in `moments.read`.
+
+    Returns
+    -------
+    tuple of ndarray, shape (g,)
+        A and B, both above zero unless all estimates are the same.
+    """
+    a, b = read(_restricted_terms if restricted else _full_terms, batch, tau2, owner)
+    return a, b
+
+
+def _full_terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    a, total, _ = _terms(y, v, tau2)
+    return a, total
+
+
+def _restricted_terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    a, total, square = _terms(y, v, tau2)
+    return a, total - square / total
+
+
+def _terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    """Return A, sum w and sum w^2."""
+    w = weigh(v, tau2)
+    wy = w * y
+    total, square = w.sum(axis=0), dot(w, w)
+    mean = wy.sum(axis=0) / total
+    return dot(wy, wy) - mean * (2.0 * dot(w, wy) - mean * square), total, square
 
 
 def log_likelihood(batch: Batch, tau2: FloatArray, *, restricted: bool) -> FloatArray:
@@ -90,8 +153,15 @@ def log_likelihood(batch: Batch, tau2: FloatArray, *, restricted: bool) -> Float
     ndarray, shape (g,)
         Log-likelihoods; their differences are those of the full ones.
     """
-    now = fit(batch, tau2)
-    spread = np.where(now.w > 0.0, batch.v + tau2, 1.0)
-    minus_twice = np.log(spread).sum(axis=0) + now.q
-    out: FloatArray = -0.5 * (minus_twice + np.log(now.total) if restricted else minus_twice)
+    logs, q, total = read(_log_terms, batch, tau2)
+    minus_twice = logs + q
+    out: FloatArray = -0.5 * (minus_twice + np.log(total) if restricted else minus_twice)
     return out
+
+
+def _log_terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    w = weigh(v, tau2)
+    wy = w * y
+    total, pull = w.sum(axis=0), wy.sum(axis=0)
+    spread = np.where(w > 0.0, v + tau2, 1.0)
+    return np.log(spread).sum(axis=0), dot(wy, y) - pull * pull / total, total

@@ -25,12 +25,13 @@ from collections.abc import Iterator
 import numpy as np
 import numpy.typing as npt
 
-from treering.pooling.ascent import TINY, refine, single_maximum
-from treering.pooling.batch import CHUNK_NUMBERS, Batch
-from treering.pooling.likelihood import log_likelihood, slope_terms
-from treering.pooling.moments import Fit, fit
+from treering.pooling.ascent import refine, single_maximum
+from treering.pooling.batch import Batch
+from treering.pooling.likelihood import Slope, log_likelihood, slope, slope_terms
+from treering.pooling.moments import sums
 from treering.pooling.qroot import newton_step
 from treering.pooling.result import FloatArray
+from treering.pooling.uniqueness import TINY
 
 GRID_STEP = 1.0
 DENSER = 4
@@ -38,15 +39,15 @@ LEVEL = 0.4
 NEAR = 0.5
 
 
-def maximise(batch: Batch, at_zero: Fit, *, restricted: bool) -> FloatArray:
+def maximise(batch: Batch, at_zero: Slope, *, restricted: bool) -> FloatArray:
     """Tau2 at the global maximum of the (restricted) likelihood.
 
     Parameters
     ----------
     batch : Batch
         Syntheses of at least two trials each, estimates centred near zero.
-    at_zero : Fit
-        Sums at tau2 = 0.
+    at_zero : Slope
+        The slope at tau2 = 0.
     restricted : bool
         True for REML, False for ML.
 
@@ -66,7 +67,7 @@ def maximise(batch: Batch, at_zero: Fit, *, restricted: bool) -> FloatArray:
     return best
 
 
-def _highest(batch: Batch, at_zero: Fit, restricted: bool) -> FloatArray:
+def _highest(batch: Batch, at_zero: Slope, restricted: bool) -> FloatArray:
     """Read the slope along the whole range and take the highest of all maxima."""
     lowest, reach = _range(batch, at_zero)
     best, doubt = _search(batch, at_zero, lowest, reach, GRID_STEP, restricted)
@@ -91,7 +92,7 @@ def modes(batch: Batch, *, restricted: bool) -> Iterator[tuple[float, float]]:
     tuple of float
         Tau2 and log-likelihood (without its constant).
     """
-    at_zero = fit(batch, np.zeros(1))
+    at_zero = slope(batch, np.zeros(1), restricted=restricted)
     lowest, reach = _range(batch, at_zero)
     grid = _grid(lowest, reach, GRID_STEP / DENSER)
     found, _, falls = _maxima(batch, grid, *_read(batch, at_zero, grid, restricted), restricted)
@@ -99,13 +100,13 @@ def modes(batch: Batch, *, restricted: bool) -> Iterator[tuple[float, float]]:
         yield t, float(log_likelihood(batch, np.array([t]), restricted=restricted)[0])
 
 
-def _range(batch: Batch, at_zero: Fit) -> tuple[FloatArray, FloatArray]:
+def _range(batch: Batch, at_zero: Slope) -> tuple[FloatArray, FloatArray]:
     """Smallest v, and the length in log(min v + tau2) of the range that can hold a maximum."""
     lowest = batch.v.min(axis=0)
     highest = np.where(np.isfinite(batch.v), batch.v, 0.0).max(axis=0)
     degrees = batch.k - 1.0
     first, _ = newton_step(at_zero, degrees, np.zeros(batch.k.size))
-    q = fit(batch, first).q
+    q = sums(batch, first).q
     # Where Q is still above k - 1, the bound on Q in the module's text gives a place where it no longer is.
     beyond = np.where(q > degrees, (highest + first) * (q / degrees) - highest, first)
     return lowest, np.log((beyond + highest) / lowest)
@@ -119,23 +120,19 @@ def _grid(lowest: FloatArray, reach: FloatArray, step: float) -> FloatArray:
     return grid
 
 
-def _read(batch: Batch, at_zero: Fit, grid: FloatArray, restricted: bool) -> tuple[FloatArray, FloatArray]:
+def _read(batch: Batch, at_zero: Slope, grid: FloatArray, restricted: bool) -> tuple[FloatArray, FloatArray]:
     """Terms A and B of the slope at every grid point, shape (points, g)."""
     a, b = np.empty_like(grid), np.empty_like(grid)
-    tall, wide = batch.y.shape
-    block = max(1, CHUNK_NUMBERS // (tall * wide))  # points read in one sweep
-    a[0], b[0] = slope_terms(at_zero, restricted=restricted)
-    for row in range(1, len(grid), block):
-        t = grid[row : row + block]
-        side_by_side = batch.repeated(len(t)) if len(t) > 1 else batch
-        terms = slope_terms(fit(side_by_side, t.ravel()), restricted=restricted)
-        a[row : row + block], b[row : row + block] = (term.reshape(t.shape) for term in terms)
+    a[0], b[0] = at_zero.a, at_zero.b
+    owner = np.tile(np.arange(batch.k.size), len(grid) - 1)
+    terms = slope_terms(batch, grid[1:].ravel(), restricted=restricted, owner=owner)
+    a[1:], b[1:] = (term.reshape(grid[1:].shape) for term in terms)
     a[-1] = np.minimum(a[-1], b[-1])  # proved above; rounding could leave a speck on the wrong side
     return a, b
 
 
 def _search(
-    batch: Batch, at_zero: Fit, lowest: FloatArray, reach: FloatArray, step: float, restricted: bool
+    batch: Batch, at_zero: Slope, lowest: FloatArray, reach: FloatArray, step: float, restricted: bool
 ) -> tuple[FloatArray, npt.NDArray[np.intp]]:
     """Highest maximum on one grid, and the syntheses for which the grid may be too coarse."""
     grid = _grid(lowest, reach, step)

@@ -8,40 +8,44 @@ Sources, formulas and equation numbers are cited from memory.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import NamedTuple
 
 import numpy as np
 
-from treering.pooling.batch import Batch, IntArray
+from treering.pooling.batch import Batch, IntArray, even
 from treering.pooling.result import FloatArray
 
+BLOCK_NUMBERS = 20_480
+"""Numbers read in one sweep: with what is made of them they stay in a core's second-level cache."""
 
-class Fit(NamedTuple):
-    """Weights at one tau2 and the sums made with them.
+Terms = tuple[FloatArray, ...]
+Kernel = Callable[[FloatArray, FloatArray, FloatArray], Terms]
+
+
+class Sums(NamedTuple):
+    """Weighted sums at one tau2, shape (g,) each.
 
     Attributes
     ----------
-    w : ndarray, shape (n, g)
-        Weights 1 / (v + tau2).
-    total : ndarray, shape (g,)
+    total : ndarray
         Sum of weights.
-    mean : ndarray, shape (g,)
+    mean : ndarray
         Weighted mean.
-    pull : ndarray, shape (n, g)
-        w (y - mean), each trial's pull on the mean.
-    q : ndarray, shape (g,)
+    q : ndarray
         Generalised Q.
+    a : ndarray
+        Sum of w^2 (y - mean)^2, which is -dQ/dt.
     """
 
-    w: FloatArray
     total: FloatArray
     mean: FloatArray
-    pull: FloatArray
     q: FloatArray
+    a: FloatArray
 
-    def columns(self, which: IntArray) -> Fit:
+    def columns(self, which: IntArray) -> Sums:
         """Take the syntheses at these positions."""
-        return Fit(*(field.take(which, axis=-1) for field in self))
+        return Sums(*(term[which] for term in self))
 
 
 def dot(a: FloatArray, b: FloatArray) -> FloatArray:
@@ -50,25 +54,102 @@ def dot(a: FloatArray, b: FloatArray) -> FloatArray:
     return out
 
 
-def fit(batch: Batch, tau2: FloatArray) -> Fit:
-    """Weighted mean and generalised Q of each synthesis at its tau2.
+def read(kernel: Kernel, batch: Batch, tau2: FloatArray, owner: IntArray | None = None) -> Terms:
+    """Make sums over the trials of every synthesis, a block of syntheses at a time.
+
+    Parameters
+    ----------
+    kernel : callable
+        Takes y and v, shape (n, g), and tau2, shape (g,); gives sums of shape (g,), each from its own column.
+    batch : Batch
+        Syntheses.
+    tau2 : ndarray, shape (g,)
+        Between-trial variances.
+    owner : ndarray of int, shape (g,), optional
+        Position in the batch of the synthesis that each tau2 is meant for; all of them in turn if not given.
+
+    Returns
+    -------
+    tuple of ndarray, shape (g,)
+        The kernel's sums.
+    """
+    blocks = max(1, min(tau2.size, -(-len(batch.y) * tau2.size // BLOCK_NUMBERS)))
+    wide = -(-tau2.size // blocks)
+    pieces = [kernel(*_block(batch, cut, owner), tau2[cut]) for cut in even(tau2.size, wide)]
+    return pieces[0] if len(pieces) == 1 else tuple(map(np.concatenate, zip(*pieces, strict=True)))
+
+
+def _block(batch: Batch, cut: slice, owner: IntArray | None) -> tuple[FloatArray, FloatArray]:
+    if owner is None:
+        return batch.y[:, cut], batch.v[:, cut]
+    # Plain indexing would give arrays laid out the other way round, on which every sum is slow.
+    return batch.y.take(owner[cut], axis=1), batch.v.take(owner[cut], axis=1)
+
+
+def weigh(v: FloatArray, tau2: FloatArray) -> FloatArray:
+    """Weights 1 / (v + tau2), shape (n, g)."""
+    w = v + tau2
+    np.reciprocal(w, out=w)
+    return w
+
+
+def centre(batch: Batch) -> tuple[Batch, FloatArray]:
+    """Measure each synthesis from its common-effect mean.
+
+    First from the first trial, so that estimates that are all the same become exact zeros; then from the mean
+    with weights 1 / v. Sums are made of plain squares of what is left: with mu the mean at any t, seen from
+    there, mu^2 sum w is at most k times sum w (y - mu)^2 (every 1 / v is at most k times as large a share of
+    its sum as w is), so that their difference keeps all but the last digits. Derived here, no source.
 
     Parameters
     ----------
     batch : Batch
         Syntheses.
+
+    Returns
+    -------
+    Batch
+        The same with centred estimates.
+    ndarray, shape (g,)
+        What was taken off.
+    """
+    first, present = batch.y[0], np.isfinite(batch.v)
+    complete = bool(present.all())
+    if not complete:
+        first = batch.y[np.argmax(present, axis=0), np.arange(batch.k.size)]
+    w, y = np.reciprocal(batch.v), batch.y - first
+    if not complete:
+        y[~present] = 0.0
+    mean = dot(w, y) / w.sum(axis=0)
+    y -= mean
+    if not complete:
+        y[~present] = 0.0
+    return Batch(y, batch.v, batch.k), first + mean
+
+
+def sums(batch: Batch, tau2: FloatArray) -> Sums:
+    """Weighted mean and generalised Q of each synthesis at its tau2.
+
+    Parameters
+    ----------
+    batch : Batch
+        Syntheses, best as `centre` leaves them: digits are lost where the mean is far from zero.
     tau2 : ndarray, shape (g,)
         Between-trial variance.
 
     Returns
     -------
-    Fit
-        Weights and sums.
+    Sums
+        The sums.
     """
-    w = batch.v + tau2
-    np.reciprocal(w, out=w)
-    total = w.sum(axis=0)
-    mean = dot(w, batch.y) / total
-    residual = batch.y - mean
-    pull = w * residual
-    return Fit(w, total, mean, pull, dot(pull, residual))
+    return Sums(*read(_sums, batch, tau2))
+
+
+def _sums(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
+    w = weigh(v, tau2)
+    wy = w * y
+    total, pull = w.sum(axis=0), wy.sum(axis=0)
+    mean = pull / total
+    q = dot(wy, y) - pull * mean
+    a = dot(wy, wy) - mean * (2.0 * dot(w, wy) - mean * dot(w, w))
+    return total, mean, q, a

@@ -12,7 +12,8 @@ import numpy as np
 
 from treering.errors import NotConvergedError
 from treering.pooling.batch import Batch
-from treering.pooling.moments import Fit, dot, fit
+from treering.pooling.likelihood import Slope
+from treering.pooling.moments import Sums, sums
 from treering.pooling.result import FloatArray
 
 MAX_STEPS = 100
@@ -20,7 +21,9 @@ RELATIVE_STEP = 1e-6
 """Last step as a fraction of v + tau2. Newton squares the error: the root itself is good to about 1e-12."""
 
 
-def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, t: FloatArray, at_t: Fit) -> FloatArray:
+def solve_q(
+    batch: Batch, target: FloatArray, at_zero: Sums | Slope, t: FloatArray, at_t: Sums | Slope
+) -> FloatArray:
     """Between-trial variance at which the generalised Q equals its target.
 
     Parameters
@@ -29,11 +32,11 @@ def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, t: FloatArray, at_t:
         Syntheses.
     target : ndarray, shape (g,)
         Wanted value of Q, above zero.
-    at_zero : Fit
+    at_zero : Sums or Slope
         Sums at tau2 = 0.
     t : ndarray, shape (g,)
         First guess.
-    at_t : Fit
+    at_t : Sums or Slope
         Sums at the first guess; known already, so the first step costs no new sums.
 
     Returns
@@ -57,12 +60,12 @@ def solve_q(batch: Batch, target: FloatArray, at_zero: Fit, t: FloatArray, at_t:
     return root
 
 
-def newton_step(now: Fit, target: FloatArray, t: FloatArray) -> tuple[FloatArray, FloatArray]:
+def newton_step(now: Sums | Slope, target: FloatArray, t: FloatArray) -> tuple[FloatArray, FloatArray]:
     """One step towards the root.
 
     Parameters
     ----------
-    now : Fit
+    now : Sums or Slope
         Sums at t.
     target : ndarray, shape (g,)
         Wanted value of Q.
@@ -75,14 +78,13 @@ def newton_step(now: Fit, target: FloatArray, t: FloatArray) -> tuple[FloatArray
         New place (never below zero, and left of the root if there is one), and the scale Q / |Q'| of
         v + tau2 at the old place; t itself may be near zero and is no measure of precision.
     """
-    slope = np.maximum(dot(now.pull, now.pull), np.finfo(np.float64).tiny)
-    scale = now.q / slope
+    scale = now.q / np.maximum(now.a, np.finfo(np.float64).tiny)
     return np.maximum(t + scale * (now.q / target - 1.0), 0.0), scale
 
 
 def _newton(batch: Batch, target: FloatArray, t: FloatArray) -> FloatArray:
     for _ in range(MAX_STEPS):
-        moved, scale = newton_step(fit(batch, t), target, t)
+        moved, scale = newton_step(sums(batch, t), target, t)
         unsettled = np.flatnonzero(np.abs(moved - t) > RELATIVE_STEP * scale)
         t = moved
         if unsettled.size == 0:

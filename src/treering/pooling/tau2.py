@@ -13,30 +13,39 @@ from collections.abc import Callable, Mapping
 import numpy as np
 
 from treering.pooling.batch import Batch
+from treering.pooling.likelihood import Slope, slope
 from treering.pooling.maximum import maximise
-from treering.pooling.moments import Fit, dot, fit
+from treering.pooling.moments import Sums, dot, sums, weigh
 from treering.pooling.qroot import solve_q
 from treering.pooling.result import FloatArray
 from treering.terms import Tau2
 
-Estimator = Callable[[Batch, Fit], FloatArray]
+AtZero = Sums | Slope
+Estimator = Callable[[Batch, AtZero], FloatArray]
 
 
-def _dersimonian_laird(batch: Batch, common: Fit) -> FloatArray:
-    scale = common.total - dot(common.w, common.w) / common.total
+def _dersimonian_laird(batch: Batch, common: AtZero) -> FloatArray:
+    w = weigh(batch.v, np.zeros(batch.k.size))
+    scale = common.total - dot(w, w) / common.total
     return (common.q - (batch.k - 1.0)) / scale
 
 
-def _paule_mandel(batch: Batch, common: Fit) -> FloatArray:
+def _paule_mandel(batch: Batch, common: AtZero) -> FloatArray:
     return solve_q(batch, batch.k - 1.0, common, np.zeros(batch.k.size), common)
 
 
-def _reml(batch: Batch, common: Fit) -> FloatArray:
-    return maximise(batch, common, restricted=True)
+def _slope_at_zero(batch: Batch, common: AtZero, *, restricted: bool) -> Slope:
+    return (
+        common if isinstance(common, Slope) else slope(batch, np.zeros(batch.k.size), restricted=restricted)
+    )
 
 
-def _ml(batch: Batch, common: Fit) -> FloatArray:
-    return maximise(batch, common, restricted=False)
+def _reml(batch: Batch, common: AtZero) -> FloatArray:
+    return maximise(batch, _slope_at_zero(batch, common, restricted=True), restricted=True)
+
+
+def _ml(batch: Batch, common: AtZero) -> FloatArray:
+    return maximise(batch, _slope_at_zero(batch, common, restricted=False), restricted=False)
 
 
 def _plain_squares(batch: Batch) -> FloatArray:
@@ -46,18 +55,18 @@ def _plain_squares(batch: Batch) -> FloatArray:
     return dot(residual, residual)
 
 
-def _hedges(batch: Batch, common: Fit) -> FloatArray:
+def _hedges(batch: Batch, common: AtZero) -> FloatArray:
     inner: FloatArray = np.where(np.isfinite(batch.v), batch.v, 0.0).sum(axis=0) / batch.k
     return _plain_squares(batch) / (batch.k - 1.0) - inner
 
 
-def _sidik_jonkman(batch: Batch, common: Fit) -> FloatArray:
+def _sidik_jonkman(batch: Batch, common: AtZero) -> FloatArray:
     # Their weights 1 / (v / rough + 1) are rough / (v + rough): the estimate is rough * Q(rough) / (k - 1).
     rough = _plain_squares(batch) / batch.k
-    return rough * fit(batch, rough).q / (batch.k - 1.0)
+    return rough * sums(batch, rough).q / (batch.k - 1.0)
 
 
-def _hunter_schmidt(batch: Batch, common: Fit) -> FloatArray:
+def _hunter_schmidt(batch: Batch, common: AtZero) -> FloatArray:
     return (common.q - batch.k) / common.total
 
 
@@ -72,15 +81,36 @@ ESTIMATORS: Mapping[Tau2, Estimator] = {
 }
 
 
-def estimate_tau2(batch: Batch, common: Fit, method: Tau2) -> FloatArray:
+def read_at_zero(batch: Batch, method: Tau2) -> AtZero:
+    """Make the sums at tau2 = 0, and with them, in the same sweep, what the method wants to know there.
+
+    Parameters
+    ----------
+    batch : Batch
+        Syntheses.
+    method : Tau2
+        Estimator.
+
+    Returns
+    -------
+    Sums or Slope
+        Both have total, mean, q and a.
+    """
+    nought = np.zeros(batch.k.size)
+    if method in (Tau2.REML, Tau2.ML):
+        return slope(batch, nought, restricted=method is Tau2.REML)
+    return sums(batch, nought)
+
+
+def estimate_tau2(batch: Batch, common: AtZero, method: Tau2) -> FloatArray:
     """Between-trial variance of each synthesis.
 
     Parameters
     ----------
     batch : Batch
         Syntheses of at least two trials each, estimates centred near zero.
-    common : Fit
-        Sums at tau2 = 0.
+    common : Sums or Slope
+        What `read_at_zero` gives for this method.
     method : Tau2
         Estimator.
 
