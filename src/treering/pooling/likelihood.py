@@ -14,7 +14,7 @@ from typing import NamedTuple
 import numpy as np
 
 from treering.pooling.batch import Batch, IntArray
-from treering.pooling.moments import Terms, dot, read, weigh
+from treering.pooling.moments import Terms, apart, dot, read, weigh
 from treering.pooling.result import FloatArray
 
 
@@ -67,29 +67,47 @@ def slope(batch: Batch, tau2: FloatArray, *, restricted: bool, owner: IntArray |
 
 
 def _full_slope(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    total, mean, q, a, fall_a, square, _ = _moments(y, v, tau2)
-    return total, mean, q, a, total, fall_a, square
+    (total, mean, q, a, fall_a), first, _, square, _ = _moments(y, v, tau2)
+    return total, mean, q, a, total, fall_a, first * first + square
 
 
 def _restricted_slope(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    total, mean, q, a, fall_a, square, cube = _moments(y, v, tau2)
-    ratio = square / total
-    return total, mean, q, a, total - ratio, fall_a, square - 2.0 * cube / total + ratio * ratio
+    (total, mean, q, a, fall_a), first, rest, square, cube = _moments(y, v, tau2)
+    share, other = first / total, rest / total
+    # The trace of PP, multiplied out and sorted by powers of the first weight: its fourth power, which would
+    # drown all else where it is by far the largest, falls out.
+    fall_b = (
+        share * share * (rest * rest + 3.0 * square)
+        + 2.0 * share * (other * square - cube / total)
+        + (other * (other * square - 2.0 * cube / total) + (square / total) ** 2)
+    )
+    return total, mean, q, a, apart(first, rest, square), fall_a, fall_b
 
 
-def _moments(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    """Total, mean, Q, A, -A', sum w^2 and sum w^3, from sums of w^i y^j."""
+def _moments(
+    y: FloatArray, v: FloatArray, tau2: FloatArray
+) -> tuple[Terms, FloatArray, FloatArray, FloatArray, FloatArray]:
+    """Total, mean, Q, A and -A', and the first weight with the other weights' sums of w, w^2 and w^3.
+
+    All from sums of w^i y^j. With p the first weight times the distance of the mean from the first trial, and
+    T and U the other trials' sums of w^2 (y - mu) and w^3 (y - mu)^2, -A' / 2 is
+    U + (w p^2 R + 2 w p T - T^2) / sum w, w the first weight and R the others' sum.
+    """
     w = weigh(v, tau2)
     wy, ww = w * y, w * w
-    total, pull, square = w.sum(axis=0), wy.sum(axis=0), ww.sum(axis=0)
-    cube, wwy, wwwy = dot(ww, w), dot(w, wy), dot(ww, wy)
+    first, others, wy1 = w[0], w[1:], wy[1:]
+    rest, pull, square = others.sum(axis=0), wy.sum(axis=0), ww[1:].sum(axis=0)
+    total = first + rest
+    cube, wwy, wwwy = dot(ww[1:], others), dot(others, wy1), dot(ww[1:], wy1)
     mean = pull / total
     q = dot(wy, y) - pull * mean
-    wwyy = np.multiply(wy, wy, out=ww)
-    a = wwyy.sum(axis=0) - mean * (2.0 * wwy - mean * square)
+    wwyy = np.multiply(wy1, wy1, out=ww[1:])
+    p = first * (mean - y[0])
+    a = p * p + (wwyy.sum(axis=0) - mean * (2.0 * wwy - mean * square))
     shift = wwy - mean * square
-    fall_a = 2.0 * (dot(wwyy, w) - mean * (2.0 * wwwy - mean * cube) - shift * shift / total)
-    return total, mean, q, a, fall_a, square, cube
+    apart_a = (first / total) * p * (p * rest + 2.0 * shift) - shift * (shift / total)
+    fall_a = 2.0 * (dot(wwyy, others) - mean * (2.0 * wwwy - mean * cube) + apart_a)
+    return (total, mean, q, a, fall_a), first, rest, square, cube
 
 
 def slope_terms(
@@ -118,22 +136,25 @@ def slope_terms(
 
 
 def _full_terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    a, total, _ = _terms(y, v, tau2)
-    return a, total
+    a, first, rest, _ = _terms(y, v, tau2)
+    return a, first + rest
 
 
 def _restricted_terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    a, total, square = _terms(y, v, tau2)
-    return a, total - square / total
+    a, first, rest, square = _terms(y, v, tau2)
+    return a, apart(first, rest, square)
 
 
 def _terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    """Return A, sum w and sum w^2."""
+    """Return A, and the first weight with the other weights' sums of w and w^2."""
     w = weigh(v, tau2)
     wy = w * y
-    total, square = w.sum(axis=0), dot(w, w)
-    mean = wy.sum(axis=0) / total
-    return dot(wy, wy) - mean * (2.0 * dot(w, wy) - mean * square), total, square
+    first, others, wy1 = w[0], w[1:], wy[1:]
+    rest, square = others.sum(axis=0), dot(others, others)
+    mean = wy.sum(axis=0) / (first + rest)
+    p = first * (mean - y[0])
+    a = p * p + (dot(wy1, wy1) - mean * (2.0 * dot(others, wy1) - mean * square))
+    return a, first, rest, square
 
 
 def log_likelihood(batch: Batch, tau2: FloatArray, *, restricted: bool) -> FloatArray:

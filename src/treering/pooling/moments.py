@@ -93,6 +93,12 @@ def weigh(v: FloatArray, tau2: FloatArray) -> FloatArray:
     return w
 
 
+LOPSIDED_SHARE = 0.999
+"""Share of one trial in all weights from which on it is put first."""
+LOPSIDED_SPREAD = 1e6
+"""How many times the first variance may be the smallest one before the most precise trial is put first."""
+
+
 def centre(batch: Batch) -> tuple[Batch, FloatArray]:
     """Measure each synthesis from its common-effect mean.
 
@@ -100,6 +106,10 @@ def centre(batch: Batch) -> tuple[Batch, FloatArray]:
     with weights 1 / v. Sums are made of plain squares of what is left: with mu the mean at any t, seen from
     there, mu^2 sum w is at most k times sum w (y - mu)^2 (every 1 / v is at most k times as large a share of
     its sum as w is), so that their difference keeps all but the last digits. Derived here, no source.
+
+    Where one trial has nearly all the weight, or the first trial is very much less precise than another, the
+    most precise trial changes places with the first: what is measured from a far less precise one loses its
+    digits, and the sums hold the first weight apart from the others (`apart`).
 
     Parameters
     ----------
@@ -109,22 +119,58 @@ def centre(batch: Batch) -> tuple[Batch, FloatArray]:
     Returns
     -------
     Batch
-        The same with centred estimates.
+        The same with centred estimates, of which one may have changed places with the first.
     ndarray, shape (g,)
         What was taken off.
     """
+    w, total, batch = _precise_first(batch)
     first, present = batch.y[0], np.isfinite(batch.v)
     complete = bool(present.all())
     if not complete:
         first = batch.y[np.argmax(present, axis=0), np.arange(batch.k.size)]
-    w, y = np.reciprocal(batch.v), batch.y - first
+    y = batch.y - first
     if not complete:
         y[~present] = 0.0
-    mean = dot(w, y) / w.sum(axis=0)
+    mean = dot(w, y) / total
     y -= mean
     if not complete:
         y[~present] = 0.0
     return Batch(y, batch.v, batch.k), first + mean
+
+
+def _precise_first(batch: Batch) -> tuple[FloatArray, FloatArray, Batch]:
+    """Weights 1 / v, their sum, and the batch with the most precise trial first where that matters."""
+    w = np.reciprocal(batch.v)
+    total, largest = w.sum(axis=0), w.max(axis=0)
+    lopsided = np.flatnonzero((largest > LOPSIDED_SHARE * total) | (largest > LOPSIDED_SPREAD * w[0]))
+    lopsided = lopsided[batch.k[lopsided] > 1.0]
+    if lopsided.size:
+        top = np.argmax(w[:, lopsided], axis=0)
+        y, v = batch.y.copy(), batch.v.copy()
+        for values in (y, v, w):
+            values[0, lopsided], values[top, lopsided] = values[top, lopsided], values[0, lopsided]
+        batch = Batch(y, v, batch.k)
+    return w, total, batch
+
+
+def apart(first: FloatArray, rest: FloatArray, square: FloatArray) -> FloatArray:
+    """Return sum w - sum w^2 / sum w without taking two nearly equal numbers from each other.
+
+    Parameters
+    ----------
+    first : ndarray, shape (g,)
+        Weight of the first trial, by far the largest one where any is (see `centre`).
+    rest, square : ndarray, shape (g,)
+        Sum of the other weights and of their squares.
+
+    Returns
+    -------
+    ndarray, shape (g,)
+        (2 first rest + rest^2 - square) / (first + rest).
+    """
+    total = first + rest
+    out: FloatArray = 2.0 * first / total * rest + (rest * (rest / total) - square / total)
+    return out
 
 
 def sums(batch: Batch, tau2: FloatArray) -> Sums:

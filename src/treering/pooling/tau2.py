@@ -15,7 +15,7 @@ import numpy as np
 from treering.pooling.batch import Batch
 from treering.pooling.likelihood import Slope, slope
 from treering.pooling.maximum import maximise
-from treering.pooling.moments import Sums, dot, sums, weigh
+from treering.pooling.moments import Sums, apart, dot, sums, weigh
 from treering.pooling.qroot import solve_q
 from treering.pooling.result import FloatArray
 from treering.terms import Tau2
@@ -26,7 +26,7 @@ Estimator = Callable[[Batch, AtZero], FloatArray]
 
 def _dersimonian_laird(batch: Batch, common: AtZero) -> FloatArray:
     w = weigh(batch.v, np.zeros(batch.k.size))
-    scale = common.total - dot(w, w) / common.total
+    scale = apart(w[0], w[1:].sum(axis=0), dot(w[1:], w[1:]))
     return (common.q - (batch.k - 1.0)) / scale
 
 
