@@ -92,7 +92,10 @@ def test_faulty_ratio_intervals_are_refused(second, measure, row, field, words):
     refused(second(*row), measure, field, words)
 
 
-@pytest.mark.parametrize("row", [(-2.0, -3.1, 0.4), (4.0, 0.5, 5.5), (2, 1, 10)])
+# 1 (0 to 4) and 5 (4 to 8) would need all three figures at the very edge of their rounding.
+@pytest.mark.parametrize(
+    "row", [(-2.0, -3.1, 0.4), (4.0, 0.5, 5.5), (2, 1, 10), (1, 0, 4), (5, 4, 8), (0.2, 0.1, 0.5)]
+)
 def test_faulty_difference_intervals_are_refused(intervals, row):
     table = intervals((1.0, 0.0, 2.0), row, index=["Alder 2021", "Birch 2022"])
     refused(table, "mean-difference", "ci_low, ci_high", "not symmetric")
@@ -118,6 +121,54 @@ def test_a_text_where_a_number_belongs_is_refused(second):
     refused(table, "odds-ratio", "intervention_events", "is not a number")
 
 
+@pytest.mark.parametrize(
+    "cell", [pd.Timestamp("2020-03-04"), pd.Timedelta(days=3), True, 3j, "3,5", "1_0", "", [3], b"3"]
+)
+def test_what_is_no_number_is_refused_in_a_mixed_column(second, cell):
+    table = second(*GOOD_COUNTS).astype(object)
+    table.at["Birch 2022", "intervention_events"] = cell
+    if isinstance(cell, complex):  # pandas turns the whole column complex, so the first trial is at fault too
+        table["intervention_events"] = pd.Series([3, cell], index=table.index, dtype=object)
+    refused(table, "odds-ratio", "intervention_events", "is not a number")
+
+
+# A column of dates, durations or truth values is a fault of the spreadsheet, not a count.
+@pytest.mark.parametrize("kind", ["datetime64[ns]", "timedelta64[ns]", "bool", "complex128"])
+def test_a_column_of_another_kind_is_refused(counts, kind):
+    table = counts((3, 40, 5, 41), index=["Alder"]).astype(int)
+    table["comparator_events"] = table["comparator_events"].astype(kind)
+    with pytest.raises(AnalysisError, match="trial Alder: comparator_events: is not a number"):
+        effects.effect_sizes(table, "odds-ratio")
+
+
+@pytest.mark.parametrize("kind", ["int32", "Int64", "float32", "Float64", "string", "object", "category"])
+def test_numbers_of_every_kind_of_column_are_read_alike(counts, kind):
+    table = counts((3, 40, 5, 41), (9, 80, 4, 77)).astype(int)
+    found = effects.effect_sizes(table.astype(kind), "odds-ratio")
+    pd.testing.assert_frame_equal(found, effects.effect_sizes(table, "odds-ratio"))
+
+
+def test_an_arm_that_is_no_word_is_refused():
+    columns = {"p_value": [0.1], "intervention_events": [2], "comparator_events": [3]}
+    table = pd.DataFrame(columns, index=["Alder"]).assign(lower_hazard=[["intervention"]])
+    with pytest.raises(AnalysisError, match="trial Alder: lower_hazard"):
+        effects.effect_sizes(table, "hazard-ratio")
+
+
+@pytest.mark.parametrize("table", [5, "a table", {"intervention_events": 3}])
+def test_what_is_no_table_is_refused(table):
+    with pytest.raises(AnalysisError, match="is no table"):
+        effects.effect_sizes(table, "odds-ratio")
+
+
+def test_the_missing_column_named_is_one_of_the_way_that_the_table_comes_nearest(counts):
+    only_totals = counts(GOOD_COUNTS)[["intervention_total", "comparator_total"]]
+    with pytest.raises(AnalysisError, match=r"^intervention_events: the column is missing"):
+        effects.effect_sizes(only_totals, "odds-ratio")
+    with pytest.raises(AnalysisError, match=r"^intervention_events: the column is missing"):
+        effects.effect_sizes(pd.DataFrame({"title": ["Alder"]}), "odds-ratio")
+
+
 def test_figures_too_large_to_compute_with_are_refused(second):
     refused(second(5, 1e200, 30, 6, 2, 30), "mean-difference", "variance", "not finite")
 
@@ -130,10 +181,22 @@ def test_printed_intervals_pass_with_their_rounding(intervals, row):
     assert np.isfinite(effects.effect_sizes(intervals(row), "hazard-ratio").to_numpy()).all()
 
 
-# Invented: a precise ratio, a ratio with one decimal, a large ratio in whole numbers.
-@pytest.mark.parametrize("row", [(0.95, 0.93, 0.98), (1.5, 1.1, 2.0), (15, 4, 60)])
+# Invented: a precise ratio, a ratio with one decimal, a large ratio in whole numbers, a ratio with fewer
+# decimals than its limits.
+@pytest.mark.parametrize("row", [(0.95, 0.93, 0.98), (1.5, 1.1, 2.0), (15, 4, 60), (0.67, 0.455, 0.983)])
 def test_coarse_but_honest_ratios_pass(intervals, row):
     assert np.isfinite(effects.effect_sizes(intervals(row), "hazard-ratio").to_numpy()).all()
+
+
+def test_fewer_decimals_of_the_estimate_do_not_excuse_a_lopsided_interval(second):
+    # The middle of the limits is 1.051, a quarter of the half-width above 1.0.
+    refused(second(1.0, 0.85, 1.30), "hazard-ratio", "ci_low, ci_high", "not symmetric")
+
+
+def test_an_interval_in_a_narrow_float_type_is_read_by_its_printed_digits(intervals):
+    narrow = effects.effect_sizes(intervals((0.72, 0.51, 1.01)).astype("float32"), "hazard-ratio")
+    wide = effects.effect_sizes(intervals((0.72, 0.51, 1.01)), "hazard-ratio")
+    pd.testing.assert_frame_equal(narrow, wide)
 
 
 def test_a_difference_rounded_to_one_decimal_passes(intervals):
@@ -193,3 +256,9 @@ def test_a_column_that_stands_twice_is_refused(counts):
 def test_the_trial_column_names_trials_where_the_index_only_counts(counts):
     table = counts(GOOD_COUNTS, (41, 40, 5, 41)).assign(trial=["Alder 2021", "Birch 2022"])
     refused(table, "odds-ratio", "intervention_events", "is above")
+
+
+def test_a_trial_without_a_name_is_called_by_its_place(counts):
+    table = counts((3, 40, 5, 41), (41, 40, 5, 41)).assign(trial=["Alder 2021", None])
+    with pytest.raises(AnalysisError, match="trial 1: intervention_events"):
+        effects.effect_sizes(table, "odds-ratio")

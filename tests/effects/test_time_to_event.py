@@ -84,7 +84,7 @@ def test_both_variance_formulas_agree_where_events_follow_the_allocation():
         ({"observed_minus_expected": [1.0], "variance_oe": [0.0]}, "variance_oe"),
         ({"estimate": [0.8], "p_value": [0.0]}, "p_value"),
         ({"estimate": [0.8], "p_value": [1.0]}, "p_value"),
-        ({"estimate": [1.0], "p_value": [0.4]}, "p_value"),
+        ({"estimate": [1.0], "p_value": [0.4]}, "estimate"),
         ({"estimate": [-0.8], "p_value": [0.4]}, "estimate"),
         (
             {

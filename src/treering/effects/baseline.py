@@ -47,6 +47,7 @@ def change_from_baseline(
     """
     need_finite(trial, baseline_mean=baseline_mean, final_mean=final_mean)
     need_positive(trial, baseline_sd=baseline_sd, final_sd=final_sd)
+    need_finite(trial, correlation=correlation)
     inside = -1 < correlation < 1
     need(inside, "correlation", correlation, "is not between -1 and 1", "a correlation", trial)
     spread = baseline_sd**2 + final_sd**2 - 2 * correlation * baseline_sd * final_sd
@@ -58,7 +59,7 @@ def change_from_baseline(
         "correlation": correlation,
     }
     result = {"mean": final_mean - baseline_mean, "sd": math.sqrt(spread)}
-    return record("change-from-baseline", HANDBOOK, inputs, result, origin)
+    return record("change-from-baseline", HANDBOOK, inputs, result, origin, trial=trial)
 
 
 def correlation_from_change(
@@ -97,4 +98,6 @@ def correlation_from_change(
         "final_sd": final_sd,
         "change_sd": change_sd,
     }
-    return record("correlation-from-change", HANDBOOK, inputs, {"correlation": correlation}, origin)
+    return record(
+        "correlation-from-change", HANDBOOK, inputs, {"correlation": correlation}, origin, trial=trial
+    )

@@ -71,7 +71,7 @@ def log_risk_ratio(rows: Rows) -> Effects:
     undefined = (a == 0) | (c == 0)
     with np.errstate(divide="ignore", invalid="ignore"):
         estimate = np.log(a / n1) - np.log(c / n2)
-        variance = np.maximum(1 / a - 1 / n1, 0) + np.maximum(1 / c - 1 / n2, 0)
+        variance = (n1 - a) / (a * n1) + (n2 - c) / (c * n2)  # keeps digits where nearly all had the event
     full = (a == n1) & (c == n2)
     none = double & (not corrected_by_rule)
     reason = _reasons((none, NO_EVENTS), (undefined, NO_EVENT_ARM), (full, ALL_EVENTS))
@@ -147,7 +147,7 @@ def risk_difference(rows: Rows) -> Effects:
     checks.counts(rows)
     a, n1, c, n2 = _arms(rows)
     p1, p2 = a / n1, c / n2
-    variance = p1 * (1 - p1) / n1 + p2 * (1 - p2) / n2
+    variance = p1 * ((n1 - a) / n1) / n1 + p2 * ((n2 - c) / n2) / n2
     plain = Effects.plain(p1 - p2, variance)
     return Effects(plain.estimate, variance, _reasons((variance == 0, NO_VARIANCE)), plain.corrected)
 

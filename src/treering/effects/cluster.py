@@ -57,6 +57,7 @@ def design_effect(
     fits = mean_cluster_size >= 1
     need(fits, "mean_cluster_size", mean_cluster_size, "is below one", "one or more", trial)
     need(size_variation >= 0, "size_variation", size_variation, "is below zero", "0 or more", trial)
+    need_finite(trial, intracluster_correlation=intracluster_correlation)
     fits = 0 <= intracluster_correlation <= 1
     need(fits, "intracluster_correlation", intracluster_correlation, "is not from 0 to 1", "0 to 1", trial)
     inputs: dict[str, float | str] = {
@@ -68,7 +69,7 @@ def design_effect(
     name, source = (
         ("design-effect", HANDBOOK) if size_variation == 0 else ("design-effect-varying-size", ELDRIDGE)
     )
-    return record(name, source, inputs, {"design_effect": effect}, origin)
+    return record(name, source, inputs, {"design_effect": effect}, origin, trial=trial)
 
 
 def effective_numbers(
@@ -108,9 +109,10 @@ def effective_numbers(
     inputs: dict[str, float | str] = {"total": total, "factor": factor}
     result = {"total": total / factor}
     if events is not None:
+        need_finite(trial, events=events)
         need(0 <= events <= total, "events", events, "is not from 0 to the total", f"0 to {total}", trial)
         inputs["events"], result["events"] = events, events / factor
-    return record("effective-numbers", f"{HANDBOOK}.4", inputs, result, origin)
+    return record("effective-numbers", f"{HANDBOOK}.4", inputs, result, origin, trial=trial)
 
 
 def inflated_variance(
@@ -142,7 +144,7 @@ def inflated_variance(
     need(factor >= 1, "factor", factor, "is below one", "a design effect of one or more", trial)
     inputs: dict[str, float | str] = {"variance": variance, "factor": factor}
     result = {"variance": variance * factor, "standard_error": float(np.sqrt(variance * factor))}
-    return record("inflated-variance", f"{HANDBOOK}.6", inputs, result, origin)
+    return record("inflated-variance", f"{HANDBOOK}.6", inputs, result, origin, trial=trial)
 
 
 def effective_table(table: pd.DataFrame) -> pd.DataFrame:

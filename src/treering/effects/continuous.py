@@ -61,12 +61,18 @@ def small_sample_factor(degrees_of_freedom: FloatArray | float) -> FloatArray:
     -------
     ndarray
         J, between 0 and 1.
+
+    Raises
+    ------
+    AnalysisError
+        If degrees of freedom are not finite and above 1.
     """
-    m = np.asarray(degrees_of_freedom, dtype=float)
+    m = checks.figures("degrees_of_freedom", degrees_of_freedom, above=1)
     x = 1 / m
     tail = x * (59 / 2048 + x * (483 / 8192 - x * 2323 / 65536))
     series = 1 - x * (3 / 4 + x * (7 / 32 + x * (9 / 128 - tail)))
-    exact = np.exp(gammaln(m / 2) - gammaln((m - 1) / 2)) / np.sqrt(m / 2)
+    few = np.minimum(m, _SERIES_FROM)
+    exact = np.exp(gammaln(few / 2) - gammaln((few - 1) / 2)) / np.sqrt(few / 2)
     return np.asarray(np.where(m >= _SERIES_FROM, series, exact))
 
 

@@ -27,6 +27,7 @@ from treering.effects.rows import Rows
 
 P_TO_INTERVAL = "Altman and Bland 2011, How to obtain the confidence interval from a P value, BMJ 343:d2090"
 INTERVAL_TO_P = "Altman and Bland 2011, How to obtain the P value from a confidence interval, BMJ 343:d2304"
+_LARGEST_LOG = 700.0
 SMD_ODDS = "Chinn 2000, Stat Med 19:3127; Hasselblad and Hedges 1995, Psychol Bull 117:167"
 
 
@@ -56,7 +57,7 @@ def z_from_p(
         If an input cannot be right.
     """
     z = _z(p_value, method, trial)
-    return record(f"z-from-p-{method}", P_TO_INTERVAL, {"p_value": p_value}, {"z": z}, origin)
+    return record(f"z-from-p-{method}", P_TO_INTERVAL, {"p_value": p_value}, {"z": z}, origin, trial=trial)
 
 
 def standard_error_from_p(
@@ -99,6 +100,7 @@ def standard_error_from_p(
     """
     centre = _on_scale("estimate", estimate, scale, trial)
     need(centre != 0, "estimate", estimate, "is at no effect: P gives no SE", "an interval", trial)
+    need_positive(trial, estimate=abs(centre))
     z = _z(p_value, method, trial)
     error = abs(centre) / z
     reach = _level_z(level, trial) * error
@@ -115,7 +117,7 @@ def standard_error_from_p(
         "ci_low": _off_scale(centre - reach, scale),
         "ci_high": _off_scale(centre + reach, scale),
     }
-    return record(f"standard-error-from-p-{method}", P_TO_INTERVAL, inputs, result, origin)
+    return record(f"standard-error-from-p-{method}", P_TO_INTERVAL, inputs, result, origin, trial=trial)
 
 
 def standard_error_from_interval(
@@ -170,7 +172,9 @@ def standard_error_from_interval(
         "level": level,
     }
     result = {"estimate": centre, "standard_error": error, "z": z, "p_value": _p(abs(z), method, trial)}
-    return record(f"standard-error-from-interval-{method}", INTERVAL_TO_P, inputs, result, origin)
+    return record(
+        f"standard-error-from-interval-{method}", INTERVAL_TO_P, inputs, result, origin, trial=trial
+    )
 
 
 def log_odds_ratio_from_smd(
@@ -200,7 +204,7 @@ def log_odds_ratio_from_smd(
     factor = math.pi / math.sqrt(3)
     result = {"log_odds_ratio": factor * smd, "variance": factor**2 * variance}
     inputs: dict[str, float | str] = {"smd": smd, "variance": variance}
-    return record("log-odds-ratio-from-smd", SMD_ODDS, inputs, result, origin, _LOGISTIC)
+    return record("log-odds-ratio-from-smd", SMD_ODDS, inputs, result, origin, _LOGISTIC, trial=trial)
 
 
 def smd_from_log_odds_ratio(
@@ -230,7 +234,7 @@ def smd_from_log_odds_ratio(
     factor = math.sqrt(3) / math.pi
     result = {"smd": factor * log_odds_ratio, "variance": factor**2 * variance}
     inputs: dict[str, float | str] = {"log_odds_ratio": log_odds_ratio, "variance": variance}
-    return record("smd-from-log-odds-ratio", SMD_ODDS, inputs, result, origin, _LOGISTIC)
+    return record("smd-from-log-odds-ratio", SMD_ODDS, inputs, result, origin, _LOGISTIC, trial=trial)
 
 
 _LOGISTIC = (
@@ -256,9 +260,12 @@ def _z(p_value: float, method: str, trial: str | None) -> float:
     need_probability("p_value", p_value, trial)
     _known_method(method, trial)
     if method == "exact":
-        return float(norm.isf(p_value / 2))
-    # Altman and Bland 2011, from memory.
-    return -0.862 + math.sqrt(0.743 - 2.404 * math.log(p_value))
+        z = float(norm.isf(p_value / 2))
+    else:  # Altman and Bland 2011, from memory.
+        z = -0.862 + math.sqrt(0.743 - 2.404 * math.log(p_value))
+    within = 0 < z < math.inf  # the approximation turns negative just below P = 1
+    need(within, "p_value", p_value, "gives no z by this method", "a P value not so near 0 or 1", trial)
+    return z
 
 
 def _p(z: float, method: str, trial: str | None) -> float:
@@ -269,7 +276,9 @@ def _p(z: float, method: str, trial: str | None) -> float:
 
 def _level_z(level: float, trial: str | None) -> float:
     need_probability("level", level, trial)
-    return float(norm.isf((1 - level) / 2))
+    z = float(norm.isf((1 - level) / 2))
+    need(0 < z < math.inf, "level", level, "gives no quantile", "a level such as 0.95", trial)
+    return z
 
 
 def _on_scale(field: str, value: float, scale: str, trial: str | None) -> float:
@@ -282,4 +291,6 @@ def _on_scale(field: str, value: float, scale: str, trial: str | None) -> float:
 
 
 def _off_scale(value: float, scale: str) -> float:
-    return math.exp(value) if scale == "log" else value
+    if scale != "log":
+        return value
+    return math.exp(value) if value < _LARGEST_LOG else math.inf  # refused as a result that is not finite

@@ -67,7 +67,7 @@ def paired_mean_difference(
         "variance": spread**2 / total,
         "sd_of_differences": spread,
     }
-    return record("paired-mean-difference", ELBOURNE, inputs, result, origin)
+    return record("paired-mean-difference", ELBOURNE, inputs, result, origin, trial=trial)
 
 
 def paired_standardized_mean_difference(
@@ -109,7 +109,7 @@ def paired_standardized_mean_difference(
     d = (intervention_mean - comparator_mean) / math.sqrt((intervention_sd**2 + comparator_sd**2) / 2)
     inputs = _inputs(intervention_mean, intervention_sd, comparator_mean, comparator_sd, total, correlation)
     result = {"estimate": d, "variance": (1 / total + d**2 / (2 * total)) * 2 * (1 - correlation)}
-    return record("paired-standardized-mean-difference", ELBOURNE, inputs, result, origin)
+    return record("paired-standardized-mean-difference", ELBOURNE, inputs, result, origin, trial=trial)
 
 
 def paired_log_odds_ratio(
@@ -144,15 +144,15 @@ def paired_log_odds_ratio(
     AnalysisError
         If a count is below zero, or nobody or everybody had the event under a treatment.
     """
-    cells: dict[str, float | str] = {
+    cells: dict[str, float] = {
         "both": both,
         "intervention_only": intervention_only,
         "comparator_only": comparator_only,
         "neither": neither,
     }
     for field, value in cells.items():
-        need_finite(trial, **{field: float(value)})
-        need(float(value) >= 0, field, value, "is below zero", "0 or more", trial)
+        need_finite(trial, **{field: value})
+        need(value >= 0, field, value, "is below zero", "0 or more", trial)
     n = both + intervention_only + comparator_only + neither
     need_positive(trial, total=n)
     p1, p2 = (both + intervention_only) / n, (both + comparator_only) / n
@@ -162,7 +162,7 @@ def paired_log_odds_ratio(
     variance = (1 / spread1 + 1 / spread2 - 2 * (both / n - p1 * p2) / (spread1 * spread2)) / n
     need(variance > 0, "intervention_only, comparator_only", 0, "nobody differs", "some who differ", trial)
     result = {"estimate": math.log(p1 / (1 - p1)) - math.log(p2 / (1 - p2)), "variance": variance}
-    return record("paired-log-odds-ratio", BECKER, cells, result, origin)
+    return record("paired-log-odds-ratio", BECKER, dict(cells), result, origin, trial=trial)
 
 
 def sd_of_differences(
@@ -190,6 +190,7 @@ def sd_of_differences(
         If an input cannot be right.
     """
     need_positive(trial, intervention_sd=intervention_sd, comparator_sd=comparator_sd)
+    need_finite(trial, correlation=correlation)
     inside = -1 < correlation < 1
     need(inside, "correlation", correlation, "is not between -1 and 1", "a correlation", trial)
     return math.sqrt(

@@ -54,7 +54,7 @@ def sd_from_standard_error(
     need_people(trial, total=total)
     inputs: dict[str, float | str] = {"standard_error": standard_error, "total": total}
     result = {"sd": standard_error * math.sqrt(total)}
-    return record("sd-from-standard-error", f"{HANDBOOK}.2", inputs, result, origin)
+    return record("sd-from-standard-error", f"{HANDBOOK}.2", inputs, result, origin, trial=trial)
 
 
 def sd_from_interval(
@@ -103,7 +103,7 @@ def sd_from_interval(
         "distribution": distribution,
     }
     result = {"sd": error * math.sqrt(total), "standard_error": error, "quantile": value}
-    return record("sd-from-interval", f"{HANDBOOK}.2", inputs, result, origin)
+    return record("sd-from-interval", f"{HANDBOOK}.2", inputs, result, origin, trial=trial)
 
 
 def quantile(level: float, freedom: float, distribution: str, trial: str | None) -> float:
@@ -134,7 +134,9 @@ def quantile(level: float, freedom: float, distribution: str, trial: str | None)
     known = distribution in ("t", "normal")
     need(known, "distribution", distribution, "is unknown", "t or normal", trial)
     tail = (1 - level) / 2
-    return float(t.isf(tail, freedom) if distribution == "t" else norm.isf(tail))
+    value = float(t.isf(tail, freedom) if distribution == "t" else norm.isf(tail))
+    need(0 < value < math.inf, "level", level, "gives no quantile", "a level such as 0.95", trial)
+    return value
 
 
 def half_width(low: float, high: float, trial: str | None) -> float:

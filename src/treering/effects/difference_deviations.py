@@ -207,6 +207,8 @@ def sd_from_p(
     need_probability("p_value", p_value, trial)
     need_people(trial, intervention_total=intervention_total, comparator_total=comparator_total)
     t_value = float(t.isf(p_value / 2, intervention_total + comparator_total - 2))
+    # The quantile leaves the range of numbers where P is next to nothing.
+    need(0 < t_value < math.inf, "p_value", p_value, "gives no t value", "an ordinary P value", trial)
     error = abs(mean_difference) / t_value
     inputs: dict[str, float | str] = {"mean_difference": mean_difference, "p_value": p_value}
     return _common_sd(
@@ -235,10 +237,11 @@ def _common_sd(
     inputs = {**inputs, "intervention_total": first, "comparator_total": second}
     result = {"sd": error / math.sqrt(1 / first + 1 / second), **extra}
     remarks = ("One SD is assumed for both arms.",)
-    return record(formula, f"{HANDBOOK}.3", inputs, result, origin, remarks)
+    return record(formula, f"{HANDBOOK}.3", inputs, result, origin, remarks, trial=trial)
 
 
 def _not_null(trial: str | None, **fields: float) -> None:
     need_finite(trial, **fields)
     for field, value in fields.items():
         need(value != 0, field, value, "is zero and gives no SD", "another reported figure", trial)
+        need_positive(trial, **{field: abs(value)})

@@ -11,6 +11,8 @@ from treering.effects.rows import BoolArray, FloatArray, IntArray, Rows, refuse
 # half of it the printed digits are too coarse to yield a standard error. Ratios are customarily printed with
 # two decimals (common practice, no source); with fewer, a fault is likelier than such a chance of rounding.
 COARSEST, COARSEST_RATIO = 0.5, 0.25
+# The same for an estimate printed with fewer decimals than its limits, 0.67 (0.455 to 0.983).
+COARSEST_ESTIMATE = 0.1
 _FLOAT_NOISE = 1e-6
 _MOST_DECIMALS = 12
 
@@ -21,7 +23,8 @@ def check_interval(rows: Rows, *, log_scale: bool) -> None:
     An interval taken as the estimate plus and minus a multiple of its standard error is symmetric on the
     scale of the analysis. Printed figures are rounded, so a gap between the estimate and the middle of the
     limits is accepted if rounding of the printed digits can explain it and it stays within half of the
-    half-width, or a quarter for a ratio printed with fewer than two decimals.
+    half-width, or a quarter for a ratio printed with fewer than two decimals, or a tenth if only an estimate
+    printed with fewer decimals than its limits explains it.
 
     Parameters
     ----------
@@ -65,20 +68,26 @@ def _symmetric(estimate: FloatArray, low: FloatArray, high: FloatArray, *, log_s
     def scale(x: FloatArray) -> FloatArray:
         return np.log(x) if log_scale else x
 
-    decimals = np.maximum(printed_decimals(low), printed_decimals(high))
-    if log_scale:  # a ratio below 10 has a decimal at least; 2 (1 to 5) is no rounding to integers
-        decimals = np.maximum(decimals, np.where(estimate < 10, 1, 0))
+    # A ratio below 10 has a decimal at least; 2 (1 to 5) is no rounding to integers.
+    fewest = np.where((estimate < 10) & log_scale, 1, 0)
+    own = np.maximum(printed_decimals(estimate), fewest)
+    decimals = np.maximum(np.maximum(printed_decimals(low), printed_decimals(high)), fewest)
     half = _half_unit(decimals)
-    half_estimate = _half_unit(np.maximum(decimals, printed_decimals(estimate)))
     middle_low = (scale(low - half) + scale(high - half)) / 2
     middle_high = (scale(low + half) + scale(high + half)) / 2
-    explained = (scale(estimate - half_estimate) <= middle_high) & (
-        scale(estimate + half_estimate) >= middle_low
-    )
     gap = np.abs(scale(estimate) - (scale(low) + scale(high)) / 2)
     width = (scale(high) - scale(low)) / 2
+    # All three figures at the very edge of their rounding is no explanation: 1 (0 to 4) cannot come of it.
+    edge = _FLOAT_NOISE * width
+
+    def explained(decimals_of_estimate: IntArray, coarsest: FloatArray | float) -> BoolArray:
+        reach = _half_unit(decimals_of_estimate)
+        meets = (scale(estimate - reach) < middle_high - edge) & (scale(estimate + reach) > middle_low + edge)
+        return np.asarray(meets & (gap <= coarsest * width))
+
     coarsest = np.where((decimals < 2) & log_scale, COARSEST_RATIO, COARSEST)
-    return (gap <= _FLOAT_NOISE * width) | (explained & (gap <= coarsest * width))
+    alike = explained(np.maximum(decimals, own), coarsest)
+    return (gap <= edge) | alike | explained(own, COARSEST_ESTIMATE)
 
 
 def printed_decimals(values: FloatArray) -> IntArray:

@@ -61,10 +61,11 @@ def combine_binary(
     _same_length(trial, events=events, totals=totals)
     for event, total in zip(events, totals, strict=True):
         need_positive(trial, total=total)
+        need_finite(trial, events=event)
         need(0 <= event <= total, "events", event, "is not from 0 to the total", f"0 to {total}", trial)
     inputs = {**_numbered("events", events), **_numbered("total", totals)}
     result = {"events": float(sum(events)), "total": float(sum(totals))}
-    return record("combine-arms-binary", COMBINE, inputs, result, origin)
+    return record("combine-arms-binary", COMBINE, inputs, result, origin, trial=trial)
 
 
 def combine_continuous(
@@ -109,7 +110,7 @@ def combine_continuous(
     between = sum(n * (m - mean) ** 2 for n, m in zip(totals, means, strict=True))
     inputs = {**_numbered("mean", means), **_numbered("sd", sds), **_numbered("total", totals)}
     result = {"mean": mean, "sd": math.sqrt((within + between) / (whole - 1)), "total": whole}
-    return record("combine-arms-continuous", COMBINE, inputs, result, origin)
+    return record("combine-arms-continuous", COMBINE, inputs, result, origin, trial=trial)
 
 
 def split_shared_comparator(

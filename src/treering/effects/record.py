@@ -4,10 +4,13 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from numbers import Real
 
 from treering.errors import AnalysisError
 
 NOT_STATED = "not stated"
+# Beyond these sizes a square or a ratio of squares leaves the range of floating-point numbers.
+_LARGEST, _SMALLEST = 1e75, 1e-75
 
 
 @dataclass(frozen=True)
@@ -60,6 +63,8 @@ def record(
     result: dict[str, float],
     origin: str,
     remarks: tuple[str, ...] = (),
+    *,
+    trial: str | None = None,
 ) -> Conversion:
     """Make a record, refusing a result that is not finite.
 
@@ -73,6 +78,8 @@ def record(
         Where the inputs stand in the report.
     remarks : tuple of str
         What a reader must know.
+    trial : str, optional
+        Trial concerned, for messages.
 
     Returns
     -------
@@ -85,9 +92,10 @@ def record(
         If a result is infinite or NaN.
     """
     for name, value in result.items():
-        need(math.isfinite(value), name, value, "the result is not finite", "inputs of ordinary size")
+        need(math.isfinite(value), name, value, "the result is not finite", "inputs of ordinary size", trial)
     pairs = tuple((name, float(value)) for name, value in result.items())
-    return Conversion(formula, tuple(inputs.items()), pairs, origin, citation, remarks)
+    given = tuple((name, value if isinstance(value, str) else float(value)) for name, value in inputs.items())
+    return Conversion(formula, given, pairs, origin, citation, remarks)
 
 
 def need(
@@ -118,7 +126,7 @@ def need(
 
 
 def need_positive(trial: str | None = None, **fields: float) -> None:
-    """Refuse inputs that are not finite and above zero.
+    """Refuse inputs that are not finite and above zero, or too small or large to compute with.
 
     Parameters
     ----------
@@ -133,12 +141,14 @@ def need_positive(trial: str | None = None, **fields: float) -> None:
         Naming the trial, if given, and the field.
     """
     for field, value in fields.items():
+        _need_number(field, value, trial)
         ok = math.isfinite(value) and value > 0
         need(ok, field, value, "is not finite and above zero", "a value above zero", trial)
+        _need_ordinary(field, value, trial, smallest=_SMALLEST)
 
 
 def need_finite(trial: str | None = None, **fields: float) -> None:
-    """Refuse inputs that are not finite.
+    """Refuse inputs that are not finite, or too large to compute with.
 
     Parameters
     ----------
@@ -153,7 +163,9 @@ def need_finite(trial: str | None = None, **fields: float) -> None:
         Naming the trial, if given, and the field.
     """
     for field, value in fields.items():
+        _need_number(field, value, trial)
         need(math.isfinite(value), field, value, "is not finite", "a finite number", trial)
+        _need_ordinary(field, value, trial)
 
 
 def need_people(trial: str | None = None, **fields: float) -> None:
@@ -172,8 +184,10 @@ def need_people(trial: str | None = None, **fields: float) -> None:
         Naming the trial, if given, and the field.
     """
     for field, value in fields.items():
+        _need_number(field, value, trial)
         ok = math.isfinite(value) and value > 1
         need(ok, field, value, "admits no SD", "two participants or more", trial)
+        _need_ordinary(field, value, trial)
 
 
 def need_probability(field: str, value: float, trial: str | None = None) -> None:
@@ -193,4 +207,15 @@ def need_probability(field: str, value: float, trial: str | None = None) -> None
     AnalysisError
         Naming the trial, if given, and the field.
     """
+    _need_number(field, value, trial)
     need(0 < value < 1, field, value, "is not between 0 and 1", "a value between 0 and 1", trial)
+
+
+def _need_number(field: str, value: object, trial: str | None) -> None:
+    real = isinstance(value, Real) and not isinstance(value, bool)
+    need(real, field, repr(value), "is not a number", "a plain number", trial)
+
+
+def _need_ordinary(field: str, value: float, trial: str | None, smallest: float = 0.0) -> None:
+    ordinary = smallest <= abs(float(value)) <= _LARGEST
+    need(ordinary, field, value, "is too small or large to compute with", "an ordinary size", trial)

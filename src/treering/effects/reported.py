@@ -143,10 +143,9 @@ def ratio_from_p(rows: Rows) -> Effects:
     """
     checks.positive(rows, "estimate")
     probability(rows)
-    at_null = (rows["estimate"] == 1) | (rows["p_value"] == 1)
-    refuse(
-        at_null, rows.labels, "p_value", rows["p_value"], "no effect: gives no SE", "an interval or events"
-    )
+    for field in ("estimate", "p_value"):
+        at_null = rows[field] == 1
+        refuse(at_null, rows.labels, field, rows[field], "no effect: gives no SE", "an interval or events")
     estimate = np.log(rows["estimate"])
     return Effects.plain(estimate, (estimate / norm.isf(rows["p_value"] / 2)) ** 2)
 

@@ -131,7 +131,9 @@ def mean_and_sd_from_summary(
     sources = f"mean: {LUO if mean_method == 'luo' else WAN}; SD: {WAN}; skewness: {SHI}"
     remarks = (f"Skewed at the 5% level ({SHI}): a mean and SD do not describe these data well.",)
     name = f"mean-{mean_method}-sd-wan-{scenario}"
-    return record(name, sources, _inputs(summary), result, origin, remarks if skew.skewed else ())
+    return record(
+        name, sources, _inputs(summary), result, origin, remarks if skew.skewed else (), trial=trial
+    )
 
 
 def skewness_check(
@@ -192,7 +194,7 @@ def expected_range(total: int) -> float:
     AnalysisError
         If the sample is smaller than two.
     """
-    need_people(total=float(total))
+    need_people(total=total)
 
     def missed(x: float) -> float:
         return float(-math.expm1(total * log_ndtr(x)) - math.exp(total * log_ndtr(-x)))
@@ -234,8 +236,10 @@ def _check(summary: _Summary, trial: str | None) -> None:
         "range or quartiles",
         trial,
     )
+    need_finite(trial, median=summary.median)
+    read = {name: value for name, value in vars(summary).items() if value is not None and name != "total"}
+    need_finite(trial, **read)
     given = {name: float(value) for name, value in _inputs(summary).items() if name != "total"}
-    need_finite(trial, **given)
     values = list(given.values())
     names = list(given)
     for before, name in itertools.pairwise(names):

@@ -142,9 +142,7 @@ def effect_sizes(
     known = _known_measure(measure)
     rule = checks.known_correction(correction)
     size = checks.known_amount(amount)
-    table = pd.DataFrame(table)
-    if table.empty:
-        raise AnalysisError("The table holds no trial.", expected="one row or more")
+    table = _as_table(table)
     labels = checks.trial_labels(table)
     routes = _open_routes(table, known)
     values = _read(table, routes, labels)
@@ -180,6 +178,17 @@ def usable(
     return kept
 
 
+def _as_table(table: object) -> pd.DataFrame:
+    try:
+        frame: pd.DataFrame = pd.DataFrame(table)  # type: ignore[call-overload]  # whatever came is tried
+    except (ValueError, TypeError):
+        kind = type(table).__name__
+        raise AnalysisError("The input is no table.", found=kind, expected="a row for each trial") from None
+    if len(frame) == 0:
+        raise AnalysisError("The table holds no trial.", expected="one row or more")
+    return frame
+
+
 def _known_measure(measure: str) -> Measure:
     try:
         return Measure(measure)
@@ -192,8 +201,9 @@ def _open_routes(table: pd.DataFrame, measure: Measure) -> tuple[Route, ...]:
     found = tuple(route for route in ROUTES[measure] if set(route.columns) <= set(table.columns))
     if found:
         return found
-    first = min(ROUTES[measure], key=lambda route: len(set(route.columns) - set(table.columns)))
-    missing = [field for field in first.columns if field not in table.columns]
+    present = [np.mean([field in table.columns for field in route.columns]) for route in ROUTES[measure]]
+    nearest = ROUTES[measure][int(np.argmax(present))]
+    missing = [field for field in nearest.columns if field not in table.columns]
     ways = "; or ".join(" ".join(route.columns) for route in ROUTES[measure])
     raise AnalysisError(f"{missing[0]}: the column is missing for measure {measure}.", expected=ways)
 
@@ -215,12 +225,13 @@ def _read(table: pd.DataFrame, routes: tuple[Route, ...], labels: TextArray) -> 
 
 def _signs(table: pd.DataFrame, labels: TextArray) -> FloatArray:
     """Read the arm with the lower hazard as a sign of the log hazard ratio."""
-    words = table["lower_hazard"]
-    signs = words.map({"intervention": -1.0, "comparator": 1.0}).to_numpy(dtype=float, na_value=np.nan)
-    unknown = np.isnan(signs) & words.notna().to_numpy()
-    arms = " or ".join(checks.ARMS)
-    refuse(unknown, labels, "lower_hazard", words.to_numpy(dtype=object), "names no arm", arms)
-    return np.asarray(signs)
+    column = checks.column(table, "lower_hazard")
+    words = column.to_numpy(dtype=object)
+    known = {"intervention": -1.0, "comparator": 1.0}
+    signs = np.array([known.get(word, np.nan) if isinstance(word, str) else np.nan for word in words])
+    unknown = np.isnan(signs) & column.notna().to_numpy()
+    refuse(unknown, labels, "lower_hazard", words, "names no arm", " or ".join(checks.ARMS))
+    return signs
 
 
 def _by_route(
@@ -239,7 +250,7 @@ def _by_route(
         if not full.any():
             continue
         part = {field: values[field][full] for field in (*route.columns, "ci_level")}
-        with np.errstate(over="ignore", under="ignore", invalid="ignore"):
+        with np.errstate(all="ignore"):
             effects = route.compute(Rows(part, labels[full], correction, amount))
         out.estimate[full], out.variance[full] = effects.estimate, effects.variance
         out.reason[full], out.corrected[full] = effects.reason, effects.corrected
@@ -255,7 +266,8 @@ def _all_taken(
     if not left.any():
         return
     at = int(np.argmax(left))
-    nearest = min(routes, key=lambda route: sum(np.isnan(values[field][at]) for field in route.columns))
+    present = [np.mean([not np.isnan(values[field][at]) for field in route.columns]) for route in routes]
+    nearest = routes[int(np.argmax(present))]
     field = next(field for field in nearest.columns if np.isnan(values[field][at]))
     here = np.arange(len(labels)) == at
     refuse(here, labels, field, lambda _: "nothing", "is missing", " ".join(nearest.columns))

@@ -12,7 +12,7 @@ from __future__ import annotations
 import numpy as np
 from scipy.stats import norm
 
-from treering.effects import reported
+from treering.effects import checks, reported
 from treering.effects.rows import Effects, FloatArray, Rows, refuse
 
 
@@ -61,9 +61,15 @@ def log_rank_variance(intervention_events: FloatArray, comparator_events: FloatA
     -------
     ndarray
         V, in events.
+
+    Raises
+    ------
+    AnalysisError
+        If events are not finite and above zero.
     """
-    first, second = np.asarray(intervention_events, dtype=float), np.asarray(comparator_events, dtype=float)
-    return np.asarray(first * second / (first + second))
+    first = checks.figures("intervention_events", intervention_events)
+    second = checks.figures("comparator_events", comparator_events)
+    return np.asarray(first * (second / (first + second)))
 
 
 def log_rank_variance_by_allocation(
@@ -85,9 +91,15 @@ def log_rank_variance_by_allocation(
     -------
     ndarray
         V, in events.
+
+    Raises
+    ------
+    AnalysisError
+        If a number is not finite and above zero.
     """
-    r1, r2 = np.asarray(intervention_total, dtype=float), np.asarray(comparator_total, dtype=float)
-    return np.asarray(np.asarray(events, dtype=float) * r1 * r2 / (r1 + r2) ** 2)
+    r1 = checks.figures("intervention_total", intervention_total)
+    r2 = checks.figures("comparator_total", comparator_total)
+    return np.asarray(checks.figures("events", events) * (r1 / (r1 + r2)) * (r2 / (r1 + r2)))
 
 
 def from_log_rank_p(rows: Rows) -> Effects:
