@@ -173,3 +173,9 @@ def test_measures_that_are_not_of_counts_are_refused(trials):
 def test_peto_refuses_tables_without_any_event():
     with pytest.raises(AnalysisError, match="no odds ratio"):
         pool_peto(table([[0, 10, 0, 12]]))
+
+
+@pytest.mark.parametrize("table", [None, {"intervention_events": [1]}, np.ones((2, 4))])
+def test_counts_that_are_no_table_are_refused(table):
+    with pytest.raises(AnalysisError, match="must be a DataFrame"):
+        pool_peto(table)

@@ -89,3 +89,11 @@ def test_a_single_trial_cannot_be_left_out():
 def test_an_order_with_a_gap_is_refused():
     with pytest.raises(AnalysisError, match="order"):
         cumulative([0.1, 0.2], [1, 1], order=[2001, np.nan])
+
+
+def test_a_gap_among_dates_is_refused_by_trial():
+    dates = pd.to_datetime(["2020-01-01", None, "2019-01-01"])
+    with pytest.raises(AnalysisError, match="trial Baker: order"):
+        cumulative(pd.Series([1, 2, 3], index=["Abel", "Baker", "Cole"]), [1, 1, 1], order=dates)
+    whole = cumulative([1, 2, 3], [1, 1, 1], order=dates.fillna(pd.Timestamp("2021-01-01")))
+    assert list(whole.index) == [3, 1, 2]

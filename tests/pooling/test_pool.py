@@ -421,7 +421,18 @@ def test_estimates_without_spread_leave_the_plain_knapp_hartung_test_open_and_sa
         (pd.Series([0.1, 0.2], index=["Abel", "Baker"]), [1, -1], "trial Baker: variance"),
         ([], [], "no trial"),
         ([0.1, 0.2], [1], "length"),
-        (["x"], [1], "numbers"),
+        (["x"], [1], "trial 1: estimates must be numbers"),
+        ([0.1, None], [1, 1], "trial 2: estimate"),
+        ([0.1, 0.2], [True, True], "trial 1: variances must be numbers"),
+        (pd.Series([0.1, pd.NA], index=["Abel", "Baker"], dtype="Float64"), [1, 1], "trial Baker: estimate"),
+        ([0.1, 0.2], pd.Series([1, "x"], index=["Abel", "Baker"]), "trial Baker: variances must be numbers"),
+        (np.array([1 + 1j, 2]), [1, 1], "trial 1: estimates must be numbers"),
+        ([10**400, 1], [1, 1], "trial 1: estimates must be numbers"),
+        (np.ma.array([0.1, 0.2], mask=[False, True]), [1, 1], "trial 2: estimate"),
+        (pd.to_datetime(["2020-01-01", "2021-01-01"]), [1, 1], "numbers"),
+        ([[0.1], [0.2, 0.3]], [1, 1], "one list of numbers"),
+        (None, None, "one list of numbers"),
+        (pd.Series([0.1, 0.2], index=["A", "B"]), pd.Series([1, 2], index=["B", "A"]), "another order"),
         ([1e200, -1e200], [1e-300, 1e-300], "too large or too small"),
     ],
 )
@@ -436,9 +447,43 @@ def test_an_unknown_option_is_refused_by_name(option):
         pool([0.1, 0.2], [1, 1], **{option: 7 if option == "level" else "DL"})
 
 
-def test_a_trial_without_a_group_is_refused():
-    with pytest.raises(AnalysisError, match="group"):
+@pytest.mark.parametrize("level", ["0.9", None, [0.9], np.array([0.9, 0.95]), True, np.nan])
+def test_a_level_that_is_no_fraction_is_refused(level):
+    with pytest.raises(AnalysisError, match="level"):
+        pool([0.1, 0.2], [1, 1], level=level)
+
+
+def test_a_trial_without_a_group_is_refused_by_name():
+    with pytest.raises(AnalysisError, match="trial 2: group"):
         pool_many([0.1, 0.2], [1, 1], ["a", None])
+    with pytest.raises(AnalysisError, match="trial Baker: group"):
+        pool_many(pd.Series([0.1, 0.2], index=["Abel", "Baker"]), [1, 1], [1, np.nan])
+
+
+@pytest.mark.parametrize("groups", ["ab", None, {"a": 1, "b": 2}, [["a"], ["b"]], [{1}, {2}], np.eye(2)])
+def test_groups_that_are_no_list_of_names_are_refused(groups):
+    with pytest.raises(AnalysisError, match="groups"):
+        pool_many([0.1, 0.2], [1, 1], groups)
+
+
+def test_groups_may_be_pairs_or_of_mixed_kinds():
+    assert pool_many([0.1, 0.2, 0.3], [1, 1, 1], [("a", 1), ("b", 1), ("a", 1)])["k"].tolist() == [2, 1]
+    assert pool_many([0.1, 0.2, 0.3], [1, 1, 1], [1, "1", 1])["k"].tolist() == [2, 1]
+
+
+def test_groups_listed_in_another_order_than_the_estimates_are_refused():
+    with pytest.raises(AnalysisError, match="another order"):
+        pool_many(pd.Series([0.1, 0.2]), [1, 1], pd.Series(["a", "b"], index=[1, 0]))
+
+
+def test_diversity_without_between_trial_variance_is_exactly_zero_in_bulk():
+    rng = np.random.default_rng(11)
+    y, v = rng.normal(0, 0.5, 4000), rng.uniform(0.1, 2, 4000)
+    y[:4], v[:4] = [-5, 5, -4, 4], 0.1  # one synthesis with tau2, so that the others are summed again
+    many = pool_many(y, v, np.repeat(np.arange(1000), 4))
+    assert (many["tau2"] == 0).any()
+    assert (many["tau2"] > 0).any()
+    assert (many["d2"][many["tau2"] == 0] == 0).all()
 
 
 def test_a_lone_trial_among_many_syntheses_says_that_its_interval_is_the_ordinary_one():

@@ -15,7 +15,8 @@ import math
 from dataclasses import dataclass
 
 from treering.errors import AnalysisError
-from treering.pooling.checks import ArrayLike, check_effects, check_level, choose
+from treering.pooling.arrays import ArrayLike
+from treering.pooling.checks import check_effects, check_level, choose
 from treering.pooling.posterior import Mixture, integrate_tau, mixtures, tau_quantiles
 from treering.pooling.priors import EMPIRICAL_PRIORS, TauPrior, tau_prior
 from treering.terms import Better

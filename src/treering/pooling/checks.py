@@ -8,17 +8,17 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from enum import StrEnum
+from numbers import Real
 from typing import Any, TypeVar
 
 import numpy as np
-import numpy.typing as npt
 import pandas as pd
 
 from treering.errors import AnalysisError
+from treering.pooling.arrays import ArrayLike, numbers, same_trials, trial_labels
 from treering.pooling.result import FloatArray
 
 Choice = TypeVar("Choice", bound=StrEnum)
-ArrayLike = npt.ArrayLike | pd.Series
 
 
 def choose(kind: type[Choice], value: str, field: str) -> Choice:
@@ -46,33 +46,9 @@ def check_level(level: float) -> float:
     AnalysisError
         The level is not between 0 and 1.
     """
-    if not 0.0 < level < 1.0:
+    if isinstance(level, bool) or not isinstance(level, Real) or not 0.0 < level < 1.0:
         raise AnalysisError("level is a fraction between 0 and 1.", found=level, expected="for example 0.95")
     return float(level)
-
-
-def trial_labels(values: object, count: int) -> Sequence[object]:
-    """Labels of the trials: the pandas index, or 1, 2, ... for plain lists."""
-    if isinstance(values, (pd.Series, pd.DataFrame)):
-        return list(values.index)
-    return range(1, count + 1)
-
-
-def numbers(values: ArrayLike, field: str) -> FloatArray:
-    """Values as a one-dimensional float array.
-
-    Raises
-    ------
-    AnalysisError
-        The values are not numbers or not one-dimensional.
-    """
-    try:
-        array = np.asarray(values, dtype=np.float64)
-    except (TypeError, ValueError) as error:
-        raise AnalysisError(f"{field} must be numbers.", found=str(error)) from error
-    if array.ndim != 1:
-        raise AnalysisError(f"{field} must be one list of numbers.", found=f"{array.ndim} dimensions")
-    return array
 
 
 def refuse_first(bad: Any, values: FloatArray, labels: Sequence[object], message: str, expected: str) -> None:
@@ -98,9 +74,11 @@ def check_effects(estimates: ArrayLike, variances: ArrayLike) -> tuple[FloatArra
     Raises
     ------
     AnalysisError
-        No trial, lengths differ, an estimate is not finite, a variance is not finite or not above zero.
+        No trial, lengths differ, an estimate is not finite, a variance is not finite or not above zero; two
+        pandas objects with the same labels in another order.
     """
-    y, v = numbers(estimates, "estimates"), numbers(variances, "variances")
+    named = estimates if isinstance(estimates, pd.Series) else variances
+    y, v = numbers(estimates, "estimates", named), numbers(variances, "variances", named)
     if y.size != v.size:
         raise AnalysisError(
             "estimates and variances differ in length.",
@@ -109,8 +87,9 @@ def check_effects(estimates: ArrayLike, variances: ArrayLike) -> tuple[FloatArra
         )
     if y.size == 0:
         raise AnalysisError("There is no trial to pool.", found=0, expected="at least one trial")
+    same_trials(estimates, variances, "estimates and variances")
     if not (np.isfinite(y).all() and np.isfinite(v).all() and (v > 0).all()):
-        _name_bad_trial(y, v, trial_labels(estimates, y.size))
+        _name_bad_trial(y, v, trial_labels(named, y.size))
     return y, v
 
 

@@ -92,6 +92,12 @@ def read_counts(
 
 
 def _rows(table: pd.DataFrame, correction: str = "none", amount: float = 0.5) -> Rows:
+    if not isinstance(table, pd.DataFrame):
+        raise AnalysisError(
+            "The table of counts must be a DataFrame.",
+            found=type(table).__name__,
+            expected="a DataFrame with the columns " + ", ".join(COUNTS),
+        )
     if len(table) == 0:
         raise AnalysisError("There is no trial to pool.", found=0, expected="at least one trial")
     return count_rows(table, known_correction(correction), known_amount(amount))

@@ -12,8 +12,9 @@ import numpy.typing as npt
 import pandas as pd
 
 from treering.errors import AnalysisError
+from treering.pooling.arrays import ArrayLike, numbers, same_trials, trial_labels
 from treering.pooling.batch import from_mask, single, spans
-from treering.pooling.checks import ArrayLike, check_effects, numbers, trial_labels
+from treering.pooling.checks import check_effects
 from treering.pooling.columns import Columns, join
 from treering.pooling.inverse_variance import pool_checked
 from treering.pooling.kernel import Options
@@ -78,7 +79,7 @@ def cumulative(
     ----------
     estimates, variances : array_like, shape (k,)
         Trials, as for `pool`.
-    order : array_like of float, shape (k,), optional
+    order : array_like of float or dates, shape (k,), optional
         Sort key, for example the year; trials with the same key keep their order. Input order if not given.
     model, tau2, interval, level, prediction_df
         As for `pool`.
@@ -91,7 +92,7 @@ def cumulative(
     Raises
     ------
     AnalysisError
-        As for `pool`; also when `order` has another length or is not finite.
+        As for `pool`; also when `order` has another length, or a trial has none.
     """
     options = Options.read(
         model=model, tau2=tau2, interval=interval, level=level, prediction_df=prediction_df
@@ -99,16 +100,29 @@ def cumulative(
     y, v = check_effects(estimates, variances)
     labels = list(trial_labels(estimates, y.size))
     if order is not None:
-        key = numbers(order, "order")
-        if key.size != y.size or not np.isfinite(key).all():
-            raise AnalysisError(
-                "order needs one finite number for each trial.",
-                found=f"{int(np.isfinite(key).sum())} for {y.size} trials",
-            )
+        same_trials(estimates, order, "estimates and order")
+        key = _sort_key(order, labels)
         places = np.argsort(key, kind="stable")
         y, v, labels = y[places], v[places], [labels[at] for at in places]
     everyone = np.arange(y.size)[:, None]
     return _pool_selections(y, v, options, labels, lambda columns: everyone <= columns)
+
+
+def _sort_key(order: ArrayLike, labels: Sequence[object]) -> npt.NDArray[np.float64 | np.datetime64]:
+    """Numbers or dates to sort by, one for each trial."""
+    dates = np.asarray(order)
+    key = dates if dates.dtype.kind == "M" else numbers(order, "order")
+    if key.shape != (len(labels),):
+        raise AnalysisError(
+            "order and estimates differ in length.", found=f"{key.size} for {len(labels)} trials"
+        )
+    bad = np.isnat(key) if key.dtype.kind == "M" else ~np.isfinite(key)
+    if bad.any():
+        at = int(np.argmax(bad))
+        raise AnalysisError(
+            "order is missing or not finite.", trial=str(labels[at]), expected="a number or a date"
+        )
+    return key
 
 
 def _several(estimates: ArrayLike, variances: ArrayLike) -> tuple[FloatArray, FloatArray]:

@@ -12,8 +12,9 @@ import numpy.typing as npt
 import pandas as pd
 
 from treering.errors import AnalysisError
+from treering.pooling.arrays import ArrayLike, same_trials, trial_labels
 from treering.pooling.batch import Batch, IntArray, chunks, pack, single
-from treering.pooling.checks import ArrayLike, check_effects, check_finite_result
+from treering.pooling.checks import check_effects, check_finite_result
 from treering.pooling.columns import Columns, join, split_weights
 from treering.pooling.kernel import Options, pool_batch
 from treering.pooling.result import FIELDS, FloatArray, PooledEffect
@@ -156,15 +157,19 @@ def pool_many(
         model=model, tau2=tau2, interval=interval, level=level, prediction_df=prediction_df
     )
     y, v = check_effects(estimates, variances)
-    counts, names, order = _groups(groups, y.size)
+    same_trials(estimates, groups, "estimates and groups")
+    counts, names, order = _groups(groups, trial_labels(estimates, y.size))
     if order is not None:
         y, v = y[order], v[order]
     return _frame(_pool_runs(y, v, counts, options, names.tolist()), names)
 
 
-def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd.Index, IntArray | None]:
+def _groups(
+    groups: npt.ArrayLike | pd.Series, labels: Sequence[object]
+) -> tuple[IntArray, pd.Index, IntArray | None]:
     """Trials in each group, the groups, and the order that puts a group's trials together if needed."""
-    values = groups if isinstance(groups, pd.Series) else np.asarray(groups)
+    count = len(labels)
+    values = groups if isinstance(groups, pd.Series) else _flat(groups)
     if len(values) != count:
         raise AnalysisError(
             "groups and estimates differ in length.",
@@ -177,11 +182,39 @@ def _groups(groups: npt.ArrayLike | pd.Series, count: int) -> tuple[IntArray, pd
         if (heads[1:] > heads[:-1]).all():
             # Sorted whole numbers, the usual case in bulk, need no hashing.
             return ends[1:] - ends[:-1], pd.Index(heads, name="group"), None
-    codes, names = pd.factorize(values, sort=True)
+    try:
+        codes, names = pd.factorize(values, sort=True)
+    except TypeError as error:
+        raise AnalysisError(
+            "groups cannot be told apart and sorted.",
+            found=str(error),
+            expected="names or numbers",
+        ) from error
     if (codes < 0).any():
-        raise AnalysisError("group is missing.", trial=str(int(np.argmax(codes < 0)) + 1))
+        at = int(np.argmax(codes < 0))
+        raise AnalysisError(
+            "group is missing.",
+            trial=str(labels[at]),
+            found=list(values)[at],
+            expected="the synthesis it belongs to",
+        )
     order = np.argsort(codes, kind="stable") if (codes[1:] < codes[:-1]).any() else None
     return np.bincount(codes), pd.Index(names, name="group"), order
+
+
+def _flat(groups: npt.ArrayLike) -> npt.NDArray[Any]:
+    """Make groups a one-dimensional array."""
+    try:
+        # A mixed list would turn 1 and "1" into the same text; pandas keeps them apart.
+        values = np.asarray(pd.Index(groups)) if isinstance(groups, list | tuple) else np.asarray(groups)
+    except (TypeError, ValueError) as error:
+        raise AnalysisError("groups must be one list of names.", found=str(error)) from error
+    if values.ndim != 1:
+        found = type(groups).__name__ if values.ndim == 0 else f"{values.ndim} dimensions"
+        raise AnalysisError(
+            "groups must be one list of names.", found=found, expected="one group for each estimate"
+        )
+    return values
 
 
 def _pool_runs(

@@ -108,7 +108,8 @@ def pool_batch(batch: Batch, options: Options, labels: Sequence[object]) -> Colu
     columns: Columns = {"estimate": estimate, "standard_error": error}
     columns |= {"ci_low": test.low, "ci_high": test.high, "z": test.z, "p": test.p}
     columns |= {"tau2": np.where(lone, np.nan, tau2), "tau2_low": tau2_low, "tau2_high": tau2_high}
-    columns |= _heterogeneity(common, chosen, batch.k, options.level)
+    columns |= _heterogeneity(common, batch.k, options.level)
+    columns |= {"d2": _diversity(common, chosen, tau2, batch.k)}
     columns |= _prediction(estimate, chosen, tau2, batch.k, options)
     columns |= {"weights": weigh(batch.v, tau2) / chosen.total, "k": batch.k.astype(np.intp)}
     return columns | _words(columns, lone, options)
@@ -164,7 +165,7 @@ def _test(
     return error, test
 
 
-def _heterogeneity(common: AtZero, chosen: AtZero, k: FloatArray, level: float) -> Columns:
+def _heterogeneity(common: AtZero, k: FloatArray, level: float) -> Columns:
     df, q = k - 1.0, np.where(k > 1.0, common.q, 0.0)
     estimable = df > 0.0
     low, high = i2_interval(q, df, level)
@@ -177,9 +178,14 @@ def _heterogeneity(common: AtZero, chosen: AtZero, k: FloatArray, level: float) 
         "i2_low": low,
         "i2_high": high,
         "h2": np.divide(q, df, out=np.full_like(q, np.nan), where=estimable),
-        # V_common / V_random is the ratio of the sums of weights, the other way round.
-        "d2": np.where(estimable, 1.0 - chosen.total / common.total, np.nan),
     }
+
+
+def _diversity(common: AtZero, chosen: AtZero, tau2: FloatArray, k: FloatArray) -> FloatArray:
+    """1 - V_common / V_random, the ratio of the sums of weights the other way round; NaN for one trial."""
+    # Both sums at tau2 = 0 can differ in their last digit, and a diversity below zero has no meaning.
+    share = np.where(tau2 > 0.0, np.maximum(1.0 - chosen.total / common.total, 0.0), 0.0)
+    return np.where(k > 1.0, share, np.nan)
 
 
 def _prediction(

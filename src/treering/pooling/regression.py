@@ -17,7 +17,8 @@ import pandas as pd
 from scipy import stats
 
 from treering.errors import AnalysisError
-from treering.pooling.checks import ArrayLike, check_effects, check_level, choose, trial_labels
+from treering.pooling.arrays import ArrayLike, same_trials, trial_labels
+from treering.pooling.checks import check_effects, check_level, choose
 from treering.pooling.moderated import Design, WeightedFit, check_design, fit_at, q_profile, residual_tau2
 from treering.pooling.quadrature import Array
 from treering.terms import IntervalMethod, PoolingModel, Tau2
@@ -177,6 +178,7 @@ def meta_regression(
         Bad numbers (trial and field named), too few trials, covariates that determine each other.
     """
     y, v = check_effects(estimates, variances)
+    same_trials(estimates, covariates, "estimates and covariates")
     kind, method = choose(PoolingModel, model, "model"), choose(Tau2, tau2, "tau2")
     chosen, level = choose(IntervalMethod, interval, "interval"), check_level(level)
     names, x = _matrix(covariates, trial_labels(estimates, y.size))

@@ -15,7 +15,8 @@ import pandas as pd
 from scipy import special, stats
 
 from treering.errors import AnalysisError
-from treering.pooling.checks import ArrayLike, check_effects
+from treering.pooling.arrays import ArrayLike
+from treering.pooling.checks import check_effects
 from treering.pooling.counts import deviations, read_counts
 from treering.pooling.result import FloatArray
 

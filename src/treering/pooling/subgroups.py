@@ -20,7 +20,8 @@ import pandas as pd
 from scipy import stats
 
 from treering.errors import AnalysisError
-from treering.pooling.checks import ArrayLike, check_effects, check_level, choose, trial_labels
+from treering.pooling.arrays import ArrayLike, same_trials, trial_labels
+from treering.pooling.checks import check_effects, check_level, choose
 from treering.pooling.interaction import Interaction, interaction_of
 from treering.pooling.inverse_variance import pool
 from treering.pooling.moderated import Design, check_design, fit_at, residual_tau2
@@ -162,6 +163,7 @@ def subgroup_analysis(
         for a common tau2.
     """
     y, v = check_effects(estimates, variances)
+    same_trials(estimates, groups, "estimates and groups")
     trials = trial_labels(estimates, y.size)
     names, where = _positions(groups, trials)
     kind, method = choose(PoolingModel, model, "model"), choose(Tau2, tau2, "tau2")
@@ -185,7 +187,7 @@ def subgroup_analysis(
         test_name=test.name,
         q_total=q_total,
         q_within=q_within,
-        q_between=q_total - q_within,
+        q_between=max(q_total - q_within, 0.0),
         q_between_df=g - 1,
         q_within_df=y.size - g,
         q_between_p=float(stats.chi2.sf(max(q_total - q_within, 0.0), g - 1)),

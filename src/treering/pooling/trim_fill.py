@@ -14,7 +14,8 @@ import numpy as np
 from scipy import stats
 
 from treering.errors import AnalysisError, NotConvergedError
-from treering.pooling.checks import ArrayLike, check_effects
+from treering.pooling.arrays import ArrayLike
+from treering.pooling.checks import check_effects
 from treering.pooling.inverse_variance import pool
 from treering.pooling.result import FloatArray, PooledEffect
 from treering.pooling.small_study import FEW_TRIALS
