@@ -212,3 +212,31 @@ def test_unusable_input_is_refused(bcg: tuple, change: dict, options: dict, word
 def test_too_few_trials_are_refused() -> None:
     with pytest.raises(AnalysisError, match="too few trials"):
         meta_regression([0.1, 0.2], [0.1, 0.1], {"x": [1, 2]})
+
+
+@pytest.mark.parametrize("method", ["reml", "ml", "paule-mandel", "dersimonian-laird", "hedges"])
+@pytest.mark.parametrize("unit", [1e-8, 1e8])
+def test_the_unit_of_the_effects_changes_nothing_but_the_unit(method: str, unit: float) -> None:
+    y, v, x = random_trials(3)
+    one = meta_regression(y, v, x, tau2=method)
+    other = meta_regression(y * unit, v * unit**2, x, tau2=method)
+    assert one.tau2 > 0
+    found = [other.tau2 / unit**2, other.tau2_low / unit**2, other.tau2_high / unit**2, other.test_p]
+    assert found == pytest.approx([one.tau2, one.tau2_low, one.tau2_high, one.test_p], rel=1e-9)
+    assert np.array(estimates(other)) / unit == pytest.approx(estimates(one), rel=1e-9)
+
+
+def test_a_maximum_far_below_the_largest_variance_is_found() -> None:
+    # three precise trials with tau2 about 1e-9 beside two whose variances are 1e18 times theirs
+    y = np.array([0.0, 4e-5, -5e-5, 2e4, -1e4])
+    v = np.array([1e-10, 1.5e-10, 1e-10, 1e8, 2e8])
+    x = pd.DataFrame({"x": [0.0, 0.0, 0.0, 1.0, -1.0]})
+    found = meta_regression(y, v, x, tau2="ml").tau2
+    grid = np.geomspace(1e-13, 1e3, 4000)
+
+    def height(tau2: float) -> float:
+        line = sm.WLS(y, sm.add_constant(x.to_numpy()), weights=1 / (v + tau2)).fit()
+        return float(-0.5 * (np.sum(line.wresid**2) + np.sum(np.log(v + tau2))))
+
+    assert 1e-10 < found < 1e-8
+    assert height(found) >= max(height(t) for t in grid) - 1e-9

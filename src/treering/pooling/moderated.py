@@ -11,6 +11,7 @@ Sources, formulas and equation numbers are cited from memory.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -21,7 +22,8 @@ from treering.errors import AnalysisError
 from treering.pooling.quadrature import Array
 from treering.terms import Tau2
 
-_GRID = 240
+_PER_DECADE = 20
+_MOST_POINTS = 1000
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,16 +86,20 @@ def _score(design: Design, tau2: float, restricted: bool) -> tuple[float, float]
     return slope, value
 
 
+def _root(function: Callable[[float], float], low: float, high: float) -> float:
+    """Zero between two places, as good as its own size allows: tau2 may be of any size, as its unit is."""
+    return float(brentq(function, low, high, xtol=float(np.finfo(np.float64).tiny), rtol=1e-13))
+
+
 def _maximum_likelihood(design: Design, restricted: bool) -> float:
     """Global maximum over tau2 >= 0: the best of 0 and every falling zero of the score."""
     spread = float(np.var(design.y)) + float(design.v.max())
-    grid = np.concatenate([[0.0], np.geomspace(1e-9 * spread, 1e3 * spread, _GRID)])
+    low, high = min(1e-9 * spread, 1e-3 * float(design.v.min())), 1e3 * spread
+    points = min(int(_PER_DECADE * np.log10(high / low)), _MOST_POINTS)
+    grid = np.concatenate([[0.0], np.geomspace(low, high, points)])
     slopes = np.array([_score(design, t, restricted)[0] for t in grid])
     falls = np.flatnonzero((slopes[:-1] > 0) & (slopes[1:] <= 0))
-    roots = [
-        brentq(lambda t: _score(design, t, restricted)[0], grid[i], grid[i + 1], xtol=1e-14, rtol=1e-13)
-        for i in falls
-    ]
+    roots = [_root(lambda t: _score(design, t, restricted)[0], grid[i], grid[i + 1]) for i in falls]
     return float(max([0.0, *roots], key=lambda t: _score(design, t, restricted)[1]))
 
 
@@ -134,7 +140,7 @@ def solve_residual_q(design: Design, target: float) -> float:
     high = float(np.var(design.y)) + float(design.v.max())
     while fit_at(design, high).q > target:
         high *= 4
-    return float(brentq(lambda t: fit_at(design, t).q - target, 0.0, high, xtol=1e-14, rtol=1e-13))
+    return _root(lambda t: fit_at(design, t).q - target, 0.0, high)
 
 
 def residual_tau2(design: Design, method: Tau2) -> float:
