@@ -110,3 +110,60 @@ def test_equal_shares_of_an_arm_always_pass_and_one_share_more_never_does(parts,
     ]
     with pytest.raises(AnalysisError, match="beyond"):
         effects.arm_ledger(uses(*[share] * (parts + 1)).drop(columns="events"), arms)
+
+
+def joined(name="cap + mitt", parts=("cap", "mitt"), randomised=81, events=7):
+    """The arms of the trial and one that joins some of them."""
+    row = {"trial": "Alder", "arm": name, "randomised": randomised, "events": events, "joins": parts}
+    return pd.concat([ARMS.assign(joins=None), pd.DataFrame([row])], ignore_index=True)
+
+
+def test_an_arm_used_alone_and_joined_is_counted_twice_and_refused():
+    table = uses(("pain", "Alder", "cap + mitt", 81, 7), ("pain", "Alder", "cap", 40, 3))
+    with pytest.raises(AnalysisError, match="used beyond its participants") as caught:
+        effects.arm_ledger(table, joined())
+    assert "arm cap in synthesis pain" in str(caught.value)
+
+
+def test_a_joined_arm_is_charged_to_the_arms_in_it():
+    table = uses(("pain", "Alder", "cap + mitt", 81, 7), ("pain", "Alder", "usual care", 42, 6))
+    ledger = effects.arm_ledger(table, joined()).set_index("arm")
+    assert ledger.index.tolist() == ["cap", "mitt", "usual care"]
+    assert ledger["used"].tolist() == pytest.approx([40, 41, 42])
+    assert ledger["events_used"].tolist() == pytest.approx([3, 4, 6])
+
+
+def test_half_a_joined_arm_leaves_half_of_each_arm_in_it():
+    table = uses(("pain", "Alder", "cap + mitt", 40.5, 3.5), ("pain", "Alder", "cap", 20, 1.5))
+    ledger = effects.arm_ledger(table, joined()).set_index("arm")
+    assert ledger["unused"].tolist() == pytest.approx([0, 20.5])
+
+
+@pytest.mark.parametrize(
+    ("arms", "words"),
+    [
+        (joined(parts=("cap", "shawl")), "does not name single arms"),
+        (joined(parts=("cap", "cap")), "does not name single arms"),
+        (joined(parts=("cap", "cap + mitt")), "does not name single arms"),
+        (joined(parts="cap, mitt"), "is no list of arms"),
+        (joined(randomised=82), "has more people than its arms"),
+    ],
+)
+def test_a_joined_arm_that_does_not_fit_its_parts_is_refused(arms, words):
+    with pytest.raises(AnalysisError, match=f"trial Alder: joins: arm cap \\+ mitt {words}"):
+        effects.arm_ledger(uses(("pain", "Alder", "usual care", 42, 6)), arms)
+
+
+@pytest.mark.parametrize("field", ["synthesis", "trial", "arm"])
+def test_a_use_without_a_name_is_refused(field):
+    with pytest.raises(AnalysisError, match=f"{field}: is missing"):
+        effects.arm_ledger(uses(("pain", "Alder", "cap", 40, 3)).assign(**{field: None}), ARMS)
+
+
+def test_an_arm_named_by_a_number_where_the_trial_lists_words_is_unknown():
+    with pytest.raises(AnalysisError, match="is not an arm of the trial"):
+        effects.arm_ledger(uses(("pain", "Alder", 1, 40, 3)), ARMS)
+
+
+def test_a_ledger_of_no_use_is_empty():
+    assert effects.arm_ledger(uses(("pain", "Alder", "cap", 40, 3)).iloc[:0], joined()).empty

@@ -84,3 +84,17 @@ def test_an_unnamed_comparator_arm_is_refused(contrasts):
     contrasts["comparator_arm"] = ["usual care", "usual care", None]
     with pytest.raises(AnalysisError, match="trial Birch: comparator_arm: is missing"):
         effects.split_shared_comparator(contrasts)
+
+
+def test_a_shared_figure_below_zero_is_refused_before_it_is_divided():
+    table = pd.DataFrame(
+        {"trial": ["Alder", "Alder"], "comparator_arm": "usual care", "comparator_total": -40}
+    )
+    with pytest.raises(AnalysisError, match=r"trial Alder: comparator_total: is below zero. Found: -40"):
+        effects.split_shared_comparator(table)
+
+
+@pytest.mark.parametrize("arms", [3, None, "ab"])
+def test_arms_that_are_no_sequence_are_refused(arms):
+    with pytest.raises(AnalysisError, match="is no sequence"):
+        effects.combine_binary(arms, [10, 12])

@@ -10,6 +10,7 @@ import numpy as np
 import pandas as pd
 
 from treering.effects import checks
+from treering.effects.joined_arms import by_single_arms
 from treering.effects.rows import BoolArray, refuse
 from treering.errors import AnalysisError
 
@@ -29,7 +30,9 @@ def arm_ledger(uses: pd.DataFrame, arms: pd.DataFrame) -> pd.DataFrame:
         binary outcomes, ``events`` (empty elsewhere).
     arms : DataFrame
         One row for each arm: ``trial``, ``arm``, ``randomised`` and, if ``uses`` has ``events``, the arm's
-        ``events`` (empty where not known).
+        ``events`` (empty where not known). ``joins``, if there is such a column, lists for a joined arm the
+        names of the arms in it (empty elsewhere): what is used of the joined arm is then charged to these,
+        in proportion, so that nobody is counted once alone and once joined.
 
     Returns
     -------
@@ -43,14 +46,18 @@ def arm_ledger(uses: pd.DataFrame, arms: pd.DataFrame) -> pd.DataFrame:
         If a column is missing, an arm is unknown or listed twice, a figure is no count, or an arm is used
         beyond its participants or events; names the trial, the arm and the synthesis.
     """
+    uses, arms = checks.as_table(uses), checks.as_table(arms)
     with_events = "events" in uses.columns
     fields = (*ARMS, "events") if with_events else ARMS
     _need(uses, USES)
     _need(arms, fields)
-    known = _read(arms, "randomised", with_events)
+    known = _read(arms, "randomised", with_events, ARMS)
     twice = known.duplicated(["trial", "arm"]).to_numpy()
     _refuse(twice, known, "arm", "arm", "is listed twice", "one row for each arm")
-    ledger = _added_up(_read(uses, "participants", with_events), with_events)
+    used = _read(uses, "participants", with_events, USES)
+    if "joins" in known.columns:
+        known, used = by_single_arms(known, used)
+    ledger = _added_up(used, with_events)
     ledger = ledger.merge(known[list(fields)], on=["trial", "arm"], how="left", validate="many_to_one")
     _refuse(
         ledger["randomised"].isna().to_numpy(),
@@ -91,6 +98,7 @@ def arm_uses(contrasts: pd.DataFrame, synthesis: str) -> pd.DataFrame:
     AnalysisError
         If a column is missing.
     """
+    contrasts = checks.as_table(contrasts)
     _need(contrasts, ("trial", *(f"{side}_{field}" for side in checks.ARMS for field in ("arm", "total"))))
     names = {"arm": "arm", "total": "participants"}
     if {"intervention_events", "comparator_events"} <= set(contrasts.columns):
@@ -106,10 +114,14 @@ def arm_uses(contrasts: pd.DataFrame, synthesis: str) -> pd.DataFrame:
     return uses
 
 
-def _read(table: pd.DataFrame, count: str, with_events: bool) -> pd.DataFrame:
-    """Read counts as numbers from zero; participants must be there, events may be empty."""
-    labels = np.asarray(table["trial"].to_numpy(), dtype=object)
+def _read(table: pd.DataFrame, count: str, with_events: bool, fields: tuple[str, ...]) -> pd.DataFrame:
+    """Read counts as numbers from zero; names and participants must be there, events may be empty."""
+    labels = np.asarray(checks.column(table, "trial").to_numpy(), dtype=object)
     out = table.copy()
+    for field in fields:
+        if field != count:  # as objects, names of different types are simply different names
+            out[field] = checks.column(table, field).astype(object)
+            _refuse(out[field].isna().to_numpy(), out, field, field, "is missing", "a name")
     out[count] = checks.read_numbers(table, count, labels)
     _refuse(out[count].isna().to_numpy(), out, count, count, "is missing", "a count")
     for field in (count, "events") if with_events else (count,):
@@ -123,7 +135,9 @@ def _added_up(uses: pd.DataFrame, with_events: bool) -> pd.DataFrame:
     ledger = groups.agg(contrasts=("participants", "size"), used=("participants", "sum"))
     if with_events:
         ledger["events_used"] = groups["events"].sum(min_count=1)
-    return ledger.reset_index()
+    ledger = ledger.reset_index()
+    names = ["synthesis", "trial", "arm"]
+    return ledger.astype(dict.fromkeys(names, object))
 
 
 def _within(ledger: pd.DataFrame, used: str, limit: str, what: str) -> None:

@@ -18,6 +18,32 @@ from treering.terms import Correction
 ARMS = ("intervention", "comparator")
 
 
+def as_table(table: object) -> pd.DataFrame:
+    """Take what came as a table, if pandas can.
+
+    Parameters
+    ----------
+    table : object
+        A DataFrame, or what makes one, such as a mapping of columns or a list of rows.
+
+    Returns
+    -------
+    DataFrame
+        The table.
+
+    Raises
+    ------
+    AnalysisError
+        If no table can be made of it.
+    """
+    try:
+        found: pd.DataFrame = pd.DataFrame(table)  # type: ignore[call-overload]  # whatever came is tried
+    except (ValueError, TypeError):
+        kind = type(table).__name__
+        raise AnalysisError("The input is no table.", found=kind, expected="a row for each trial") from None
+    return found
+
+
 def trial_labels(table: pd.DataFrame) -> TextArray:
     """Labels for messages: the column ``trial`` if the index holds only numbers, else the index.
 
@@ -121,6 +147,33 @@ def _number(cell: object) -> float:
         return np.nan
     except OverflowError:
         return np.inf
+
+
+def read_counts(table: pd.DataFrame, field: str, labels: TextArray) -> FloatArray:
+    """Read one column of counts or person-time as floats from zero; a missing entry becomes NaN.
+
+    Parameters
+    ----------
+    table : DataFrame, k rows
+        Trials.
+    field : str
+        Column to read.
+    labels : ndarray of object, shape (k,)
+        Trial labels, for messages.
+
+    Returns
+    -------
+    ndarray, shape (k,)
+        Counts, NaN where nothing is reported.
+
+    Raises
+    ------
+    AnalysisError
+        If the column stands twice in the table, or an entry is not a finite number from zero.
+    """
+    numbers = read_numbers(table, field, labels)
+    refuse(numbers < 0, labels, field, numbers, "is below zero", "0 or more")
+    return numbers
 
 
 def counts(rows: Rows) -> None:

@@ -170,6 +170,7 @@ def effective_table(table: pd.DataFrame) -> pd.DataFrame:
     AnalysisError
         If a column is missing, only one of both figures is given, or a figure cannot be right.
     """
+    table = checks.as_table(table)
     for field in COLUMNS:
         if field not in table.columns:
             raise AnalysisError(f"{field}: the column is missing.", expected=" ".join(COLUMNS))
@@ -180,7 +181,7 @@ def effective_table(table: pd.DataFrame) -> pd.DataFrame:
     out = table.copy()
     for field in _DIVIDED:
         if field in table.columns:
-            out[field] = checks.read_numbers(table, field, labels) / effect
+            out[field] = checks.read_counts(table, field, labels) / effect
     out["design_effect"] = effect
     out.attrs["taken_as_reported"] = tuple(labels[~divisible & (wanted > 1)])
     return out
@@ -211,4 +212,7 @@ def _design_effects(table: pd.DataFrame, labels: TextArray) -> FloatArray:
     if "cluster_size_variation" in table.columns:
         variation = np.nan_to_num(checks.read_numbers(table, "cluster_size_variation", labels))
     refuse(variation < 0, labels, "cluster_size_variation", variation, "is below zero", "0 or more")
-    return np.where(single, 1.0, 1 + ((1 + variation**2) * size - 1) * icc)
+    with np.errstate(over="ignore"):
+        effect = np.where(single, 1.0, 1 + ((1 + variation**2) * size - 1) * icc)
+    refuse(np.isinf(effect), labels, COLUMNS[0], size, "gives no finite design effect", "an ordinary size")
+    return effect

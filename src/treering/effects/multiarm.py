@@ -10,7 +10,7 @@ Sources, formulas and equation numbers are cited from memory.
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Sequence, Sized
 
 import pandas as pd
 
@@ -141,15 +141,17 @@ def split_shared_comparator(
         If a column is missing, a trial or arm is not named, or rows that share an arm disagree about its
         figures.
     """
+    table = checks.as_table(table)
     _need_columns(table, trial, arm)
     labels = checks.trial_labels(table)
     for field in (trial, arm):
-        unnamed = table[field].isna().to_numpy()
+        unnamed = checks.column(table, field).isna().to_numpy()
         refuse(unnamed, labels, field, lambda _: "nothing", "is missing", "a name")
     groups = table.groupby([trial, arm], sort=False, dropna=False)
     shared = groups[arm].transform("size")
     figures = [field for field in table.columns if field.startswith("comparator_") and field != arm]
     for field in figures:
+        checks.column(table, field)
         kinds = groups[field].transform("nunique", dropna=False).to_numpy()
         found = table[field].to_numpy(dtype=object)
         refuse(
@@ -163,7 +165,7 @@ def split_shared_comparator(
     divided = table.copy()
     for field in figures:
         if field.removeprefix("comparator_") in _ADDED_UP:
-            divided[field] = checks.read_numbers(table, field, labels) / shared.to_numpy()
+            divided[field] = checks.read_counts(table, field, labels) / shared.to_numpy()
     divided["comparator_shared_by"] = shared
     return divided
 
@@ -175,6 +177,9 @@ def _need_columns(table: pd.DataFrame, *fields: str) -> None:
 
 
 def _same_length(trial: str | None, **fields: Sequence[float]) -> None:
+    for field, values in fields.items():
+        sized = isinstance(values, Sized) and not isinstance(values, str)
+        need(sized, field, repr(values), "is no sequence", "one entry an arm", trial)
     lengths = {len(values) for values in fields.values()}
     need(len(lengths) == 1, ", ".join(fields), sorted(lengths), "differ in length", "one entry an arm", trial)
     need(min(lengths) >= 2, ", ".join(fields), min(lengths), "fewer than two arms", "two arms or more", trial)

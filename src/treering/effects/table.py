@@ -142,7 +142,9 @@ def effect_sizes(
     known = _known_measure(measure)
     rule = checks.known_correction(correction)
     size = checks.known_amount(amount)
-    table = _as_table(table)
+    table = checks.as_table(table)
+    if len(table) == 0:
+        raise AnalysisError("The table holds no trial.", expected="one row or more")
     labels = checks.trial_labels(table)
     routes = _open_routes(table, known)
     values = _read(table, routes, labels)
@@ -176,17 +178,6 @@ def usable(
     kept = effects[effects["variance"].to_numpy() > 0]
     kept.attrs = dict(effects.attrs)
     return kept
-
-
-def _as_table(table: object) -> pd.DataFrame:
-    try:
-        frame: pd.DataFrame = pd.DataFrame(table)  # type: ignore[call-overload]  # whatever came is tried
-    except (ValueError, TypeError):
-        kind = type(table).__name__
-        raise AnalysisError("The input is no table.", found=kind, expected="a row for each trial") from None
-    if len(frame) == 0:
-        raise AnalysisError("The table holds no trial.", expected="one row or more")
-    return frame
 
 
 def _known_measure(measure: str) -> Measure:

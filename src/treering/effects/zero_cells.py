@@ -116,6 +116,7 @@ def count_rows(table: pd.DataFrame, correction: Correction = Correction.NONE, am
     AnalysisError
         If a column or an entry is missing, or a count cannot be right.
     """
+    table = checks.as_table(table)
     labels = checks.trial_labels(table)
     absent = [field for field in COUNTS if field not in table.columns]
     if absent:
@@ -150,6 +151,7 @@ def corrected_counts(table: pd.DataFrame, correction: str = "none", amount: floa
     AnalysisError
         If a count cannot be right, or the correction is unknown.
     """
+    table = checks.as_table(table)
     rows = count_rows(table, checks.known_correction(correction), checks.known_amount(amount))
     corrected, _ = corrected_rows(rows)
     frame = pd.DataFrame({field: corrected[field] for field in COUNTS}, index=table.index)
