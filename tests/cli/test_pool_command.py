@@ -69,7 +69,7 @@ def section(text: str, heading: str) -> list[str]:
 def test_every_part_has_its_section(pooled: Callable[..., Any], bcg: pd.DataFrame) -> None:
     options = ("--subgroup", "band", "--covariates", "latitude", "--comparator-risk", 0.02, "--mid", 0.8)
     text = pooled(bcg, "odds-ratio", *options, "--better", "lower")
-    headings = [line for line in text.splitlines()[1:] if line and not line.startswith(" ")]
+    headings = [line for line in text.splitlines()[2:] if line and not line.startswith(" ")]
     assert headings == EVERY_HEADING
     assert len(section(text, "Without")) == len(section(text, "Influence")) == 13
     assert len(section(text, "Cumulative")) == 14
@@ -265,3 +265,130 @@ def test_what_cannot_be_done_is_refused_with_the_reason(
     ran = run("pool", file, "risk-ratio", *options)
     assert (ran.status, ran.out) == (1, "")
     assert words in ran.err
+
+
+ROWS = [["A", 5, 100, 9, 100], ["B", 3, 80, 7, 82]]
+HEAD = ",".join(["trial", *COUNTS])
+PLAIN = "\n".join([HEAD, *(",".join(map(str, row)) for row in ROWS)]) + "\n"
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "\ufeff" + PLAIN,
+        PLAIN.replace(",", ";"),
+        PLAIN.replace(",", "\t"),
+        PLAIN.replace("\n", "\r\n"),
+        PLAIN.replace("\n", "\n\n") + ",,,,\n",
+        PLAIN.replace(",", " , "),
+        PLAIN.replace("intervention_events", "Intervention Events").replace("trial", "TRIAL"),
+        PLAIN.replace("\n", ",\n"),
+    ],
+    ids=["bom", "semicolons", "tabs", "crlf", "blank lines", "spaces", "case", "trailing commas"],
+)
+def test_a_table_reads_the_same_however_a_spreadsheet_wrote_it(
+    run: Callable[..., Any], tmp_path: Path, text: str
+) -> None:
+    file, plain = tmp_path / "odd.csv", tmp_path / "plain.csv"
+    file.write_text(text, encoding="utf-8", newline="")
+    plain.write_text(PLAIN, encoding="utf-8")
+    assert run("pool", file, "risk-ratio") == run("pool", plain, "risk-ratio")
+
+
+@pytest.mark.parametrize("mark", [";", "\t"], ids=["semicolons", "tabs"])
+def test_decimal_commas_are_read_as_such_and_the_reader_is_told(
+    run: Callable[..., Any], tmp_path: Path, mark: str
+) -> None:
+    file = tmp_path / "commas.csv"
+    file.write_text("\n".join(["trial|estimate|standard_error", "A|-0,25|0,2"]).replace("|", mark))
+    ran = run("pool", file, "generic")
+    assert section(ran.out, "Trials")[0].startswith("A: -0.25 (-0.642 to 0.142)")
+    assert "a comma inside a number was read as the decimal mark (-0,25)" in ran.err
+
+
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        # the numbers of such a row once moved one column on, the trial's name lost
+        ("trial,estimate,standard_error\nA,0.1,0.2,0.3\n", "trial A: row 2 has more cells"),
+        ("trial,estimate,estimate,standard_error\nA,0.1,0.2,0.3\n", "two columns have the same name"),
+        ("trial;estimate;standard_error\nA;0,1;0.2\n", "a decimal comma and with a decimal point"),
+        (HEAD.replace(",", ";") + "\nA;5;1,000;9;1,000\n", "may be thousands or a decimal comma"),
+        (HEAD + '\nA,5,"1,000",9,100\n', "trial A: intervention_total: is not a number"),
+        (HEAD + "\nA,NR,100,9,100\n", "trial A: intervention_events: is not a number"),
+        (HEAD + "\n", "holds no trial"),
+        ("", "holds no trial"),
+    ],
+)
+def test_a_doubtful_table_is_refused_and_nothing_is_computed(
+    run: Callable[..., Any], tmp_path: Path, text: str, words: str
+) -> None:
+    file = tmp_path / "doubtful.csv"
+    file.write_text(text)
+    ran = run("pool", file, "risk-ratio" if "total" in text else "generic")
+    assert (ran.status, ran.out) == (1, "")
+    assert words in ran.err
+
+
+@pytest.mark.parametrize(
+    ("raw", "words"),
+    [
+        (b"PK\x03\x04\x14\x00", "this is a workbook, not a CSV"),
+        (b"trial,estimate\nM\xfcller,1\n", "not UTF-8 text"),
+        (PLAIN.encode("utf-16"), "not UTF-8 text"),
+    ],
+)
+def test_a_file_that_is_no_utf8_text_says_how_to_save_it(
+    run: Callable[..., Any], tmp_path: Path, raw: bytes, words: str
+) -> None:
+    file = tmp_path / "table.csv"
+    file.write_bytes(raw)
+    ran = run("pool", file, "risk-ratio")
+    assert (ran.status, ran.out) == (1, "")
+    assert words in ran.err
+    assert "Save the sheet as CSV (UTF-8)" in ran.err
+
+
+def test_the_page_and_the_json_ask_for_a_statistician_and_recommend_nothing(
+    pooled: Callable[..., Any], bcg: pd.DataFrame
+) -> None:
+    said = [pooled(bcg, "risk-ratio").splitlines()[1], pooled(bcg, "risk-ratio", "--json")["caution"]]
+    for words in said:
+        assert "no treatment recommendation" in words
+        assert "statistician" in words
+
+
+def test_the_first_line_tells_level_estimator_and_interval(
+    pooled: Callable[..., Any], bcg: pd.DataFrame
+) -> None:
+    first = pooled(bcg, "risk-ratio", "--level", 0.995, "--tau2", "paule-mandel").splitlines()[0]
+    assert "intervals at 99.5%; random effects with tau2 by paule-mandel and modified-knapp" in first
+
+
+def test_a_default_prior_is_not_called_chosen(pooled: Callable[..., Any], bcg: pd.DataFrame) -> None:
+    assert "default, none was given" in section(pooled(bcg, "odds-ratio"), "Bayesian")[0]
+    assert "(chosen)" in section(pooled(bcg, "odds-ratio", "--prior", "half-normal 0.5"), "Bayesian")[0]
+
+
+@pytest.mark.parametrize(
+    ("better", "mid", "shown"), [("lower", 0.8, "(MID 0.8)"), ("higher", 1.25, "(MID 1.25)")]
+)
+def test_the_difference_that_matters_is_shown_on_the_side_that_is_good(
+    pooled: Callable[..., Any], bcg: pd.DataFrame, better: str, mid: float, shown: str
+) -> None:
+    assert shown in section(pooled(bcg, "risk-ratio", "--better", better, "--mid", mid), "Bayesian")[-1]
+
+
+def test_rows_without_names_are_told(pooled: Callable[..., Any], bcg: pd.DataFrame) -> None:
+    text = pooled(bcg.drop(columns="trial"), "risk-ratio")
+    assert "note: The table has no column trial; trials are named by their row." in section(text, "Notes")
+
+
+def test_help_names_every_measure_estimator_and_published_prior(run: Callable[..., Any]) -> None:
+    from treering.pooling import EMPIRICAL_PRIORS
+    from treering.terms import Measure, Tau2
+
+    words = re.sub(r"[\s│]+", " ", run("pool", "--help").out)
+    parts = {part for name in EMPIRICAL_PRIORS for part in re.split(r"(?=-drug-|-non-drug)", name)[1:]}
+    for name in [*Measure, *Tau2, "turner-2012-any-outcome", "rhodes-2015-any-outcome", *parts]:
+        assert name in words, name

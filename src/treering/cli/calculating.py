@@ -126,11 +126,16 @@ def pool(
     Parameters
     ----------
     file : Path
-        CSV with one row per trial; columns as in `treering template`, first column "trial".
+        CSV with one row per trial, named in the column "trial". Binary: intervention_events,
+        intervention_total, comparator_events, comparator_total. Rates: events, and time in the place of
+        total. Continuous: mean, sd and total of both arms. As reported: estimate, ci_low, ci_high (ratios
+        not logged); or estimate, standard_error for differences; or log_estimate, standard_error for ratios.
     measure : str
-        risk-ratio, odds-ratio, risk-difference, mean-difference and so on.
+        risk-ratio, odds-ratio, peto-odds-ratio, risk-difference, arcsine-difference, rate-ratio,
+        hazard-ratio, mean-difference, standardized-mean-difference, ratio-of-means or generic.
     tau2 : str
-        Estimator of the between-trial variance.
+        Between-trial variance by reml, ml, dersimonian-laird, paule-mandel, hedges, sidik-jonkman or
+        hunter-schmidt; all are shown.
     interval : str
         modified-knapp-hartung, knapp-hartung or wald.
     level : float
@@ -152,8 +157,9 @@ def pool(
     comparator_risk : list of float, optional
         For effects per 1000 people; give the option once for each risk.
     prior : str, optional
-        Of tau: "half-normal 0.5", "half-cauchy 0.5", "log-normal MEAN SD" of log tau, or the name of a
-        published one.
+        Of tau: "half-normal 0.5", "half-cauchy 0.5", "log-normal MEAN SD" of log tau, or a published one:
+        turner-2012-any-outcome; turner-2015- with mortality, semi-objective or subjective, then
+        -drug-control, -drug-drug or -non-drug; rhodes-2015-any-outcome.
     better : str, optional
         Which direction is good: lower or higher.
     mid : float, optional
@@ -165,7 +171,7 @@ def pool(
     json : bool
         Print JSON.
     """
-    from treering.cli.pooled import pooled_lines
+    from treering.cli.pooled import FOR_A_STATISTICIAN, pooled_lines
     from treering.cli.tables import read_table
     from treering.pooling import analyse_table, distance, read_prior
 
@@ -193,8 +199,10 @@ def pool(
         one_stage=one_stage,
         force_small_study=force_small_study,
     ).to_dict()
+    if "trial" not in table.columns:
+        result["warnings"].append("The table has no column trial; trials are named by their row.")
     if json:
-        say_json(result)
+        say_json({"caution": FOR_A_STATISTICIAN, **result})
     else:
         for line in pooled_lines(result):
             say(line)

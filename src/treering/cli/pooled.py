@@ -3,10 +3,15 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from typing import Any
 
 Part = dict[str, Any]
+
+FOR_A_STATISTICIAN = (
+    "These are calculations, no treatment recommendation. A statistician should read them before anyone "
+    "relies on them."
+)
 
 WORDS = {
     "hypergeometric-normal": "conditional on the events of each trial",
@@ -30,13 +35,18 @@ def pooled_lines(result: Part) -> Iterator[str]:
         Lines; ratios on the ratio scale.
     """
     ratio = result["scale"] == "log"
-    yield f"{result['measure']}, {len(result['trials'])} trials; intervals at {result['level']:.0%}"
+    plan = result["options"]
+    yield (
+        f"{result['measure']}, {count(len(result['trials']))}; intervals at {100 * result['level']:.6g}%; "
+        f"random effects with tau2 by {plan['tau2']} and {plan['interval']} interval"
+    )
+    yield FOR_A_STATISTICIAN
     sections = {
         "Trials": _trials(result, ratio),
         "Pooled": _pooled(result, ratio),
         "Counts": _counts(result),
         "Subgroups": _subgroups(result["subgroups"], ratio),
-        "Regression": _regression(result["regression"]),
+        "Regression": _regression(result["regression"], ratio),
         "Bayesian": _bayesian(result["bayesian"], ratio),
         "One-stage": _one_stage(result["one_stage"]),
         "Without": _without(result["leave_one_out"], ratio),
@@ -58,8 +68,8 @@ def _trials(result: Part, ratio: bool) -> Iterator[str]:
     for trial in result["trials"]:
         mark = "; zero cell corrected" if trial["corrected"] else ""
         route = "" if trial["route"] == "as planned" else f"; {trial['route']}"
-        share = f"weight {trial['weight_random']:.1%}"
-        yield f"{trial['trial']}: {interval(trial, ratio)}; {share}{mark}{route}"
+        weight = f"weight {trial['weight_random']:.1%}"
+        yield f"{trial['trial']}: {interval(trial, ratio)}; {weight}{mark}{route}"
     for item in result["left_out"]:
         yield f"{item['trial']}: left out, {item['reason']}"
 
@@ -72,7 +82,7 @@ def _pooled(result: Part, ratio: bool) -> Iterator[str]:
     if random is not None:
         yield (
             f"Q {number(random['q'])} on {number(random['q_df'])} df, P {number(random['q_p'])}; "
-            f"tau2 {between(random, 'tau2')}; I2 {between(random, 'i2')}; "
+            f"tau2 {between(random, 'tau2')}; I2 {between(random, 'i2', share)}; "
             f"H2 {number(random['h2'])}; D2 {number(random['d2'])}"
         )
         ends = [natural(random[name], ratio) for name in ("prediction_low", "prediction_high")]
@@ -99,7 +109,7 @@ def _subgroups(found: Part | None, ratio: bool) -> Iterator[str]:
     for group in found["groups"]:
         yield (
             f"{group['label']}: {interval(group, ratio)}; {count(group['k'])}; "
-            f"tau2 {number(group['tau2'])}; I2 {number(group['i2'])}"
+            f"tau2 {number(group['tau2'])}; I2 {share(group['i2'])}"
         )
     rest = f" and {found['test_residual_df']}" if found["test_residual_df"] is not None else ""
     yield (
@@ -114,11 +124,12 @@ def _subgroups(found: Part | None, ratio: bool) -> Iterator[str]:
     yield from found["remarks"]
 
 
-def _regression(found: Part | None) -> Iterator[str]:
+def _regression(found: Part | None, ratio: bool) -> Iterator[str]:
     if found is None:
         return
+    scale = "log scale" if ratio else "analysis scale"
     for row in found["coefficients"]:
-        yield f"{row['name']}: {interval(row, False)}, P {number(row['p'])} (analysis scale)"
+        yield f"{row['name']}: {interval(row, False)}, P {number(row['p'])} ({scale})"
     rest = f" and {found['test_residual_df']}" if found["test_residual_df"] is not None else ""
     kind = "chi-square" if found["test_residual_df"] is None else "F"
     test = f"{kind} {number(found['test'])} on {found['test_df']}{rest} df"
@@ -135,7 +146,7 @@ def _bayesian(found: Part | None, ratio: bool) -> Iterator[str]:
     if found is None:
         return
     yield f"prior of tau: {found['prior']} ({found['prior_source']}); of the effect: {found['effect_prior']}"
-    yield f"effect: {interval(found, ratio)}"
+    yield f"effect, median and credible interval: {interval(found, ratio)}"
     yield f"tau: {number(found['tau_median'])} ({number(found['tau_low'])} to {number(found['tau_high'])})"
     ends = [natural(found[name], ratio) for name in ("next_median", "next_low", "next_high")]
     yield f"next trial: {ends[0]} ({ends[1]} to {ends[2]})"
@@ -144,9 +155,11 @@ def _bayesian(found: Part | None, ratio: bool) -> Iterator[str]:
         f"next trial {number(found['p_next_benefit'])}"
     )
     if found["mid"] is not None:
+        mid = natural(-found["mid"] if found["better"] == "lower" else found["mid"], ratio)
         yield (
             f"P(beyond the MID): {number(found['p_beyond_mid'])}; on the bad side "
-            f"{number(found['p_harm_beyond_mid'])}; next trial {number(found['p_next_beyond_mid'])}"
+            f"{number(found['p_harm_beyond_mid'])}; next trial {number(found['p_next_beyond_mid'])} "
+            f"(MID {mid})"
         )
 
 
@@ -157,8 +170,8 @@ def _one_stage(found: dict[str, Part]) -> Iterator[str]:
         else:
             spread = f"correlation {number(fit['correlation'])}"
         yield (
-            f"{name}: {fit['measure']} {interval(fit, True)}, P {number(fit['p'])}; {spread}; "
-            f"{fit['k_informative']} of {fit['k']} trials inform it ({WORDS[name]})"
+            f"{name}: {fit['measure']} {interval(fit, True)}, {fit['interval']}, P {number(fit['p'])}; "
+            f"{spread}; {fit['k_informative']} of {fit['k']} trials inform it ({WORDS[name]})"
         )
 
 
@@ -212,7 +225,7 @@ def _absolute(rows: list[Part]) -> Iterator[str]:
         yield (
             f"per {effect['per']} at a comparator risk of {effect['comparator_risk']:g}: "
             f"{number(effect['difference'])} ({number(effect['difference_low'])} to "
-            f"{number(effect['difference_high'])}){cut}"
+            f"{number(effect['difference_high'])}) more events, fewer where below 0{cut}"
         )
 
 
@@ -222,9 +235,19 @@ def interval(row: Part, ratio: bool) -> str:
     return f"{natural(row['estimate'], ratio)} ({low} to {high})"
 
 
-def between(row: Part, name: str) -> str:
+def number(value: float | None) -> str:
+    """Return a number with four digits, or say that these data cannot give it."""
+    return "not estimable" if value is None else f"{value:.4g}"
+
+
+def share(value: float | None) -> str:
+    """Return a share as a percentage, or say that these data cannot give it."""
+    return number(value) if value is None else f"{value:.1%}"
+
+
+def between(row: Part, name: str, show: Callable[[float | None], str] = number) -> str:
     """Return a number with its own interval, where the result has one."""
-    return f"{number(row[name])} ({number(row[f'{name}_low'])} to {number(row[f'{name}_high'])})"
+    return f"{show(row[name])} ({show(row[f'{name}_low'])} to {show(row[f'{name}_high'])})"
 
 
 def natural(value: float | None, ratio: bool) -> str:
@@ -235,8 +258,3 @@ def natural(value: float | None, ratio: bool) -> str:
 def count(k: int) -> str:
     """Return a number of trials with its noun."""
     return "1 trial" if k == 1 else f"{k} trials"
-
-
-def number(value: float | None) -> str:
-    """Return a number with four digits, or say that these data cannot give it."""
-    return "not estimable" if value is None else f"{value:.4g}"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from functools import partial
 
 from treering.errors import AnalysisError
@@ -20,6 +21,7 @@ from treering.terms import Better, Measure, Tau2
 #: Half-normal scale 0.5 for effects on a log or standardized scale (Friede et al. 2017, Res Synth Methods
 #: 8:79, from memory). No scale fits outcomes in their own units, so there is no default for those.
 DEFAULT_PRIOR = HalfNormal(0.5)
+DEFAULT_SOURCE = "default, none was given; Friede et al. 2017, Res Synth Methods 8:79, from memory"
 _UNIT_FREE = frozenset({Measure.STANDARDIZED_MEAN_DIFFERENCE})
 
 
@@ -65,13 +67,15 @@ def bayesian(inputs: Inputs) -> BayesianEffect:
                 next_step="Give one, for example a half-normal with a scale in that unit.",
             )
         prior = DEFAULT_PRIOR
-    return pool_bayesian(
+    found = pool_bayesian(
         *inputs.numbers,
         prior,
         better=plan.better or Better.LOWER,
         mid=plan.mid,
         level=plan.level,
     )
+    # nobody chose a default
+    return found if plan.prior is not None else replace(found, prior_source=DEFAULT_SOURCE)
 
 
 def prior_warnings(inputs: Inputs) -> list[str]:
