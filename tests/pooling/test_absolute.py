@@ -116,3 +116,27 @@ def test_a_minimally_important_difference_is_a_distance(value: float, measure: s
 def test_what_is_no_distance_is_refused(value: float, measure: str) -> None:
     with pytest.raises(AnalysisError):
         distance(value, measure)
+
+
+@pytest.mark.parametrize("measure", ["risk-ratio", "odds-ratio", "hazard-ratio"])
+def test_a_limit_beyond_floating_point_is_cut_at_everyone(measure: str) -> None:
+    (found,) = absolute_effects((0.1, 0.0, 800.0), measure, 0.1)
+    assert found.intervention_high == pytest.approx(1000)
+
+
+@pytest.mark.parametrize(
+    ("effect", "risk", "options", "words"),
+    [
+        (None, 0.1, {}, "An effect is"),
+        (("a", 0.0, 0.2), 0.1, {}, "trial 1: effect must be numbers"),
+        ((0.1, 0.2), 0.1, {}, "does not hold"),
+        ((0.1, 0.0, 0.2), "ten", {}, "comparator_risk must be numbers"),
+        ((0.1, 0.0, 0.2), [0.1, None], {}, "comparator_risk"),
+        ((0.1, 0.0, 0.2), 0.1, {"per": math.nan}, "number of people"),
+    ],
+)
+def test_what_is_no_effect_or_risk_is_refused(
+    effect: object, risk: object, options: dict, words: str
+) -> None:
+    with pytest.raises(AnalysisError, match=words):
+        absolute_effects(effect, "risk-ratio", risk, **options)

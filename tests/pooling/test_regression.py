@@ -240,3 +240,25 @@ def test_a_maximum_far_below_the_largest_variance_is_found() -> None:
 
     assert 1e-10 < found < 1e-8
     assert height(found) >= max(height(t) for t in grid) - 1e-9
+
+
+def test_trials_exactly_on_the_regression_leave_no_knapp_hartung_variance() -> None:
+    y, v, x = [1.1, 2.2, 3.3, 4.4], [0.01, 0.02, 0.03, 0.05], {"x": [1, 2, 3, 4]}
+    with pytest.raises(AnalysisError, match="exactly on the regression"):
+        meta_regression(y, v, x, interval="knapp-hartung")
+    assert meta_regression(y, v, x).coefficients[1].estimate == pytest.approx(1.1)
+
+
+@pytest.mark.parametrize(
+    ("covariates", "words"),
+    [
+        ({"x": [1, 2, 3, 4], "z": [1, 2]}, "equal length"),
+        ({"x": 1.0}, "equal length"),
+        ({"x": pd.to_datetime(["2020", "2021", None, "2023"])}, "is a date"),
+        (pd.DataFrame({"x": [1, 2, 3, 5]}, index=["d", "c", "b", "a"]), "another order"),
+    ],
+)
+def test_covariates_that_are_no_columns_of_numbers_are_refused(covariates: object, words: str) -> None:
+    y = pd.Series([0.1, 0.2, 0.5, 0.3], index=list("abcd"))
+    with pytest.raises(AnalysisError, match=words):
+        meta_regression(y, [0.01, 0.02, 0.03, 0.05], covariates)

@@ -112,3 +112,9 @@ def test_equally_precise_trials_have_no_line():
 def test_an_unknown_side_is_refused():
     with pytest.raises(AnalysisError, match="side"):
         trim_and_fill([0.1, 0.2, 0.4], [0.1, 0.2, 0.3], side="top")
+
+
+@pytest.mark.parametrize("estimates", [[0.1] * 4, 0.3 * np.sqrt([0.01, 0.02, 0.03, 0.05]) + 0.1])
+def test_trials_exactly_on_a_line_have_no_test_even_after_rounding(estimates):
+    with pytest.raises(AnalysisError, match="exactly on one line"):
+        egger(estimates, [0.01, 0.02, 0.03, 0.05])

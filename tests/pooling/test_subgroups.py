@@ -171,3 +171,10 @@ def test_a_credibility_judgement_has_no_overall_word_unless_a_person_gives_one()
 def test_an_incomplete_credibility_judgement_is_refused(changes: dict[str, object]) -> None:
     with pytest.raises(AnalysisError):
         judgement(**changes)
+
+
+def test_published_estimates_without_limits_are_refused() -> None:
+    with pytest.raises(AnalysisError, match="second must be"):
+        interaction_test((0.67, 0.46, 0.98), (0.88, 0.71), "risk-ratio")
+    with pytest.raises(AnalysisError, match="one list of names"):
+        subgroup_analysis([0.1, 0.2], [1, 1], None)

@@ -19,9 +19,13 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from numbers import Real
 from typing import Protocol
 
+import numpy as np
+
 from treering.errors import AnalysisError
+from treering.pooling.arrays import numbers
 from treering.pooling.checks import choose
 from treering.terms import RATIO_MEASURES, Measure
 
@@ -78,12 +82,17 @@ class AbsoluteEffect:
     cut: bool
 
 
+def _ratio(log_ratio: float) -> float:
+    """Ratio of its logarithm; beyond 1e300 every risk is cut at 1 all the same."""
+    return math.exp(min(log_ratio, 690.0))
+
+
 _RISKS: dict[Measure, Callable[[float, float], float]] = {
-    Measure.RISK_RATIO: lambda c, e: math.exp(e) * c,
-    Measure.ODDS_RATIO: lambda c, e: math.exp(e) * c / (1 - c + math.exp(e) * c),
-    Measure.PETO_ODDS_RATIO: lambda c, e: math.exp(e) * c / (1 - c + math.exp(e) * c),
+    Measure.RISK_RATIO: lambda c, e: _ratio(e) * c,
+    Measure.ODDS_RATIO: lambda c, e: _ratio(e) * c / (1 - c + _ratio(e) * c),
+    Measure.PETO_ODDS_RATIO: lambda c, e: _ratio(e) * c / (1 - c + _ratio(e) * c),
     Measure.RISK_DIFFERENCE: lambda c, e: c + e,
-    Measure.HAZARD_RATIO: lambda c, e: -math.expm1(math.exp(e) * math.log1p(-c)),
+    Measure.HAZARD_RATIO: lambda c, e: -math.expm1(_ratio(e) * math.log1p(-c)),
 }
 
 
@@ -117,17 +126,35 @@ def absolute_effects(
     AnalysisError
         A measure without absolute effect, a risk outside (0, 1), an interval that does not hold its estimate.
     """
-    if measure not in _RISKS:
+    kind = choose(Measure, measure, "measure")
+    if kind not in _RISKS:
         raise AnalysisError(
             "There is no absolute effect for this measure.", found=str(measure), expected=", ".join(_RISKS)
         )
-    values = effect if isinstance(effect, tuple) else (effect.estimate, effect.ci_low, effect.ci_high)
-    if not all(math.isfinite(x) for x in values) or not values[1] <= values[0] <= values[2]:
-        raise AnalysisError("The interval does not hold its estimate.", found=values)
-    if per < 1:
+    values = _limits(effect)
+    if not (isinstance(per, Real) and math.isfinite(per) and per >= 1):
         raise AnalysisError("The number of people must be at least 1.", found=per)
-    risks = [comparator_risk] if isinstance(comparator_risk, int | float) else list(comparator_risk)
-    return tuple(_one(Measure(measure), values, float(risk), per) for risk in risks)
+    risks = numbers(
+        [comparator_risk] if np.ndim(comparator_risk) == 0 else comparator_risk, "comparator_risk"
+    )
+    return tuple(_one(kind, values, float(risk), per) for risk in risks)
+
+
+def _limits(effect: Estimated | tuple[float, float, float]) -> tuple[float, float, float]:
+    """Estimate with its lower and upper limit."""
+    if not isinstance(effect, tuple):
+        try:
+            effect = (effect.estimate, effect.ci_low, effect.ci_high)
+        except AttributeError:
+            raise AnalysisError(
+                "An effect is a pooled effect or its estimate, lower and upper limit.",
+                found=type(effect).__name__,
+                expected="a result of pool, or a tuple of three numbers",
+            ) from None
+    values = numbers(effect, "effect").tolist()
+    if len(values) != 3 or not all(map(math.isfinite, values)) or not values[1] <= values[0] <= values[2]:
+        raise AnalysisError("The interval does not hold its estimate.", found=effect)
+    return values[0], values[1], values[2]
 
 
 def distance(value: float, measure: str | Measure) -> float:
@@ -151,6 +178,8 @@ def distance(value: float, measure: str | Measure) -> float:
         An unknown measure, or no distance.
     """
     ratio = choose(Measure, measure, "measure") in RATIO_MEASURES
+    if not isinstance(value, Real):
+        raise AnalysisError("A minimally important difference is a number.", found=value)
     found = abs(math.log(value)) if ratio and value > 0 else (0.0 if ratio else abs(value))
     if not (math.isfinite(found) and found > 0):
         raise AnalysisError(

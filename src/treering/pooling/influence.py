@@ -110,13 +110,13 @@ def cumulative(
 
 def _sort_key(order: ArrayLike, labels: Sequence[object]) -> npt.NDArray[np.float64 | np.datetime64]:
     """Numbers or dates to sort by, one for each trial."""
-    dates = np.asarray(order)
-    key = dates if dates.dtype.kind == "M" else numbers(order, "order")
+    dated = getattr(getattr(order, "dtype", None), "kind", "") == "M"
+    key = np.asarray(order) if dated else numbers(order, "order")
     if key.shape != (len(labels),):
         raise AnalysisError(
             "order and estimates differ in length.", found=f"{key.size} for {len(labels)} trials"
         )
-    bad = np.isnat(key) if key.dtype.kind == "M" else ~np.isfinite(key)
+    bad = np.isnat(key) if dated else ~np.isfinite(key)
     if bad.any():
         at = int(np.argmax(bad))
         raise AnalysisError(

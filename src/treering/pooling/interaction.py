@@ -13,6 +13,7 @@ from scipy import stats
 
 from treering.effects import effect_sizes
 from treering.errors import AnalysisError
+from treering.pooling.arrays import numbers
 from treering.pooling.checks import check_level
 
 
@@ -98,6 +99,9 @@ def interaction_test(
     AnalysisError
         When an interval does not hold its estimate or is not symmetric on the analysis scale.
     """
+    for name, given in (("first", first), ("second", second)):
+        if numbers(given, name).size != 3:
+            raise AnalysisError(f"{name} must be an estimate with its lower and upper limit.", found=given)
     table = pd.DataFrame(
         [first, second],
         columns=["estimate", "ci_low", "ci_high"],

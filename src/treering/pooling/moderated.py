@@ -22,6 +22,8 @@ from treering.errors import AnalysisError
 from treering.pooling.quadrature import Array
 from treering.terms import Tau2
 
+ROUNDING = 1e-28
+"""Share of the weighted sum of squares below which a residual one is rounding error."""
 _PER_DECADE = 20
 _MOST_POINTS = 1000
 
@@ -69,7 +71,10 @@ def fit_at(design: Design, tau2: float) -> WeightedFit:
     inverse = np.linalg.inv(r)
     fitted = q.T @ z
     residual = z - q @ fitted
-    return WeightedFit(inverse @ fitted, inverse @ inverse.T, float(residual @ residual))
+    left = float(residual @ residual)
+    # What rounding leaves of trials that lie exactly on the regression is no residual.
+    q_residual = left if left > ROUNDING * float(z @ z) else 0.0
+    return WeightedFit(inverse @ fitted, inverse @ inverse.T, q_residual)
 
 
 def _score(design: Design, tau2: float, restricted: bool) -> tuple[float, float]:

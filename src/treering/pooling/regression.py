@@ -97,7 +97,10 @@ Covariates = pd.DataFrame | Mapping[str, Sequence[float]]
 
 def _matrix(covariates: Covariates, labels: Sequence[object]) -> tuple[tuple[str, ...], Array]:
     """Design matrix with an intercept; every entry must be a finite number."""
-    frame = pd.DataFrame(covariates)
+    try:
+        frame = pd.DataFrame(covariates)
+    except (TypeError, ValueError) as error:
+        raise AnalysisError("Covariates must be columns of equal length.", found=str(error)) from error
     if frame.shape[1] == 0:
         raise AnalysisError("A meta-regression needs at least one covariate.")
     if len(frame) != len(labels):
@@ -106,7 +109,11 @@ def _matrix(covariates: Covariates, labels: Sequence[object]) -> tuple[tuple[str
         )
     columns = [np.ones(len(frame))]
     for name in frame.columns:
-        values = pd.to_numeric(frame[name], errors="coerce").to_numpy(dtype=np.float64)
+        if frame[name].dtype.kind in "Mm":  # their numbers are nanoseconds, and a gap among them a number too
+            raise AnalysisError(
+                f"The covariate {name} is a date.", next_step="Give it as a number, for example the year."
+            )
+        values = pd.to_numeric(frame[name], errors="coerce").to_numpy(dtype=np.float64, na_value=np.nan)
         for label, value, raw in zip(labels, values, frame[name], strict=True):
             if not np.isfinite(value):
                 raise AnalysisError(
@@ -134,10 +141,20 @@ def inflation(fit: WeightedFit, df: int, interval: IntervalMethod) -> float:
     Returns
     -------
     float
+
+    Raises
+    ------
+    AnalysisError
+        No residual is left for the Knapp-Hartung variance.
     """
     if interval is IntervalMethod.WALD:
         return 1.0
     s2 = fit.q / df
+    if s2 == 0 and interval is IntervalMethod.KNAPP_HARTUNG:
+        raise AnalysisError(
+            "The trials lie exactly on the regression, so its Knapp-Hartung variance is zero.",
+            next_step="Use the modified Knapp-Hartung interval.",
+        )
     return max(1.0, s2) if interval is IntervalMethod.MODIFIED_KNAPP_HARTUNG else s2
 
 
@@ -251,11 +268,6 @@ def coefficients(
     rows = []
     for name, value, error in zip(names, values, errors, strict=True):
         b, se = float(value), float(error)
-        if se == 0:
-            raise AnalysisError(
-                "The trials lie exactly on the regression, so its Knapp-Hartung variance is zero.",
-                next_step="Use the modified Knapp-Hartung interval.",
-            )
         p = float(2 * law.sf(abs(b / se)))
         rows.append(Coefficient(name, b, se, b - quantile * se, b + quantile * se, b / se, p))
     return tuple(rows)

@@ -18,6 +18,7 @@ from treering.errors import AnalysisError
 from treering.pooling.arrays import ArrayLike
 from treering.pooling.checks import check_effects
 from treering.pooling.counts import deviations, read_counts
+from treering.pooling.moderated import ROUNDING
 from treering.pooling.result import FloatArray
 
 FEW_TRIALS = 10
@@ -147,13 +148,14 @@ def _line(x: FloatArray, y: FloatArray, w: FloatArray, tested: str, left_out: in
     mean = float((w * y).sum() / w.sum())
     slope = float((w * (x - centre) * y).sum()) / spread
     residual = y - mean - slope * (x - centre)
-    scale = float((w * residual**2).sum()) / (k - 2)
+    left = float((w * residual**2).sum())
+    if not left > ROUNDING * float((w * y * y).sum()):
+        raise AnalysisError("All trials lie exactly on one line: its test has no standard error.")
+    scale = left / (k - 2)
     intercept = mean - slope * centre
     on_intercept = tested == "intercept"
     unit = 1.0 / float(w.sum()) + centre**2 / spread if on_intercept else 1.0 / spread
     error = float(np.sqrt(scale * unit))
-    if not error > 0.0:
-        raise AnalysisError("All trials lie exactly on one line: its test has no standard error.")
     t = (intercept if on_intercept else slope) / error
     p = 2.0 * float(special.stdtr(k - 2, -abs(t)))
     return RegressionTest(intercept, slope, error, t, p, k - 2, k, tested, k < FEW_TRIALS, left_out)

@@ -104,7 +104,10 @@ def _positions(
     groups: Sequence[object] | pd.Series, trials: Sequence[object]
 ) -> tuple[list[str], npt.NDArray[np.int_]]:
     """Names of the subgroups in order of appearance, and each trial's position among them."""
-    values = list(groups)
+    try:
+        values = list(groups)
+    except TypeError:
+        raise AnalysisError("Subgroups must be one list of names.", found=type(groups).__name__) from None
     if len(values) != len(trials):
         raise AnalysisError(
             "Subgroups and estimates differ in length.", found=len(values), expected=len(trials)
