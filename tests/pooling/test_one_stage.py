@@ -12,10 +12,10 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import integrate, optimize, stats
-from scipy.special import expit
+from scipy.special import expit, gammaln, logsumexp
 
 from treering.errors import AnalysisError
-from treering.pooling.hypergeometric import log_pmf
+from treering.pooling.hypergeometric import conditional_tables, log_pmf
 from treering.pooling.one_stage import OneStageEffect, pool_one_stage
 from treering.pooling.one_stage_models import OneStageModel
 
@@ -70,6 +70,23 @@ def test_conditional_probability_agrees_with_scipy() -> None:
     # scipy.stats.nchypergeom_fisher(M, n, N, odds): n events in M people, N drawn
     expected = stats.nchypergeom_fisher(300, 17, 140, np.exp(0.7)).logpmf(11)
     assert log_pmf(11, 140, 6, 160, 0.7)[0] == pytest.approx(expected, abs=1e-9)
+
+
+@pytest.mark.parametrize("log_odds_ratio", [-25.0, -3.0, -0.2, 0.0, 1.4, 25.0])
+def test_mega_trials_beside_small_ones_keep_every_table_that_matters(log_odds_ratio: float) -> None:
+    # the whole support summed by scipy.special.logsumexp; arms of 100 000, at odds ratios near and far
+    rows = np.array([[4300, 100_000, 4700, 100_000], [60_000, 99_000, 61_000, 100_000], [2, 30, 0, 31]])
+    theta = np.full((3, 1, 1), log_odds_ratio)
+    value, gradient, hessian = conditional_tables(*rows.T).derivatives(theta)
+    for i, (a, n1, c, n2) in enumerate(rows):
+        x = np.arange(max(0, a + c - n2), min(n1, a + c) + 1)
+        log = -gammaln(x + 1) - gammaln(n1 - x + 1) - gammaln(a + c - x + 1) - gammaln(n2 - a - c + x + 1)
+        log += log_odds_ratio * x
+        log -= logsumexp(log)
+        mean = np.exp(log) @ x
+        assert value[i, 0] == pytest.approx(log[a - x[0]], rel=1e-8, abs=1e-8)
+        assert gradient[i, 0, 0] == pytest.approx(a - mean, rel=1e-8, abs=1e-6)
+        assert hessian[i, 0, 0, 0] == pytest.approx(-np.exp(log) @ (x - mean) ** 2, rel=1e-6, abs=1e-6)
 
 
 def conditional_by_quad(rows: list[list[int]], mean: float, tau2: float) -> float:
