@@ -213,6 +213,15 @@ def test_an_honest_interval_rounded_to_its_printed_digits_is_never_refused(centr
     assert found["estimate"] == pytest.approx(np.log(limits[0]))
 
 
+# Many journals print ratios to three significant digits: 2.61 (0.512 to 13.3) has limits of unlike decimals.
+@settings(deadline=None, max_examples=200)
+@given(centre=st.floats(-1.5, 1.5), error=st.floats(0.06, 1.5))
+def test_an_honest_interval_of_three_significant_digits_is_never_refused(centre, error):
+    limits = [float(f"{np.exp(x):.3g}") for x in (centre, centre - 1.96 * error, centre + 1.96 * error)]
+    table = pd.DataFrame([limits], columns=["estimate", "ci_low", "ci_high"])
+    assert np.isfinite(effects.effect_sizes(table, "hazard-ratio").to_numpy()).all()
+
+
 @settings(deadline=None, max_examples=100)
 @given(centre=st.floats(-50, 50), error=st.floats(0.5, 20), shift=st.floats(0.3, 0.9))
 def test_a_limit_moved_by_more_than_rounding_is_refused(centre, error, shift):

@@ -11,7 +11,8 @@ from treering.effects.rows import BoolArray, FloatArray, IntArray, Rows, refuse
 # half of it the printed digits are too coarse to yield a standard error. Ratios are customarily printed with
 # two decimals (common practice, no source); with fewer, a fault is likelier than such a chance of rounding.
 COARSEST, COARSEST_RATIO = 0.5, 0.25
-# The same for an estimate printed with fewer decimals than its limits, 0.67 (0.455 to 0.983).
+# The same for an estimate printed with fewer decimals than its limits, 0.67 (0.455 to 0.983), and for ratios
+# printed to two significant digits, 1.1 (0.93 to 1.3).
 COARSEST_ESTIMATE = 0.1
 _FLOAT_NOISE = 1e-6
 _MOST_DECIMALS = 12
@@ -23,8 +24,8 @@ def check_interval(rows: Rows, *, log_scale: bool) -> None:
     An interval taken as the estimate plus and minus a multiple of its standard error is symmetric on the
     scale of the analysis. Printed figures are rounded, so a gap between the estimate and the middle of the
     limits is accepted if rounding of the printed digits can explain it and it stays within half of the
-    half-width, or a quarter for a ratio printed with fewer than two decimals, or a tenth if only an estimate
-    printed with fewer decimals than its limits explains it.
+    half-width, or a quarter for a ratio printed with fewer than two decimals or to three significant digits,
+    or a tenth if it takes an estimate with fewer decimals than its limits, or two significant digits.
 
     Parameters
     ----------
@@ -68,26 +69,38 @@ def _symmetric(estimate: FloatArray, low: FloatArray, high: FloatArray, *, log_s
     def scale(x: FloatArray) -> FloatArray:
         return np.log(x) if log_scale else x
 
-    # A ratio below 10 has a decimal at least; 2 (1 to 5) is no rounding to integers.
-    fewest = np.where((estimate < 10) & log_scale, 1, 0)
-    own = np.maximum(printed_decimals(estimate), fewest)
-    decimals = np.maximum(np.maximum(printed_decimals(low), printed_decimals(high)), fewest)
-    half = _half_unit(decimals)
-    middle_low = (scale(low - half) + scale(high - half)) / 2
-    middle_high = (scale(low + half) + scale(high + half)) / 2
     gap = np.abs(scale(estimate) - (scale(low) + scale(high)) / 2)
     width = (scale(high) - scale(low)) / 2
     # All three figures at the very edge of their rounding is no explanation: 1 (0 to 4) cannot come of it.
     edge = _FLOAT_NOISE * width
 
-    def explained(decimals_of_estimate: IntArray, coarsest: FloatArray | float) -> BoolArray:
-        reach = _half_unit(decimals_of_estimate)
+    def explained(decimals: tuple[IntArray, ...], coarsest: FloatArray | float) -> BoolArray:
+        reach, down, up = (_half_unit(number) for number in decimals)
+        middle_low = (scale(low - down) + scale(high - up)) / 2
+        middle_high = (scale(low + down) + scale(high + up)) / 2
         meets = (scale(estimate - reach) < middle_high - edge) & (scale(estimate + reach) > middle_low + edge)
         return np.asarray(meets & (gap <= coarsest * width))
 
-    coarsest = np.where((decimals < 2) & log_scale, COARSEST_RATIO, COARSEST)
-    alike = explained(np.maximum(decimals, own), coarsest)
-    return (gap <= edge) | alike | explained(own, COARSEST_ESTIMATE)
+    # A ratio below 10 has a decimal at least; 2 (1 to 5) is no rounding to integers.
+    fewest = np.where((estimate < 10) & log_scale, 1, 0)
+    own = np.maximum(printed_decimals(estimate), fewest)
+    limits = np.maximum(np.maximum(printed_decimals(low), printed_decimals(high)), fewest)
+    coarsest = np.where((limits < 2) & log_scale, COARSEST_RATIO, COARSEST)
+    found = gap <= edge
+    found |= explained((np.maximum(limits, own), limits, limits), coarsest)
+    found |= explained((own, limits, limits), COARSEST_ESTIMATE)
+    if log_scale:
+        digits, decimals = _significant(estimate, low, high)
+        found |= explained(decimals, np.where(digits < 3, COARSEST_ESTIMATE, COARSEST_RATIO)) & (digits > 1)
+    return found
+
+
+def _significant(*figures: FloatArray) -> tuple[IntArray, tuple[IntArray, ...]]:
+    """Most significant digits among positive figures, and the decimals that each has with that many."""
+    leading = [np.floor(np.log10(x)).astype(int) + 1 for x in figures]
+    printed = [printed_decimals(x) + places for x, places in zip(figures, leading, strict=True)]
+    digits = np.maximum.reduce(printed)
+    return digits, tuple(np.minimum(digits - places, _MOST_DECIMALS) for places in leading)
 
 
 def printed_decimals(values: FloatArray) -> IntArray:
