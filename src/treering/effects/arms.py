@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-from treering.effects import checks
+from treering.effects import checks, columns
 from treering.effects.joined_arms import by_single_arms
 from treering.effects.rows import BoolArray, refuse
 from treering.errors import AnalysisError
@@ -46,7 +46,7 @@ def arm_ledger(uses: pd.DataFrame, arms: pd.DataFrame) -> pd.DataFrame:
         If a column is missing, an arm is unknown or listed twice, a figure is no count, or an arm is used
         beyond its participants or events; names the trial, the arm and the synthesis.
     """
-    uses, arms = checks.as_table(uses), checks.as_table(arms)
+    uses, arms = columns.as_table(uses), columns.as_table(arms)
     with_events = "events" in uses.columns
     fields = (*ARMS, "events") if with_events else ARMS
     _need(uses, USES)
@@ -98,7 +98,7 @@ def arm_uses(contrasts: pd.DataFrame, synthesis: str) -> pd.DataFrame:
     AnalysisError
         If a column is missing.
     """
-    contrasts = checks.as_table(contrasts)
+    contrasts = columns.as_table(contrasts)
     _need(contrasts, ("trial", *(f"{side}_{field}" for side in checks.ARMS for field in ("arm", "total"))))
     names = {"arm": "arm", "total": "participants"}
     if {"intervention_events", "comparator_events"} <= set(contrasts.columns):
@@ -116,16 +116,16 @@ def arm_uses(contrasts: pd.DataFrame, synthesis: str) -> pd.DataFrame:
 
 def _read(table: pd.DataFrame, count: str, with_events: bool, fields: tuple[str, ...]) -> pd.DataFrame:
     """Read counts as numbers from zero; names and participants must be there, events may be empty."""
-    labels = np.asarray(checks.column(table, "trial").to_numpy(), dtype=object)
+    labels = np.asarray(columns.column(table, "trial").to_numpy(), dtype=object)
     out = table.copy()
     for field in fields:
         if field != count:  # as objects, names of different types are simply different names
-            out[field] = checks.column(table, field).astype(object)
+            out[field] = columns.column(table, field).astype(object)
             _refuse(out[field].isna().to_numpy(), out, field, field, "is missing", "a name")
-    out[count] = checks.read_numbers(table, count, labels)
+    out[count] = columns.read_numbers(table, count, labels)
     _refuse(out[count].isna().to_numpy(), out, count, count, "is missing", "a count")
     for field in (count, "events") if with_events else (count,):
-        out[field] = checks.read_numbers(table, field, labels)
+        out[field] = columns.read_numbers(table, field, labels)
         _refuse((out[field] < 0).to_numpy(), out, field, field, "is below zero", "0 or more")
     return out
 

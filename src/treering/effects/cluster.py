@@ -11,7 +11,7 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-from treering.effects import checks
+from treering.effects import checks, columns
 from treering.effects.record import NOT_STATED, Conversion, need, need_finite, need_positive, record
 from treering.effects.rows import BoolArray, FloatArray, TextArray, refuse
 from treering.errors import AnalysisError
@@ -170,18 +170,18 @@ def effective_table(table: pd.DataFrame) -> pd.DataFrame:
     AnalysisError
         If a column is missing, only one of both figures is given, or a figure cannot be right.
     """
-    table = checks.as_table(table)
+    table = columns.as_table(table)
     for field in COLUMNS:
         if field not in table.columns:
             raise AnalysisError(f"{field}: the column is missing.", expected=" ".join(COLUMNS))
-    labels = checks.trial_labels(table)
+    labels = columns.trial_labels(table)
     divisible = _has_arms(table)
     wanted = _design_effects(table, labels)
     effect = np.where(divisible, wanted, 1.0)
     out = table.copy()
     for field in _DIVIDED:
         if field in table.columns:
-            out[field] = checks.read_counts(table, field, labels) / effect
+            out[field] = columns.read_counts(table, field, labels) / effect
     out["design_effect"] = effect
     out.attrs["taken_as_reported"] = tuple(labels[~divisible & (wanted > 1)])
     return out
@@ -200,7 +200,7 @@ def _has_arms(table: pd.DataFrame) -> BoolArray:
 
 def _design_effects(table: pd.DataFrame, labels: TextArray) -> FloatArray:
     """Vectorised :func:`design_effect`; 1 for rows without cluster figures."""
-    size, icc = (checks.read_numbers(table, field, labels) for field in COLUMNS)
+    size, icc = (columns.read_numbers(table, field, labels) for field in COLUMNS)
     single = np.isnan(size) & np.isnan(icc)
     for field, values in zip(COLUMNS, (size, icc), strict=True):
         refuse(
@@ -210,7 +210,7 @@ def _design_effects(table: pd.DataFrame, labels: TextArray) -> FloatArray:
     refuse((icc < 0) | (icc > 1), labels, COLUMNS[1], icc, "is not from 0 to 1", "0 to 1")
     variation = np.zeros(len(table))
     if "cluster_size_variation" in table.columns:
-        variation = np.nan_to_num(checks.read_numbers(table, "cluster_size_variation", labels))
+        variation = np.nan_to_num(columns.read_numbers(table, "cluster_size_variation", labels))
     refuse(variation < 0, labels, "cluster_size_variation", variation, "is below zero", "0 or more")
     with np.errstate(over="ignore"):
         effect = np.where(single, 1.0, 1 + ((1 + variation**2) * size - 1) * icc)

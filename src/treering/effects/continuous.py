@@ -8,7 +8,7 @@ from __future__ import annotations
 import numpy as np
 from scipy.special import gammaln
 
-from treering.effects import checks
+from treering.effects import checks, columns
 from treering.effects.rows import Effects, FloatArray, Rows, refuse
 
 _SERIES_FROM = 200.0
@@ -67,7 +67,7 @@ def small_sample_factor(degrees_of_freedom: FloatArray | float) -> FloatArray:
     AnalysisError
         If degrees of freedom are not finite and above 1.
     """
-    m = checks.figures("degrees_of_freedom", degrees_of_freedom, above=1)
+    m = columns.figures("degrees_of_freedom", degrees_of_freedom, above=1)
     x = 1 / m
     tail = x * (59 / 2048 + x * (483 / 8192 - x * 2323 / 65536))
     series = 1 - x * (3 / 4 + x * (7 / 32 + x * (9 / 128 - tail)))

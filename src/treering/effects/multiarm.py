@@ -14,7 +14,7 @@ from collections.abc import Sequence, Sized
 
 import pandas as pd
 
-from treering.effects import checks
+from treering.effects import columns
 from treering.effects.record import (
     NOT_STATED,
     Conversion,
@@ -141,17 +141,17 @@ def split_shared_comparator(
         If a column is missing, a trial or arm is not named, or rows that share an arm disagree about its
         figures.
     """
-    table = checks.as_table(table)
+    table = columns.as_table(table)
     _need_columns(table, trial, arm)
-    labels = checks.trial_labels(table)
+    labels = columns.trial_labels(table)
     for field in (trial, arm):
-        unnamed = checks.column(table, field).isna().to_numpy()
+        unnamed = columns.column(table, field).isna().to_numpy()
         refuse(unnamed, labels, field, lambda _: "nothing", "is missing", "a name")
     groups = table.groupby([trial, arm], sort=False, dropna=False)
     shared = groups[arm].transform("size")
     figures = [field for field in table.columns if field.startswith("comparator_") and field != arm]
     for field in figures:
-        checks.column(table, field)
+        columns.column(table, field)
         kinds = groups[field].transform("nunique", dropna=False).to_numpy()
         found = table[field].to_numpy(dtype=object)
         refuse(
@@ -165,7 +165,7 @@ def split_shared_comparator(
     divided = table.copy()
     for field in figures:
         if field.removeprefix("comparator_") in _ADDED_UP:
-            divided[field] = checks.read_counts(table, field, labels) / shared.to_numpy()
+            divided[field] = columns.read_counts(table, field, labels) / shared.to_numpy()
     divided["comparator_shared_by"] = shared
     return divided
 

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
-from treering.effects import binary, checks, continuous, reported, time_to_event
+from treering.effects import binary, checks, columns, continuous, reported, time_to_event
 from treering.effects.rows import BoolArray, Effects, FloatArray, LeftOut, Rows, TextArray, refuse
 from treering.effects.zero_cells import COUNTS
 from treering.errors import AnalysisError
@@ -142,10 +142,10 @@ def effect_sizes(
     known = _known_measure(measure)
     rule = checks.known_correction(correction)
     size = checks.known_amount(amount)
-    table = checks.as_table(table)
+    table = columns.as_table(table)
     if len(table) == 0:
         raise AnalysisError("The table holds no trial.", expected="one row or more")
-    labels = checks.trial_labels(table)
+    labels = columns.trial_labels(table)
     routes = _open_routes(table, known)
     values = _read(table, routes, labels)
     effects, taken = _by_route(values, labels, routes, rule, size)
@@ -203,12 +203,14 @@ def _read(table: pd.DataFrame, routes: tuple[Route, ...], labels: TextArray) -> 
     """All columns that an open route needs, as numbers with NaN where nothing is reported."""
     fields = {field: None for route in routes for field in route.columns}
     values = {
-        field: _signs(table, labels) if field == "lower_hazard" else checks.read_numbers(table, field, labels)
+        field: _signs(table, labels)
+        if field == "lower_hazard"
+        else columns.read_numbers(table, field, labels)
         for field in fields
     }
     level = np.full(len(table), 0.95)
     if "ci_level" in table.columns:
-        given = checks.read_numbers(table, "ci_level", labels)
+        given = columns.read_numbers(table, "ci_level", labels)
         level = np.where(np.isnan(given), level, given)
     values["ci_level"] = level
     return values
@@ -216,7 +218,7 @@ def _read(table: pd.DataFrame, routes: tuple[Route, ...], labels: TextArray) -> 
 
 def _signs(table: pd.DataFrame, labels: TextArray) -> FloatArray:
     """Read the arm with the lower hazard as a sign of the log hazard ratio."""
-    column = checks.column(table, "lower_hazard")
+    column = columns.column(table, "lower_hazard")
     words = column.to_numpy(dtype=object)
     known = {"intervention": -1.0, "comparator": 1.0}
     signs = np.array([known.get(word, np.nan) if isinstance(word, str) else np.nan for word in words])

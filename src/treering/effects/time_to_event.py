@@ -12,7 +12,7 @@ from __future__ import annotations
 import numpy as np
 from scipy.stats import norm
 
-from treering.effects import checks, reported
+from treering.effects import columns, reported
 from treering.effects.rows import Effects, FloatArray, Rows, refuse
 
 
@@ -67,8 +67,8 @@ def log_rank_variance(intervention_events: FloatArray, comparator_events: FloatA
     AnalysisError
         If events are not finite and above zero.
     """
-    first = checks.figures("intervention_events", intervention_events)
-    second = checks.figures("comparator_events", comparator_events)
+    first = columns.figures("intervention_events", intervention_events)
+    second = columns.figures("comparator_events", comparator_events)
     return np.asarray(first * (second / (first + second)))
 
 
@@ -97,9 +97,9 @@ def log_rank_variance_by_allocation(
     AnalysisError
         If a number is not finite and above zero.
     """
-    r1 = checks.figures("intervention_total", intervention_total)
-    r2 = checks.figures("comparator_total", comparator_total)
-    return np.asarray(checks.figures("events", events) * (r1 / (r1 + r2)) * (r2 / (r1 + r2)))
+    r1 = columns.figures("intervention_total", intervention_total)
+    r2 = columns.figures("comparator_total", comparator_total)
+    return np.asarray(columns.figures("events", events) * (r1 / (r1 + r2)) * (r2 / (r1 + r2)))
 
 
 def from_log_rank_p(rows: Rows) -> Effects:

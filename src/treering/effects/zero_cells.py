@@ -12,7 +12,7 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-from treering.effects import checks
+from treering.effects import checks, columns
 from treering.effects.rows import BoolArray, FloatArray, Rows
 from treering.errors import AnalysisError
 from treering.terms import Correction
@@ -116,12 +116,12 @@ def count_rows(table: pd.DataFrame, correction: Correction = Correction.NONE, am
     AnalysisError
         If a column or an entry is missing, or a count cannot be right.
     """
-    table = checks.as_table(table)
-    labels = checks.trial_labels(table)
+    table = columns.as_table(table)
+    labels = columns.trial_labels(table)
     absent = [field for field in COUNTS if field not in table.columns]
     if absent:
         raise AnalysisError(f"{absent[0]}: the column is missing.", expected=", ".join(COUNTS))
-    values = {field: checks.read_numbers(table, field, labels) for field in COUNTS}
+    values = {field: columns.read_numbers(table, field, labels) for field in COUNTS}
     for field in COUNTS:
         checks.present(values[field], labels, field)
     rows = Rows(values, labels, correction, amount)
@@ -151,7 +151,7 @@ def corrected_counts(table: pd.DataFrame, correction: str = "none", amount: floa
     AnalysisError
         If a count cannot be right, or the correction is unknown.
     """
-    table = checks.as_table(table)
+    table = columns.as_table(table)
     rows = count_rows(table, checks.known_correction(correction), checks.known_amount(amount))
     corrected, _ = corrected_rows(rows)
     frame = pd.DataFrame({field: corrected[field] for field in COUNTS}, index=table.index)
