@@ -14,7 +14,7 @@ from hypothesis import strategies as st
 from scipy import integrate, optimize, stats
 from scipy.special import expit, gammaln, logsumexp
 
-from treering.errors import AnalysisError
+from treering.errors import AnalysisError, NotConvergedError
 from treering.pooling.hypergeometric import conditional_tables, log_pmf
 from treering.pooling.one_stage import OneStageEffect, pool_one_stage
 from treering.pooling.one_stage_models import OneStageModel
@@ -83,10 +83,11 @@ def test_mega_trials_beside_small_ones_keep_every_table_that_matters(log_odds_ra
         log = -gammaln(x + 1) - gammaln(n1 - x + 1) - gammaln(a + c - x + 1) - gammaln(n2 - a - c + x + 1)
         log += log_odds_ratio * x
         log -= logsumexp(log)
-        mean = np.exp(log) @ x
+        # distances from the count seen, so that the reference loses no digits of its own
+        mean = np.exp(log) @ (x - a)
         assert value[i, 0] == pytest.approx(log[a - x[0]], rel=1e-8, abs=1e-8)
-        assert gradient[i, 0, 0] == pytest.approx(a - mean, rel=1e-8, abs=1e-6)
-        assert hessian[i, 0, 0, 0] == pytest.approx(-np.exp(log) @ (x - mean) ** 2, rel=1e-6, abs=1e-6)
+        assert gradient[i, 0, 0] == pytest.approx(-mean, rel=1e-7, abs=1e-6)
+        assert hessian[i, 0, 0, 0] == pytest.approx(-np.exp(log) @ (x - a - mean) ** 2, rel=1e-6, abs=1e-6)
 
 
 def conditional_by_quad(rows: list[list[int]], mean: float, tau2: float) -> float:
@@ -421,3 +422,33 @@ def test_wide_heterogeneity_leaves_no_intercept_unsettled(seed: int) -> None:
     table = pd.DataFrame(dict(zip(COLUMNS, (a, n1, c, n2), strict=True)))
     profiled, conditional = pool_one_stage(table, FIXED), pool_one_stage(table, HYPERGEOMETRIC)
     assert profiled.estimate == pytest.approx(conditional.estimate, abs=0.5 * conditional.standard_error)
+
+
+def test_a_sea_of_double_zero_trials_is_integrated_with_as_many_nodes_as_it_needs() -> None:
+    rows = [[0, 100, 0, 100]] * 55 + [
+        [2, 100, 1, 90], [0, 80, 3, 85], [4, 100, 5, 100], [1, 60, 0, 60], [0, 100, 2, 100],
+    ]  # fmt: skip
+    fit = pool_one_stage(counts(rows), RANDOM)
+    assert fit.intercept is not None
+    assert fit.intercept_variance is not None
+    assert fit.tau2 == 0.0
+    # intercepts 3.7 wide against one-sided trials: eleven nodes put the log-likelihood 0.2 off
+    mean, sd = fit.intercept, fit.intercept_variance**0.5
+    grid = np.linspace(mean - 10 * sd, mean + 10 * sd, 4001)
+    total = 0.0
+    for a, n1, c, n2 in rows:
+        log = stats.binom.logpmf(a, n1, expit(grid + fit.estimate / 2))
+        log += stats.binom.logpmf(c, n2, expit(grid - fit.estimate / 2))
+        total += float(np.log(integrate.simpson(np.exp(log) * stats.norm.pdf(grid, mean, sd), x=grid)))
+    assert fit.log_likelihood == pytest.approx(total, abs=5e-3)
+    # maximum of that grid likelihood by Nelder-Mead: log odds ratio -0.472
+    assert fit.estimate == pytest.approx(-0.472, abs=2e-3)
+
+
+@pytest.mark.parametrize("model", [HYPERGEOMETRIC, BETA])
+def test_a_variation_without_limit_is_refused_and_not_reported_at_the_limit_of_the_search(
+    model: OneStageModel,
+) -> None:
+    # everyone on one side had the event in one trial, nobody in the other: the likelihood climbs for ever
+    with pytest.raises(NotConvergedError, match="no finite estimate"):
+        pool_one_stage(counts([[20, 20, 0, 20], [0, 20, 20, 20]]), model)

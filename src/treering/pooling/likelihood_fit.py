@@ -193,6 +193,7 @@ def fit_at(problem: Problem, x: Array, value: float) -> Fit:
     NotConvergedError
         When ``x`` is not a proper maximum.
     """
+    _refuse_limits(problem, x)
     free = [p for p in range(len(x)) if p not in problem.variances or x[p] > 1e-7]
     information = _information(problem, x, free)
     try:
@@ -205,6 +206,18 @@ def fit_at(problem: Problem, x: Array, value: float) -> Fit:
     covariance = np.zeros((len(x), len(x)))
     covariance[np.ix_(free, free)] = np.linalg.inv(information)
     return Fit(x=x, log_likelihood=value, covariance=covariance)
+
+
+def _refuse_limits(problem: Problem, x: Array) -> None:
+    """Refuse a search that ended on a limit of the search: that number is the limit's, not the data's."""
+    below = np.array([p not in problem.variances for p in range(len(x))])
+    margin = 1e-6 * (1 + np.abs(x))
+    if np.any(x >= problem.upper - margin) or np.any(below & (x <= problem.lower + margin)):
+        raise NotConvergedError(
+            "The likelihood of the one-stage model still climbs where its search ends: an effect or a "
+            "variation over trials has no finite estimate.",
+            next_step="The events lie too one-sidedly in too few trials for this model; report the counts.",
+        )
 
 
 def profile_interval(problem: Problem, fit: Fit, position: int, level: float) -> tuple[float, float]:

@@ -35,7 +35,7 @@ from treering.pooling.binomial import Arms
 from treering.pooling.checks import check_level, choose
 from treering.pooling.counts import read_counts
 from treering.pooling.likelihood_fit import Fit, Problem, profile_interval
-from treering.pooling.one_stage_models import DEFAULT_NODES, OneStageModel, fit_model, refuse_infinite
+from treering.pooling.one_stage_models import OneStageModel, fit_model, refuse_infinite
 from treering.terms import Measure
 
 
@@ -144,7 +144,7 @@ def pool_one_stage(
         Confidence level.
     nodes : int, optional
         Quadrature nodes per dimension; by default 25 (hypergeometric), 15 (fixed intercepts) or 11
-        (random intercepts, where there are two dimensions).
+        (random intercepts, where there are two dimensions), and more where these are too few.
 
     Returns
     -------
@@ -169,8 +169,7 @@ def pool_one_stage(
         raise AnalysisError("No trial has both an event and a non-event: nothing to estimate.")
     used = arms.subset(informative)
     refuse_infinite(chosen, used)
-    nodes = nodes or DEFAULT_NODES[chosen]
-    problem, fit = fit_model(chosen, used, nodes)
+    problem, fit, nodes = fit_model(chosen, used, nodes)
     estimate, error, low, high = _effect(chosen, wanted, problem, fit, interval, level)
     constant = 0.0 if chosen is OneStageModel.HYPERGEOMETRIC_NORMAL else _constant(arms)
     return OneStageEffect(
@@ -189,7 +188,7 @@ def pool_one_stage(
         k=len(events),
         k_informative=int(informative.sum()),
         k_double_zero=int(np.sum(events == 0)),
-        nodes=None if chosen is OneStageModel.BETA_BINOMIAL else nodes,
+        nodes=nodes,
     )
 
 

@@ -8,7 +8,7 @@ from functools import partial
 
 import numpy as np
 
-from treering.errors import AnalysisError
+from treering.errors import AnalysisError, NotConvergedError
 from treering.pooling import beta_binomial, binomial, hypergeometric
 from treering.pooling.binomial import Arms
 from treering.pooling.likelihood_fit import Fit, Problem, best_point, fit_at, maximise
@@ -29,16 +29,17 @@ class OneStageModel(StrEnum):
         return self in (OneStageModel.HYPERGEOMETRIC_NORMAL, OneStageModel.BINOMIAL_NORMAL_FIXED)
 
 
-#: Enough for 1e-6 in the log-likelihood of trials with zero cells, see the tests; the beta-binomial has none.
-DEFAULT_NODES = {
-    OneStageModel.HYPERGEOMETRIC_NORMAL: 25,
-    OneStageModel.BINOMIAL_NORMAL_FIXED: 15,
-    OneStageModel.BINOMIAL_NORMAL_RANDOM: 11,
-    OneStageModel.BETA_BINOMIAL: 1,
+#: Nodes per dimension, from the usual to the most. The first is enough for 1e-6 in the log-likelihood of
+#: trials with zero cells, see the tests, unless variances are wide; more are taken where two rungs disagree.
+NODES = {
+    OneStageModel.HYPERGEOMETRIC_NORMAL: (25, 61, 151),
+    OneStageModel.BINOMIAL_NORMAL_FIXED: (15, 41, 101),
+    OneStageModel.BINOMIAL_NORMAL_RANDOM: (11, 21, 41),
 }
+_AGREE, _TOO_FAR = 1e-4, 1e-2
 
 
-def fit_model(model: OneStageModel, arms: Arms, nodes: int) -> tuple[Problem, Fit]:
+def fit_model(model: OneStageModel, arms: Arms, nodes: int | None = None) -> tuple[Problem, Fit, int | None]:
     """Maximise the likelihood of one model.
 
     Parameters
@@ -47,8 +48,8 @@ def fit_model(model: OneStageModel, arms: Arms, nodes: int) -> tuple[Problem, Fi
         The model.
     arms : Arms
         The trials that it uses.
-    nodes : int
-        Quadrature nodes per dimension; not used by the beta-binomial.
+    nodes : int, optional
+        Quadrature nodes per dimension; as many as the data need when left out.
 
     Returns
     -------
@@ -56,16 +57,47 @@ def fit_model(model: OneStageModel, arms: Arms, nodes: int) -> tuple[Problem, Fi
         The likelihood; of the beta-binomial without its correlation when that is 0.
     Fit
         Its maximum.
+    int or None
+        Nodes used; None for the beta-binomial, which has none.
+
+    Raises
+    ------
+    NotConvergedError
+        When there is no proper maximum, or the most nodes are still too few.
     """
     if model is OneStageModel.BETA_BINOMIAL:
-        return _fit_beta_binomial(arms)
+        return *_fit_beta_binomial(arms), None
+    if nodes:
+        problem = _problem(model, arms, nodes)
+        return problem, maximise(problem), nodes
+    return _fit_with_enough_nodes(model, arms)
+
+
+def _fit_with_enough_nodes(model: OneStageModel, arms: Arms) -> tuple[Problem, Fit, int]:
+    """Go up the rungs until the next one gives the same log-likelihood at the maximum."""
+    most = NODES[model][-1]
+    problem = _problem(model, arms, NODES[model][0])
+    for nodes, finer in zip(NODES[model], (*NODES[model][1:], 2 * most + 1), strict=True):
+        x, value = best_point(problem)
+        following = _problem(model, arms, finer)
+        gap = abs(following.objective(x)[0] - value)
+        if gap < _AGREE or (nodes == most and gap < _TOO_FAR):
+            return problem, fit_at(problem, x, value), nodes
+        problem = replace(following, starts=(x,), coarse=None)
+    raise NotConvergedError(
+        "The integral over trials is not settled: the trials differ too widely for this model.",
+        found=f"log-likelihoods {gap:.2g} apart with {most} and {2 * most + 1} nodes",
+    )
+
+
+def _problem(model: OneStageModel, arms: Arms, nodes: int) -> Problem:
+    """Likelihood of a model with normal effects."""
     if model is OneStageModel.BINOMIAL_NORMAL_RANDOM:
-        problem = _random_problem(arms, nodes)
-    else:
-        problem = _normal_problem(model, arms, nodes)
-        if model is OneStageModel.BINOMIAL_NORMAL_FIXED and arms.whole:
-            problem = _started_near(problem, arms)
-    return problem, maximise(problem)
+        return _random_problem(arms, nodes)
+    problem = _normal_problem(model, arms, nodes)
+    if model is OneStageModel.BINOMIAL_NORMAL_FIXED and arms.whole:
+        return _started_near(problem, arms)
+    return problem
 
 
 def _started_near(problem: Problem, arms: Arms) -> Problem:
