@@ -74,14 +74,13 @@ def _full_slope(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
 def _restricted_slope(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
     (total, mean, q, a, fall_a), first, rest, square, cube = _moments(y, v, tau2)
     share, other = first / total, rest / total
+    mixed, cubes = other * square, cube / total
     # The trace of PP, multiplied out and sorted by powers of the first weight: its fourth power, which would
     # drown all else where it is by far the largest, falls out.
-    fall_b = (
-        share * share * (rest * rest + 3.0 * square)
-        + 2.0 * share * (other * square - cube / total)
-        + (other * (other * square - 2.0 * cube / total) + (square / total) ** 2)
+    fall_b = share * (share * (rest * rest + 3.0 * square) + 2.0 * (mixed - cubes)) + (
+        other * (mixed - 2.0 * cubes) + (square / total) ** 2
     )
-    return total, mean, q, a, apart(first, rest, square), fall_a, fall_b
+    return total, mean, q, a, apart(first, rest, square, total), fall_a, fall_b
 
 
 def _moments(
@@ -136,25 +135,26 @@ def slope_terms(
 
 
 def _full_terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    a, first, rest, _ = _terms(y, v, tau2)
-    return a, first + rest
+    a, total, *_ = _terms(y, v, tau2)
+    return a, total
 
 
 def _restricted_terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    a, first, rest, square = _terms(y, v, tau2)
-    return a, apart(first, rest, square)
+    a, total, first, rest, square = _terms(y, v, tau2)
+    return a, apart(first, rest, square, total)
 
 
 def _terms(y: FloatArray, v: FloatArray, tau2: FloatArray) -> Terms:
-    """Return A, and the first weight with the other weights' sums of w and w^2."""
+    """Return A, sum w, and the first weight with the other weights' sums of w and w^2."""
     w = weigh(v, tau2)
     wy = w * y
     first, others, wy1 = w[0], w[1:], wy[1:]
     rest, square = others.sum(axis=0), dot(others, others)
-    mean = wy.sum(axis=0) / (first + rest)
+    total = first + rest
+    mean = wy.sum(axis=0) / total
     p = first * (mean - y[0])
     a = p * p + (dot(wy1, wy1) - mean * (2.0 * dot(others, wy1) - mean * square))
-    return a, first, rest, square
+    return a, total, first, rest, square
 
 
 def log_likelihood(batch: Batch, tau2: FloatArray, *, restricted: bool) -> FloatArray:

@@ -153,7 +153,7 @@ def _precise_first(batch: Batch) -> tuple[FloatArray, FloatArray, Batch]:
     return w, total, batch
 
 
-def apart(first: FloatArray, rest: FloatArray, square: FloatArray) -> FloatArray:
+def apart(first: FloatArray, rest: FloatArray, square: FloatArray, total: FloatArray) -> FloatArray:
     """Return sum w - sum w^2 / sum w without taking two nearly equal numbers from each other.
 
     Parameters
@@ -162,14 +162,15 @@ def apart(first: FloatArray, rest: FloatArray, square: FloatArray) -> FloatArray
         Weight of the first trial, by far the largest one where any is (see `centre`).
     rest, square : ndarray, shape (g,)
         Sum of the other weights and of their squares.
+    total : ndarray, shape (g,)
+        Sum of all weights.
 
     Returns
     -------
     ndarray, shape (g,)
-        (2 first rest + rest^2 - square) / (first + rest).
+        (2 first rest + rest^2 - square) / total.
     """
-    total = first + rest
-    out: FloatArray = 2.0 * first / total * rest + (rest * (rest / total) - square / total)
+    out: FloatArray = (rest * (first + total) - square) / total
     return out
 
 

@@ -26,7 +26,7 @@ Estimator = Callable[[Batch, AtZero], FloatArray]
 
 def _dersimonian_laird(batch: Batch, common: AtZero) -> FloatArray:
     w = weigh(batch.v, np.zeros(batch.k.size))
-    scale = apart(w[0], w[1:].sum(axis=0), dot(w[1:], w[1:]))
+    scale = apart(w[0], w[1:].sum(axis=0), dot(w[1:], w[1:]), common.total)
     return (common.q - (batch.k - 1.0)) / scale
 
 
