@@ -115,6 +115,12 @@ def test_an_interval_with_an_impossible_level_is_refused(second):
     )
 
 
+def test_a_count_below_zero_is_refused_even_where_a_reported_ratio_stands_in(second):
+    table = second(-3, 40, 5, np.nan)
+    table[["estimate", "ci_low", "ci_high"]] = [[np.nan] * 3, [0.8, 0.4, 1.6]]
+    refused(table, "odds-ratio", "intervention_events", "below zero")
+
+
 def test_a_text_where_a_number_belongs_is_refused(second):
     table = second(*GOOD_COUNTS).astype(object)
     table.iloc[1, 0] = "three"

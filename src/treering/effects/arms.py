@@ -83,7 +83,7 @@ def arm_uses(contrasts: pd.DataFrame, synthesis: str) -> pd.DataFrame:
         One row for each contrast: ``trial``, ``intervention_arm``, ``comparator_arm``,
         ``intervention_total``, ``comparator_total`` and, for binary outcomes, ``intervention_events`` and
         ``comparator_events``. Where a side joins arms it bears the name under which ``arms`` lists them
-        joined.
+        joined; only with ``joins`` in that list can :func:`arm_ledger` see the arms in it.
     synthesis : str
         Name of the synthesis.
 

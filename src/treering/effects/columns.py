@@ -1,6 +1,6 @@
 """What a table says, read as labels and numbers: nothing but plain finite numbers passes as a number.
 
-Every function raises an ``AnalysisError`` that names the field and, where there is one, the first faulty trial.
+Every function raises an ``AnalysisError`` that names the field and, if there is one, the first faulty trial.
 """
 
 from __future__ import annotations

@@ -202,18 +202,21 @@ def _open_routes(table: pd.DataFrame, measure: Measure) -> tuple[Route, ...]:
 def _read(table: pd.DataFrame, routes: tuple[Route, ...], labels: TextArray) -> dict[str, FloatArray]:
     """All columns that an open route needs, as numbers with NaN where nothing is reported."""
     fields = {field: None for route in routes for field in route.columns}
-    values = {
-        field: _signs(table, labels)
-        if field == "lower_hazard"
-        else columns.read_numbers(table, field, labels)
-        for field in fields
-    }
+    values = {field: _read_column(table, field, labels) for field in fields}
     level = np.full(len(table), 0.95)
     if "ci_level" in table.columns:
         given = columns.read_numbers(table, "ci_level", labels)
         level = np.where(np.isnan(given), level, given)
     values["ci_level"] = level
     return values
+
+
+def _read_column(table: pd.DataFrame, field: str, labels: TextArray) -> FloatArray:
+    """Read one column; a figure below zero that cannot be is a fault even where another route is taken."""
+    if field == "lower_hazard":
+        return _signs(table, labels)
+    from_zero = field.startswith(checks.ARMS) and not field.endswith("_mean")
+    return (columns.read_counts if from_zero else columns.read_numbers)(table, field, labels)
 
 
 def _signs(table: pd.DataFrame, labels: TextArray) -> FloatArray:
