@@ -64,7 +64,7 @@ def test_pool_takes_effects_per_1000_people(run: Callable[..., Any], bcg: Path) 
     ("text", "measure", "words"),
     [
         (None, "risk-ratio", "the table can't be read: No such file or directory."),
-        ("", "risk-ratio", "the table can't be read: "),
+        ("", "risk-ratio", "the table holds no trial."),
         ("trial,intervention_events\n", "risk-ratio", "the table holds no trial."),
         ("trial,intervention_events\nA,1\n", "risk-ratio", "comparator_total"),
         (",".join(COLUMNS) + "\nA,5,10,3,10\n", "chance-ratio", "chance-ratio"),

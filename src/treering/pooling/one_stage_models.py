@@ -68,7 +68,7 @@ def fit_model(model: OneStageModel, arms: Arms, nodes: int | None = None) -> tup
     if model is OneStageModel.BETA_BINOMIAL:
         return *_fit_beta_binomial(arms), None
     if nodes:
-        problem = _problem(model, arms, nodes)
+        problem = _started(model, arms, nodes)
         return problem, maximise(problem), nodes
     return _fit_with_enough_nodes(model, arms)
 
@@ -76,7 +76,7 @@ def fit_model(model: OneStageModel, arms: Arms, nodes: int | None = None) -> tup
 def _fit_with_enough_nodes(model: OneStageModel, arms: Arms) -> tuple[Problem, Fit, int]:
     """Go up the rungs until the next one gives the same log-likelihood at the maximum."""
     most = NODES[model][-1]
-    problem = _problem(model, arms, NODES[model][0])
+    problem = _started(model, arms, NODES[model][0])
     for nodes, finer in zip(NODES[model], (*NODES[model][1:], 2 * most + 1), strict=True):
         x, value = best_point(problem)
         following = _problem(model, arms, finer)
@@ -94,7 +94,12 @@ def _problem(model: OneStageModel, arms: Arms, nodes: int) -> Problem:
     """Likelihood of a model with normal effects."""
     if model is OneStageModel.BINOMIAL_NORMAL_RANDOM:
         return _random_problem(arms, nodes)
-    problem = _normal_problem(model, arms, nodes)
+    return _normal_problem(model, arms, nodes)
+
+
+def _started(model: OneStageModel, arms: Arms, nodes: int) -> Problem:
+    """Likelihood of a model with the best start values at hand."""
+    problem = _problem(model, arms, nodes)
     if model is OneStageModel.BINOMIAL_NORMAL_FIXED and arms.whole:
         return _started_near(problem, arms)
     return problem
