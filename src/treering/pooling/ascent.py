@@ -94,15 +94,18 @@ def _climb(batch: Batch, t: FloatArray, zero: Slope, there: Slope, restricted: b
     # Far beyond t the cubic is no better than the straight line at t.
     share = start / (start - end)
     found = np.where((share > 0.0) & (share < 1.5), course.root(), newton(there, t))
+    scale = batch.k / there.total
     for _ in range(INTERPOLATIONS):
         a, b = slope_terms(batch, found, restricted=restricted)
         course.lead_through(b / a - 1.0, found)
         before, found = found, course.root()
+        settled = np.abs(found - before) <= INTERPOLATED_STEP * scale
+        if settled.all():
+            break
     low, high = _bracket(there, t)
-    scale = batch.k / there.total
     # What is not a number is not inside, and is left to the safe steps.
     inside = (low <= found) & (found <= high)
-    left = np.flatnonzero(~(inside & (np.abs(found - before) <= INTERPOLATED_STEP * scale)))
+    left = np.flatnonzero(~(inside & settled))
     if left.size:
         # Outside the bracket: halve it, or where it has no upper end step on by the mean of v + tau2.
         aside = np.where(np.isinf(high), 2.0 * t + scale, 0.5 * t)
