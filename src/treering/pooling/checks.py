@@ -88,7 +88,8 @@ def check_effects(estimates: ArrayLike, variances: ArrayLike) -> tuple[FloatArra
     if y.size == 0:
         raise AnalysisError("There is no trial to pool.", found=0, expected="at least one trial")
     same_trials(estimates, variances, "estimates and variances")
-    if not (np.isfinite(y).all() and np.isfinite(v).all() and (v > 0).all()):
+    # What is not a number is no smallest or largest one either, and compares as false.
+    if not (-np.inf < y.min() and y.max() < np.inf and v.min() > 0.0 and v.max() < np.inf):
         _name_bad_trial(y, v, trial_labels(named, y.size))
     return y, v
 

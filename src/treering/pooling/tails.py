@@ -20,8 +20,8 @@ from treering.pooling.result import FloatArray
 MANY = 200
 """Syntheses with the same degrees of freedom from which on the closed form pays."""
 LARGEST_DF = 60
-FAR = 1e-3
-"""Two-sided tail of t below which the closed form loses more than three digits of sixteen."""
+FAR = 1e-4
+"""Two-sided tail of t below which the closed form loses more than four digits of sixteen."""
 LARGEST_Q = 1_300.0
 """Chi-square beyond which exp(-q / 2) nears the end of double precision."""
 
