@@ -186,3 +186,21 @@ def test_simulate_refuses_what_cannot_be_simulated(
     ran = run("simulate", past.folder, *arguments)
     assert (ran.status, ran.out) == (1, "")
     assert words in ran.err
+
+
+def test_pool_without_a_measure_takes_the_usual_one_and_says_so(
+    run: Callable[..., Any], bcg: Path, tmp_path: Path
+) -> None:
+    named, unnamed = run("pool", bcg, "risk-ratio", "--json"), run("pool", bcg, "--json")
+    assert unnamed.status == 0
+    found, expected = strict_json(unnamed.out), strict_json(named.out)
+    assert found["random"] == expected["random"]
+    assert [w for w in found["warnings"] if w not in expected["warnings"]] == [
+        "No measure was named; risk-ratio was taken, the usual one for such columns."
+    ]
+    logs = tmp_path / "logs.csv"
+    logs.write_text("trial,log_estimate,standard_error\nA,0.1,0.2\nB,0.2,0.2\n")
+    ran = run("pool", logs)
+    assert ran.status == 1
+    assert "No measure was named and the columns do not tell one" in ran.err
+    assert "hazard-ratio" in ran.err

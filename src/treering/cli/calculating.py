@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from pathlib import Path
+from textwrap import shorten
 
 from treering.cli.output import EXIT_DONE, remark, say, say_json, say_table
 from treering.errors import AnalysisError
-from treering.terms import CAUTION
+from treering.terms import CAUTION, Measure
 
 
 def boundaries(
@@ -100,7 +102,7 @@ def boundaries(
 
 def pool(
     file: Path,
-    measure: str,
+    measure: str | None = None,
     /,
     *,
     tau2: str = "reml",
@@ -130,9 +132,10 @@ def pool(
         intervention_total, comparator_events, comparator_total. Rates: events, and time in the place of
         total. Continuous: mean, sd and total of both arms. As reported: estimate, ci_low, ci_high (ratios
         not logged); or estimate, standard_error for differences; or log_estimate, standard_error for ratios.
-    measure : str
+    measure : str, optional
         risk-ratio, odds-ratio, peto-odds-ratio, risk-difference, arcsine-difference, rate-ratio,
-        hazard-ratio, mean-difference, standardized-mean-difference, ratio-of-means or generic.
+        hazard-ratio, mean-difference, standardized-mean-difference, ratio-of-means or generic. When left
+        out, the usual one for the columns is taken and named.
     tau2 : str
         Between-trial variance by reml, ml, dersimonian-laird, paule-mandel, hedges, sidik-jonkman or
         hunter-schmidt; all are shown.
@@ -179,9 +182,10 @@ def pool(
     for column in (subgroup, order, *(covariates or ())):
         if column is not None and column not in table.columns:
             raise AnalysisError("The table lacks a column that was asked for.", file=str(file), found=column)
+    taken = measure or _usual(file, table.columns)
     result = analyse_table(
         table,
-        measure,
+        taken,
         tau2=tau2,
         interval=interval,
         level=level,
@@ -195,10 +199,12 @@ def pool(
         comparator_risk=comparator_risk or None,
         prior=None if prior is None else read_prior(prior),
         better=better,
-        mid=None if mid is None else distance(mid, measure),
+        mid=None if mid is None else distance(mid, taken),
         one_stage=one_stage,
         force_small_study=force_small_study,
     ).to_dict()
+    if measure is None:
+        result["warnings"].append(f"No measure was named; {taken} was taken, the usual one for such columns.")
     if "trial" not in table.columns:
         result["warnings"].append("The table has no column trial; trials are named by their row.")
     if json:
@@ -207,3 +213,19 @@ def pool(
         for line in pooled_lines(result):
             say(line)
     return EXIT_DONE
+
+
+def _usual(file: Path, columns: Iterable[str]) -> str:
+    """Measure that is usual for the columns of a table."""
+    from treering.effects import usual_measure
+
+    found = usual_measure(columns)
+    if found is None:
+        raise AnalysisError(
+            "No measure was named and the columns do not tell one.",
+            file=str(file),
+            found=shorten(", ".join(columns), 200),
+            expected=f"one of {', '.join(Measure)}",
+            next_step="Name the measure after the file.",
+        )
+    return str(found)

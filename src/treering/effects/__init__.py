@@ -29,6 +29,7 @@ from treering.effects.rows import LeftOut
 from treering.effects.summaries import Skewness, expected_range, mean_and_sd_from_summary, skewness_check
 from treering.effects.table import effect_sizes, usable
 from treering.effects.time_to_event import log_rank_variance, log_rank_variance_by_allocation
+from treering.effects.usual import usual_measure
 from treering.effects.zero_cells import corrected_counts
 
 __all__ = [
@@ -68,5 +69,6 @@ __all__ = [
     "standard_error_from_interval",
     "standard_error_from_p",
     "usable",
+    "usual_measure",
     "z_from_p",
 ]
