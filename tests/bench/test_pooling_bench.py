@@ -3,7 +3,7 @@
 Wanted: 2,000 syntheses of 20 trials pooled at least 60 times as fast as by statsmodels' `combine_effects` one
 by one. Each side does all its own work; ours fills every field of `PooledEffect`, the Q-profile interval
 included, theirs gives the two estimates, tau2 and Q. Measured on one core of a shared machine: Paule-Mandel
-77 to 91 times, REML 56 to 83 times, above 60 in most runs.
+81 to 91 times, REML 57 to 73 times, above 60 in most runs.
 
 The machine is shared and its speed moves by a factor of two within seconds. So both sides take turns, the
 best of several rounds of each is kept, processor time and wall time are both read and printed, and what is
