@@ -16,9 +16,7 @@ from treering.terms import Correction
 
 NO_EVENTS = "no event in either arm: says nothing about a relative effect"
 ALL_EVENTS = "every participant of both arms had the event: says nothing about a relative effect"
-ZERO_CELL = (
-    "a cell of the 2 by 2 table is zero and no correction is asked for: the ratio is undefined"
-)
+ZERO_CELL = "a cell of the 2 by 2 table is zero and no correction is asked for: the ratio is undefined"
 NO_EVENT_ARM = "no event in one arm and no correction is asked for: the ratio is undefined"
 NO_VARIANCE = "the estimated variance is zero: no inverse-variance weight; use the Mantel-Haenszel method"
 
