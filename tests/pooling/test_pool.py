@@ -496,3 +496,9 @@ def test_a_lone_trial_among_many_syntheses_says_that_its_interval_is_the_ordinar
     together = pool_many(y[:3], v[:3], [0, 0, 0])
     assert together["interval"].item() == pool(y[:3], v[:3]).interval == "modified-knapp-hartung"
     assert pool([0.5], [0.04]).interval == "wald"
+
+
+@pytest.mark.parametrize("entry", ["1_0", "nan", True, 1j, 10**400])
+def test_what_tables_do_not_take_for_a_number_lists_do_not_take_either(entry):
+    with pytest.raises(AnalysisError, match=r"trial 2: estimates must be numbers"):
+        pool(np.array([0.1, entry], dtype=object), [0.04, 0.04])

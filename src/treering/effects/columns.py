@@ -111,7 +111,9 @@ def read_numbers(table: pd.DataFrame, field: str, labels: TextArray) -> FloatArr
     """
     cells = column(table, field)
     raw = cells.to_numpy(dtype=object)
-    numbers = _floats(cells) if _is_plain(cells) else np.array([_number(cell) for cell in raw], dtype=float)
+    numbers = (
+        _floats(cells) if _is_plain(cells) else np.array([read_number(cell) for cell in raw], dtype=float)
+    )
     missing = np.asarray(cells.isna().to_numpy(), dtype=bool)
     refuse(np.isnan(numbers) & ~missing, labels, field, raw, "is not a number", "a plain number")
     refuse(np.isinf(numbers), labels, field, raw, "is not finite", "a finite number")
@@ -192,8 +194,19 @@ def _floats(cells: pd.Series) -> FloatArray:
     return np.asarray(numbers)
 
 
-def _number(cell: object) -> float:
-    """Read one cell of a mixed column; NaN where it holds no number."""
+def read_number(cell: object) -> float:
+    """Read one entry of unknown type: the one rule of what counts as a number.
+
+    Parameters
+    ----------
+    cell : object
+        A number, or a text that is one; truth values, dates and complex numbers are none.
+
+    Returns
+    -------
+    float
+        NaN where it holds no number, infinity where the number is beyond floating point.
+    """
     if isinstance(cell, bool | np.bool_) or not isinstance(cell, str | Real | Decimal):
         return np.nan
     if isinstance(cell, str) and "_" in cell:

@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
+from treering.effects.columns import read_number
 from treering.errors import AnalysisError
 from treering.pooling.result import FloatArray
 
@@ -66,15 +67,16 @@ def numbers(values: ArrayLike, field: str, labels: object = None) -> FloatArray:
 
 def _number(cell: object, field: str, label: object) -> float:
     """Read one entry of a list that numpy does not take for plain numbers."""
-    if cell is None or cell is pd.NA:
-        return np.nan
-    try:
-        if not isinstance(cell, bool):
-            return float(cell)  # type: ignore[arg-type]
-    except (TypeError, ValueError, OverflowError):
-        pass
+    number = read_number(cell)
+    missing = cell is None or cell is pd.NA or (isinstance(cell, float) and np.isnan(cell))
+    beyond = np.isinf(number) and not isinstance(cell, float)
+    if missing or not (np.isnan(number) or beyond):
+        return number
     raise AnalysisError(
-        f"{field} must be numbers.", trial=str(label), found=cell, expected="a number of ordinary size"
+        f"{field} must be numbers.",
+        trial=str(label),
+        found=str(cell)[:60],
+        expected="a number of ordinary size",
     )
 
 

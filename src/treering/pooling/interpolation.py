@@ -1,8 +1,8 @@
 """Inverse interpolation: the place t where a known quantity r(t) is zero.
 
 Where r is nearly linear in t, t is a tame function of r. A polynomial in r is led through all places visited
-so far, by Newton's divided differences (Abramowitz and Stegun 25.2), and read at r = 0. Each new place
-multiplies the error by about its own distance from the root.
+so far, by Newton's divided differences (Abramowitz and Stegun 25.2, from memory), and read at r = 0. Each
+new place multiplies the error by about its own distance from the root.
 """
 
 from __future__ import annotations
